@@ -1,0 +1,9 @@
+//! The lattice: its vectors, its metric, and distances between images of points.
+
+mod lattice;
+mod neighbours;
+mod reduce;
+
+pub use lattice::{CellParameters, Lattice, LatticeError};
+pub use neighbours::{Contact, closest_contact, contacts_within};
+pub use reduce::Reduced;

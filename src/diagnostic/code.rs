@@ -1,0 +1,122 @@
+//! The list of all diagnostic codes: one row each, with cause and remedy. The manual page is made from this table.
+
+use serde::{Serialize, Serializer};
+use std::fmt;
+
+macro_rules! codes {
+    ($($variant:ident = $code:literal, $cause:literal, $remedy:literal;)*) => {
+        /// A stable name for a kind of finding, such as `cell-001`. A code is never given a new meaning.
+        #[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash)]
+        pub enum Code {
+            $(#[doc = concat!("`", $code, "`: ", $cause, ".")] $variant,)*
+        }
+
+        impl Code {
+            /// Every code, in the order of the table.
+            pub const ALL: &'static [Self] = &[$(Self::$variant),*];
+
+            /// The code as printed.
+            #[must_use]
+            pub fn as_str(self) -> &'static str {
+                match self { $(Self::$variant => $code,)* }
+            }
+
+            /// What makes this finding appear.
+            #[must_use]
+            pub fn cause(self) -> &'static str {
+                match self { $(Self::$variant => $cause,)* }
+            }
+
+            /// What to do about it.
+            #[must_use]
+            pub fn remedy(self) -> &'static str {
+                match self { $(Self::$variant => $remedy,)* }
+            }
+        }
+    };
+}
+
+codes! {
+    // Reading a file.
+    FileUnreadable = "file-001", "the file cannot be opened or read", "check the path and its permissions";
+    FileEmpty = "file-002", "the file holds no data", "give a file with at least one data block";
+    FileNoInput = "file-003", "a folder holds no CIF file", "name the file itself, or a folder with files ending in .cif";
+    FileUnknownBlock = "file-004", "the file has no data block of the name asked for", "use one of the names the message lists";
+    FileTooLarge = "file-005", "the file is larger than the limit", "split the file";
+    // The unit cell.
+    CellMissing = "cell-001", "a cell length or angle is missing", "add the six _cell_ items";
+    CellNotFinite = "cell-002", "a cell length or angle is not a finite number", "correct the value";
+    CellDegenerate = "cell-003", "the cell has no volume, or lengths or angles out of range", "correct the cell parameters";
+    // Sites.
+    SitesMissing = "site-001", "there are no atom sites", "add an _atom_site_ loop with fractional coordinates";
+    SitePositionInvalid = "site-002", "a coordinate is missing or is not a finite number", "correct the coordinate";
+    SiteElementUnknown = "site-003", "the element of a site cannot be told", "give _atom_site_type_symbol";
+    SitesTooClose = "site-004", "two atoms are closer than is physically possible", "remove the duplicate or lower --min-distance";
+    SiteOccupancyInvalid = "site-005", "an occupancy is negative or above one", "correct the occupancy";
+    SiteShared = "site-006", "a site is partly occupied or shared by several species, so the polarization is not quantized", "use an ordered model of the structure";
+    SiteOverfull = "site-007", "the occupancies on one position add up to more than one", "correct the occupancies";
+    SiteTooMany = "site-008", "there are more sites than the limit", "use a smaller cell";
+    SiteMultiplicity = "site-009", "the stated multiplicity differs from the number of images found", "check the coordinates against the special position";
+    SiteListedTwice = "site-010", "a site is listed again as an image of another", "remove the repetition from the file";
+    // Symmetry.
+    SymmetryMissing = "symmetry-001", "the file states no symmetry", "add the operations, or a space-group symbol";
+    SymmetryUnknown = "symmetry-002", "a space-group symbol or number is not known", "give the operations as _space_group_symop_operation_xyz";
+    SymmetryContradiction = "symmetry-003", "the file's statements about symmetry contradict each other", "keep the statement that is right";
+    SymmetryEngine = "symmetry-004", "the symmetry search failed", "try another --symmetry-tolerance or --engine";
+    SymmetryTolerance = "symmetry-005", "the symmetry search used another tolerance than asked for", "set --symmetry-tolerance to the one used";
+    SymmetryNotFound = "symmetry-006", "the operations found do not map the sites onto themselves", "lower --symmetry-tolerance";
+    SymmetryMoved = "symmetry-007", "symmetrising moved an atom further than the tolerance", "lower --symmetry-tolerance";
+    // Charges.
+    ChargeSyntax = "charge-001", "a charge given on the command line cannot be read", "write --charges 'Ta=5,K=1,O=-2'";
+    ChargeUnknownSite = "charge-002", "a charge was given for an element or label that the structure does not have", "use one of the labels the message lists";
+    ChargeMissing = "charge-003", "some sites were given no charge", "add the missing element to --charges";
+    ChargeNotNeutral = "charge-004", "the charges do not add up to zero", "correct the charges or the composition";
+    ChargeAveraged = "charge-005", "a charge is not a whole number, so the polarization is not quantized", "use an ordered model with whole charges";
+    ChargeMetal = "charge-006", "all charges are zero, or all elements are metals", "formal polarization is defined for insulators; give --charges if this is one";
+    ChargeNone = "charge-007", "no neutral assignment of known oxidation states exists", "give --charges";
+    ChargeAmbiguous = "charge-008", "two assignments of oxidation states are about equally likely", "type one of the assignments the message lists into --charges";
+    ChargeElement = "charge-009", "no oxidation state is tabulated for an element", "give --charges";
+    ChargeBroken = "charge-010", "symmetry-equivalent sites carry different charges", "lower the symmetry of the file, or correct the charges";
+    ChargeInferred = "charge-011", "charges were inferred from the composition alone", "give --charges to fix them";
+    ChargeMixedValence = "charge-012", "one element carries several charges on inequivalent sites", "give --charges per site label to fix them";
+    // Polarization.
+    PolarizationResidual = "polarization-001", "the sum of charges and positions is not at a value that symmetry permits", "check charges and positions, or lower --symmetry-tolerance";
+    PolarizationRoutes = "polarization-002", "two independent routes to the offset disagree", "report this file as a fault of the program";
+    PolarizationOverflow = "polarization-003", "an exact number left the range of 128-bit integers", "reduce the cell or the charges";
+    PolarizationWindow = "polarization-004", "the number of basis choices asked for is over the limit", "use a smaller --window";
+}
+
+impl fmt::Display for Code {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        f.write_str(self.as_str())
+    }
+}
+
+impl Serialize for Code {
+    fn serialize<S: Serializer>(&self, serializer: S) -> Result<S::Ok, S::Error> {
+        serializer.serialize_str(self.as_str())
+    }
+}
+
+impl schemars::JsonSchema for Code {
+    fn schema_name() -> std::borrow::Cow<'static, str> {
+        "Code".into()
+    }
+
+    fn json_schema(_: &mut schemars::SchemaGenerator) -> schemars::Schema {
+        let names: Vec<_> = Self::ALL.iter().map(|code| code.as_str()).collect();
+        schemars::json_schema!({ "type": "string", "enum": names })
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use std::collections::BTreeSet;
+
+    #[test]
+    fn codes_are_unique() {
+        let names: BTreeSet<_> = Code::ALL.iter().map(|code| code.as_str()).collect();
+        assert_eq!(names.len(), Code::ALL.len());
+    }
+}

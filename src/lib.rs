@@ -1,0 +1,5 @@
+//! Formal polarization lattices of crystals, for people who design interfaces between insulators.
+
+pub mod cell;
+pub mod crystal;
+pub mod diagnostic;

@@ -1,0 +1,2 @@
+//! The command line of cosetta.
+fn main() {}
