@@ -3,3 +3,4 @@
 pub mod cell;
 pub mod crystal;
 pub mod diagnostic;
+pub mod symmetry;
