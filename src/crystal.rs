@@ -7,6 +7,7 @@ mod operation;
 mod site;
 
 pub use element::Element;
+pub(crate) use expand::lattice_refusal;
 pub use expand::{AsymmetricUnit, Crystal, ExpandTolerance};
 pub use formula::Formula;
 pub use operation::Operation;

@@ -3,4 +3,6 @@
 pub mod cell;
 pub mod crystal;
 pub mod diagnostic;
+pub mod exact;
+pub mod polarization;
 pub mod symmetry;

@@ -108,17 +108,13 @@ impl Lattice {
     /// Lattice vectors given as the columns of a matrix, in Å.
     ///
     /// # Errors
-    /// A component that is not finite, a length out of range, or vectors in a plane.
+    /// A component that is not finite, or vectors in a plane.
     pub fn from_basis(basis: Matrix3<f64>) -> Result<Self, LatticeError> {
         const NAMES: [&str; 3] = ["a", "b", "c"];
         for (name, column) in NAMES.into_iter().zip(basis.column_iter()) {
             let value = column.norm();
             if !value.is_finite() {
                 return Err(LatticeError::NotFinite { name, value });
-            }
-            let (low, high) = LENGTH_RANGE;
-            if value < low || value > high {
-                return Err(LatticeError::OutOfRange { name, value, low, high });
             }
         }
         let product: f64 = basis.column_iter().map(|column| column.norm()).product();

@@ -1,0 +1,7 @@
+//! Many inputs: which files a list of paths names, and their structures, classified in a stable order.
+
+mod classification;
+mod input;
+
+pub use classification::{Classification, Material, Settings, classify_bytes, classify_unit};
+pub use input::{Input, find_inputs};

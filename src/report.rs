@@ -1,0 +1,6 @@
+//! What the answers look like: records for machines, tables and words for people.
+
+pub mod ladder;
+pub mod record;
+pub mod table;
+pub mod words;
