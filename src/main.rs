@@ -1,2 +1,7 @@
 //! The command line of cosetta.
-fn main() {}
+
+use std::process::ExitCode;
+
+fn main() -> ExitCode {
+    cosetta::cli::run().into()
+}

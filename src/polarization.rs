@@ -15,7 +15,7 @@ mod permitted;
 
 
 pub use choices::{Choices, Sweep, SweepPlane};
-pub use formal::{Component, FormalPolarization};
+pub use formal::{C_PER_M2, Component, FormalPolarization};
 pub use label::Label;
 pub use modulus::{Coset, Modulus};
 pub use permitted::Permitted;

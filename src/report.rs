@@ -1,6 +1,7 @@
 //! What the answers look like: records for machines, tables and words for people.
 
 pub mod ladder;
+pub mod materials;
 pub mod record;
 pub mod table;
 pub mod words;

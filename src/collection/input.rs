@@ -7,7 +7,7 @@ use std::path::{Path, PathBuf};
 use walkdir::WalkDir;
 
 /// Files larger than this many bytes are refused.
-pub const MAX_FILE_BYTES: u64 = 1 << 30;
+const MAX_FILE_BYTES: u64 = 1 << 30;
 
 /// One thing to read.
 #[derive(Debug, Clone, PartialEq, Eq)]

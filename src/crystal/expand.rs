@@ -132,10 +132,10 @@ impl Crystal {
         AsymmetricUnit { lattice, sites, operations: Vec::new() }.expand(tolerance)
     }
 
-    /// Whether every site is fully occupied. Occupancies within 0.001 of one count as full.
+    /// Whether every site is fully occupied.
     #[must_use]
     pub fn is_ordered(&self) -> bool {
-        self.sites.iter().all(|site| site.occupancy >= FULL_OCCUPANCY)
+        self.sites.iter().all(Site::is_full)
     }
 
     /// Drops duplicates, refuses contacts that are too short. Contacts of partly occupied sites are left alone
@@ -152,12 +152,12 @@ impl Crystal {
         let mut dropped = BTreeSet::new();
         for contact in &contacts {
             let (first, second) = (&self.sites[contact.first], &self.sites[contact.second]);
-            let is_shared = first.occupancy < FULL_OCCUPANCY || second.occupancy < FULL_OCCUPANCY;
+            let is_shared = !first.is_full() || !second.is_full();
             let is_same_position = contact.distance() <= tolerance.merge && contact.first != contact.second;
             if is_shared && (!is_same_position || first.occupancy + second.occupancy <= 1.0 + 1e-3) {
                 continue;
             }
-            if is_same_position && first.element == second.element && first.occupancy >= FULL_OCCUPANCY {
+            if is_same_position && first.element == second.element && first.is_full() {
                 dropped.insert(self.origins[contact.second].max(self.origins[contact.first]));
                 continue;
             }
@@ -206,9 +206,6 @@ impl Crystal {
         Ok(())
     }
 }
-
-/// Occupancies from here up count as full.
-pub(crate) const FULL_OCCUPANCY: f64 = 0.999;
 
 /// The refusal that a faulty lattice becomes.
 pub(crate) fn lattice_refusal(error: &LatticeError) -> Diagnostic {

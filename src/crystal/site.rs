@@ -24,4 +24,10 @@ impl Site {
     pub fn new(label: impl Into<String>, element: Element, position: Vector3<f64>) -> Self {
         Self { label: label.into(), element, position, occupancy: 1.0, oxidation: None }
     }
+
+    /// Whether the site is filled in every cell. Occupancies within 0.001 of one count as full: files round them.
+    #[must_use]
+    pub fn is_full(&self) -> bool {
+        self.occupancy >= 0.999
+    }
 }

@@ -56,7 +56,7 @@ impl Table {
     #[must_use]
     pub fn to_text(&self, width: Option<u16>) -> String {
         let mut screen = ScreenTable::new();
-        screen.load_preset(presets::NOTHING);
+        screen.load_style(presets::NOTHING);
         if let Some(width) = width {
             screen.set_content_arrangement(ContentArrangement::Dynamic).set_width(width);
         } else {

@@ -1,0 +1,84 @@
+//! Options that several commands share.
+
+use crate::charge::Given;
+use crate::collection::Settings;
+use crate::crystal::ExpandTolerance;
+use crate::symmetry::Engine;
+use clap::Args;
+use std::path::PathBuf;
+
+/// How a structure is read and searched.
+#[derive(Debug, Args)]
+pub(super) struct StructureOptions {
+    /// Formal charges in e by element or site label, such as 'Ta=5,K=1,O=-2'
+    #[arg(long, value_name = "CHARGES", allow_hyphen_values = true, help_heading = "Structure")]
+    charges: Option<Given>,
+    /// Only the data block of this name
+    #[arg(long, value_name = "NAME", help_heading = "Structure")]
+    block: Option<String>,
+    /// Symmetry engine: moyo, or spglib where it is built in
+    #[arg(long, value_name = "ENGINE", default_value_t = Engine::default(), help_heading = "Structure")]
+    engine: Engine,
+    /// Distance tolerance of the symmetry search in Å
+    #[arg(long, value_name = "Å", default_value_t = 0.01, value_parser = positive, help_heading = "Structure")]
+    symmetry_tolerance: f64,
+    /// Refuse different atoms nearer than this, in Å
+    #[arg(long, value_name = "Å", default_value_t = ExpandTolerance::default().min_distance, value_parser = positive,
+          help_heading = "Structure")]
+    min_distance: f64,
+    /// Refuse cells with more sites than this
+    #[arg(long, value_name = "N", default_value_t = ExpandTolerance::default().max_sites, help_heading = "Structure")]
+    max_sites: usize,
+}
+
+impl StructureOptions {
+    pub(super) fn settings(self) -> Settings {
+        Settings {
+            charges: self.charges,
+            engine: self.engine,
+            symmetry_tolerance: self.symmetry_tolerance,
+            expand: ExpandTolerance {
+                min_distance: self.min_distance,
+                max_sites: self.max_sites,
+                ..ExpandTolerance::default()
+            },
+            block: self.block,
+        }
+    }
+}
+
+/// Where the answer goes and how much is said on the way.
+#[derive(Debug, Args)]
+pub(super) struct OutputOptions {
+    /// Write to this file in place of stdout
+    #[arg(short, long, value_name = "FILE", help_heading = "Output")]
+    pub(super) output: Option<PathBuf>,
+    /// Say nothing on stderr but errors
+    #[arg(short, long, help_heading = "Output")]
+    pub(super) quiet: bool,
+    /// Say more on stderr: every diagnostic of every material
+    #[arg(short, long, conflicts_with = "quiet", help_heading = "Output")]
+    pub(super) verbose: bool,
+}
+
+fn positive(text: &str) -> Result<f64, String> {
+    match text.parse::<f64>() {
+        Ok(value) if value.is_finite() && value > 0.0 => Ok(value),
+        Ok(value) => Err(format!("{value} is not a positive number")),
+        Err(error) => Err(error.to_string()),
+    }
+}
+
+/// Parses `h,k,l`.
+pub(super) fn plane(text: &str) -> Result<[i64; 3], String> {
+    let indices: Vec<i64> = text
+        .split(',')
+        .map(|part| part.trim().parse().map_err(|_| format!("'{part}' is not a whole number; write a plane as 0,0,1")))
+        .collect::<Result<_, _>>()?;
+    match <[i64; 3]>::try_from(indices) {
+        Ok([0, 0, 0]) => Err("0,0,0 is not a plane".to_owned()),
+        Ok(indices) if indices.iter().any(|index| index.abs() > 1000) => Err("indices go up to 1000".to_owned()),
+        Ok(indices) => Ok(indices),
+        Err(indices) => Err(format!("{} indices in place of three; write a plane as 0,0,1", indices.len())),
+    }
+}

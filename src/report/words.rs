@@ -1,0 +1,311 @@
+//! One material in words.
+
+use super::ladder::ladder;
+use super::record::{EnumerationRecord, centre_position, primitive_vectors};
+use crate::charge::charges_text;
+use crate::collection::{Material, Settings};
+use crate::diagnostic::Severity;
+use crate::polarization::{C_PER_M2, Component, Coset, FormalPolarization, Label, Modulus};
+use crate::symmetry::{Centring, Primitive};
+use std::fmt::Write;
+
+/// The sentence that goes under every answer.
+pub const INSULATOR: &str = "An insulator is assumed: formal charges do not show whether there is a band gap.";
+
+/// Everything that was found about one material. `plane` is the direction of the number ladder, in the axes of the
+/// file; without it the first of (001), (100), (010), (110), (111) on which zero is missing, else (001).
+#[must_use]
+pub fn describe(material: &Material, settings: &Settings, plane: Option<[i64; 3]>) -> String {
+    let mut text = String::new();
+    // Writing to a String cannot fail.
+    let _ = write_description(&mut text, material, settings, plane);
+    text
+}
+
+fn write_description(
+    out: &mut String,
+    material: &Material,
+    settings: &Settings,
+    plane: Option<[i64; 3]>,
+) -> std::fmt::Result {
+    let work = &material.classification;
+    let formula = work.formula().map_or_else(|| "unknown formula".to_owned(), |formula| formula.to_string());
+    writeln!(out, "{formula}   {} (block {})", material.file, material.block)?;
+    if let Some(symmetry) = &work.symmetry {
+        writeln!(
+            out,
+            "  space group        {} {}, Hall {} ({} at {} Å)",
+            symmetry.number, symmetry.symbol, symmetry.hall, settings.engine, short(symmetry.tolerance)
+        )?;
+    }
+    if let Some(primitive) = &work.primitive {
+        write_cell(out, primitive)?;
+        write_centres(out, material)?;
+    }
+    if let (Some(assignment), Some(crystal)) = (&work.assignment, &work.crystal) {
+        writeln!(
+            out,
+            "  formal charges     {}   ({})",
+            charges_text(&crystal.sites, &assignment.charges),
+            assignment.source.describe()
+        )?;
+    }
+    match &work.outcome {
+        Ok(formal) => write_answer(out, work.primitive.as_ref(), formal, plane)?,
+        Err(refusal) => {
+            writeln!(out, "  refused            {}: {}", refusal.code, refusal.message)?;
+            if let Some(span) = refusal.span {
+                writeln!(out, "  where              line {}, column {}", span.line, span.column)?;
+            }
+            if let Some(hint) = &refusal.hint {
+                writeln!(out, "  hint               {hint}")?;
+            }
+        }
+    }
+    for diagnostic in work.diagnostics.iter().filter(|diagnostic| diagnostic.severity >= Severity::Note) {
+        writeln!(out, "  {:<18} {}: {}", diagnostic.severity.to_string(), diagnostic.code, diagnostic.message)?;
+    }
+    Ok(())
+}
+
+fn write_cell(out: &mut String, primitive: &Primitive) -> std::fmt::Result {
+    let atoms = primitive.positions.len();
+    let volume = primitive.lattice.volume();
+    write!(out, "  primitive cell     {atoms} atoms, {volume:.3} Å³; ")?;
+    if primitive.centring == Centring::P {
+        writeln!(out, "vectors a1 a2 a3 are those of the file")
+    } else {
+        let vectors = primitive_vectors(primitive).map(|vector| format!("({})", vector.join(",")));
+        writeln!(out, "file cell {}, vectors a1 a2 a3 = {}", primitive.centring, vectors.join(" "))
+    }
+}
+
+fn write_centres(out: &mut String, material: &Material) -> std::fmt::Result {
+    let work = &material.classification;
+    let (Some(crystal), Some(primitive)) = (&work.crystal, &work.primitive) else { return Ok(()) };
+    let Some(centres) = &work.centres else {
+        return writeln!(out, "  inversion centres  none");
+    };
+    let mut first = true;
+    for (index, centre) in centres.classes.iter().enumerate() {
+        let title = if first { "inversion centres" } else { "" };
+        first = false;
+        let position = centre_position(primitive, centre.position).map(short);
+        let mut labels: Vec<&str> =
+            centre.atoms.iter().map(|&atom| crystal.sites[primitive.representatives[atom]].label.as_str()).collect();
+        labels.sort_unstable();
+        let ions = if labels.is_empty() { "no ion".to_owned() } else { labels.join(" ") };
+        let origin = if index == centres.chosen { "   origin of the centrosymmetric setting" } else { "" };
+        writeln!(out, "  {title:<18} ({}): {ions}{origin}", position.join(", "))?;
+    }
+    Ok(())
+}
+
+fn write_answer(
+    out: &mut String,
+    primitive: Option<&Primitive>,
+    formal: &FormalPolarization,
+    plane: Option<[i64; 3]>,
+) -> std::fmt::Result {
+    writeln!(out, "  offset             {}   in e a_i / V along a1 a2 a3, modulo 1", offset_text(formal.electron()))?;
+    for coset in &formal.cosets {
+        let zero = if coset.contains_zero { "contains zero" } else { "does not contain zero" };
+        let unit = match coset.modulus {
+            Modulus::Electron => "one electron at a time".to_owned(),
+            Modulus::Pair => format!("electrons in pairs, modulo {} e", coset.value),
+            Modulus::Ion => format!("whole ions only, modulo {} e", coset.value),
+        };
+        writeln!(
+            out,
+            "    {:<16} {zero}: offset {} ({unit})",
+            coset.modulus.to_string(),
+            offset_text(coset)
+        )?;
+    }
+    let quanta = formal.quanta();
+    let offset = formal.electron().offset.map(Component::value);
+    for axis in 0..3 {
+        let title = if axis == 0 { "polarization" } else { "" };
+        let (quantum, value) = (quanta[axis], quanta[axis] * offset[axis]);
+        writeln!(
+            out,
+            "  {title:<18} a{}: {:.4} C/m² = {:.2} µC/cm² = {:.4} e/nm², modulo the quantum {:.4} C/m² = {:.2} µC/cm² = {:.4} e/nm²",
+            axis + 1,
+            value * C_PER_M2,
+            value * C_PER_M2 * 100.0,
+            value * 100.0,
+            quantum * C_PER_M2,
+            quantum * C_PER_M2 * 100.0,
+            quantum * 100.0
+        )?;
+    }
+    let next = if formal.runner_up.is_finite() {
+        format!("next permitted value {:.3} e·Å away", formal.runner_up)
+    } else {
+        "every value is permitted".to_owned()
+    };
+    writeln!(out, "  residual           {:.2e} e·Å, limit {:.2e} e·Å, {next}", formal.residual, formal.residual_limit)?;
+    writeln!(out, "  permitted offsets  {}", permitted_text(formal))?;
+    if let Some(primitive) = primitive {
+        write_ladder(out, primitive, formal, plane)?;
+    }
+    writeln!(out, "  label              {}", formal.label)?;
+    writeln!(out, "  {}", sentence(formal))?;
+    writeln!(out, "  {INSULATOR}")
+}
+
+fn write_ladder(
+    out: &mut String,
+    primitive: &Primitive,
+    formal: &FormalPolarization,
+    plane: Option<[i64; 3]>,
+) -> std::fmt::Result {
+    const USUAL: [[i64; 3]; 5] = [[0, 0, 1], [1, 0, 0], [0, 1, 0], [1, 1, 0], [1, 1, 1]];
+    let along = |miller: [i64; 3]| {
+        let reduced = primitive.plane(miller)?;
+        formal.along(reduced).ok().map(|component| (miller, reduced, component))
+    };
+    let chosen = match plane {
+        Some(miller) => along(miller),
+        None => USUAL
+            .into_iter()
+            .filter_map(along)
+            .find(|(_, _, component)| component.value().abs() > 1e-9)
+            .or_else(|| along(USUAL[0])),
+    };
+    let Some((miller, reduced, component)) = chosen else { return Ok(()) };
+    let normal = primitive.lattice.inverse().transpose() * nalgebra::Vector3::from(reduced).cast::<f64>();
+    let quantum = normal.norm() / primitive.lattice.volume() / normal.norm_squared();
+    let indices = miller.map(|index| index.to_string()).join(" ");
+    writeln!(
+        out,
+        "  across ({indices})      {}   steps of e/A = {:.4} C/m²",
+        ladder(component.value()),
+        quantum * C_PER_M2
+    )
+}
+
+/// The conclusion in one sentence.
+fn sentence(formal: &FormalPolarization) -> String {
+    let pair = formal.pair();
+    match formal.label {
+        Label::ContainsZero if pair.value == 2 && !pair.contains_zero => {
+            "Zero is among the values for single electrons but not for pairs: a plane can be polar by a whole electron \
+             per cell."
+                .to_owned()
+        }
+        Label::ContainsZero => {
+            "Zero is among the values: whole electrons can remove any charge of this cell's surfaces.".to_owned()
+        }
+        Label::HalfQuantum => {
+            "Zero is not among the values: planes across which the offset is ½ carry half an electron per primitive \
+             surface cell that whole electrons cannot remove."
+                .to_owned()
+        }
+        Label::Rational => {
+            "Zero is not among the values: symmetry fixes a fraction other than ½ of the quantum.".to_owned()
+        }
+        Label::Polar => {
+            "The crystal is polar: along the free direction the value depends on the positions.".to_owned()
+        }
+        Label::Undefined => "No value is defined.".to_owned(),
+    }
+}
+
+/// `(1/2, 1/2, 1/2)`.
+#[must_use]
+pub fn offset_text(coset: &Coset) -> String {
+    format!("({})", coset.offset.map(|component| component.to_string()).join(", "))
+}
+
+/// The permitted offsets, and the free directions.
+#[must_use]
+pub fn permitted_text(formal: &FormalPolarization) -> String {
+    let offsets: Vec<String> = formal
+        .permitted
+        .offsets()
+        .iter()
+        .map(|offset| format!("({})", offset.map(|ratio| ratio.to_string()).join(",")))
+        .collect();
+    let free: Vec<String> = formal
+        .permitted
+        .free()
+        .iter()
+        .map(|direction| format!("({})", direction.map(|entry| entry.to_string()).join(",")))
+        .collect();
+    if free.is_empty() {
+        offsets.join(" ")
+    } else {
+        format!("{} plus any multiple of {}", offsets.join(" "), free.join(" and "))
+    }
+}
+
+/// A number without trailing zeros.
+fn short(value: f64) -> String {
+    let text = format!("{value:.6}");
+    text.trim_end_matches('0').trim_end_matches('.').to_owned()
+}
+
+/// The basis choices in words.
+#[must_use]
+pub fn describe_choices(record: &EnumerationRecord) -> String {
+    let mut text = String::new();
+    let _ = write_choices(&mut text, record);
+    text
+}
+
+fn write_choices(out: &mut String, record: &EnumerationRecord) -> std::fmt::Result {
+    use super::record::OffsetComponent;
+    let show = |component: &OffsetComponent| match component {
+        OffsetComponent::Exact(text) => text.clone(),
+        OffsetComponent::Free(value) => format!("{value:.4}"),
+    };
+    if !record.sweep.is_empty() {
+        let bases: Vec<usize> = record.sweep.iter().map(|sweep| sweep.planes.len()).collect();
+        writeln!(
+            out,
+            "\nSweep: a window of the primitive cell moved through the crystal passes {} bases ({}).",
+            bases.iter().product::<usize>(),
+            bases.iter().map(ToString::to_string).collect::<Vec<_>>().join(" × ")
+        )?;
+        for sweep in &record.sweep {
+            writeln!(out, "  along {}, window starting below the plane:", sweep.axis)?;
+            for plane in &sweep.planes {
+                writeln!(
+                    out,
+                    "    {:>8.5}  charge {:>+4}  p = {:>8}   {}",
+                    plane.coordinate,
+                    plane.charge,
+                    show(&plane.polarization),
+                    plane.sites.join(" ")
+                )?;
+            }
+        }
+    }
+    if let Some(free) = &record.free {
+        writeln!(
+            out,
+            "\nFree: each ion from any of the {} cells around its own makes {} bases.",
+            (2 * u64::from(free.window) + 1).pow(3),
+            free.choices
+        )?;
+        writeln!(out, "  along one axis they change p by {} different amounts:", free.values_per_axis)?;
+        writeln!(out, "    {:>8}  choices along one axis", "change")?;
+        let shown = 9;
+        let middle = free.counts.len() / 2;
+        let start = middle.saturating_sub(shown / 2);
+        if start > 0 {
+            writeln!(out, "    {:>8}", "...")?;
+        }
+        for count in free.counts.iter().skip(start).take(shown) {
+            writeln!(out, "    {:>+8}  {}", count.change, count.choices)?;
+        }
+        if start + shown < free.counts.len() {
+            writeln!(out, "    {:>8}  (all with --format json)", "...")?;
+        }
+        if let Some(zero) = &free.choices_at_zero {
+            writeln!(out, "  {zero} of the choices have zero polarization.")?;
+        }
+    }
+    Ok(())
+}
