@@ -1,5 +1,6 @@
 //! Formal polarization lattices of crystals, for people who design interfaces between insulators.
 
 pub mod cell;
+pub mod charge;
 pub mod crystal;
 pub mod diagnostic;
