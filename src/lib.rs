@@ -1,4 +1,23 @@
 //! Formal polarization lattices of crystals, for people who design interfaces between insulators.
+//!
+//! From a CIF file to the question whether zero is one of the formal polarization values that a crystal allows:
+//!
+//! | module | question |
+//! | --- | --- |
+//! | [`diagnostic`] | what is wrong with an input? |
+//! | [`exact`] | integers, rationals and their normal forms |
+//! | [`cell`] | lattice vectors, reduction, neighbours |
+//! | [`crystal`] | which atoms sit where? |
+//! | [`symmetry`] | which operations map the crystal onto itself, and where are its centres of inversion? |
+//! | [`cif`] | what does the file say? |
+//! | [`charge`] | which formal charge does each ion carry? |
+//! | [`polarization`] | which values are allowed, and is zero among them? |
+//! | [`collection`] | the same for many files |
+//! | [`report`] | records, tables, words |
+//! | [`cli`] | the command line |
+//!
+//! Modules import from those above them only.
+
 pub mod cell;
 pub mod charge;
 pub mod cif;

@@ -1,6 +1,6 @@
 //! From the content of a file to a label: reads, expands, searches symmetry, assigns charges, sums the polarization.
 
-use crate::charge::{self, Assignment, Given};
+use crate::charge::{self, Assignment, Given, Known};
 use crate::cif;
 use crate::crystal::{AsymmetricUnit, Crystal, ExpandTolerance, Formula};
 use crate::diagnostic::{Code, Diagnostic};
@@ -170,7 +170,7 @@ fn run(
     // Charges that are known beforehand take part in the symmetry search: sites of unlike charge are unlike.
     let known = charge::known(&crystal.sites, &crystal.origins, settings.charges.as_ref())?;
     let mut kinds: Vec<i32> = crystal.sites.iter().map(|site| i32::from(site.element.number())).collect();
-    if let Some(assignment) = &known {
+    if let Known::Settled(assignment) = &known {
         for (kind, charge) in kinds.iter_mut().zip(&assignment.charges) {
             *kind += 1000 * i32::try_from(*charge).unwrap_or(0);
         }
@@ -189,8 +189,8 @@ fn run(
     let primitive = &*work.primitive.insert(Primitive::new(crystal, &kinds, symmetry)?);
     work.centres = Centres::find(primitive)?;
     let assignment = match known {
-        Some(assignment) => assignment,
-        None => charge::infer(&crystal.sites, &symmetry.orbits)?,
+        Known::Settled(assignment) => assignment,
+        Known::Open(remark) => charge::infer(&crystal.sites, &symmetry.orbits, remark)?,
     };
     let charges: Vec<i64> = primitive.representatives.iter().map(|&site| assignment.charges[site]).collect();
     work.diagnostics.extend(assignment.diagnostics.iter().cloned());

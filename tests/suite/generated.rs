@@ -18,8 +18,11 @@ fn compare(name: &str, content: &str) {
 }
 
 fn page(command: Command, name: &str, diagnostics: bool) {
-    let command = command.name(name.to_owned()).bin_name(name.replace('-', " "));
-    let manual = clap_mangen::Man::new(command).date("").source(concat!("cosetta ", env!("CARGO_PKG_VERSION")));
+    let command = command.bin_name(name.replace('-', " "));
+    let manual = clap_mangen::Man::new(command)
+        .title(name.to_owned())
+        .date("")
+        .source(concat!("cosetta ", env!("CARGO_PKG_VERSION")));
     let mut bytes = Vec::new();
     manual.render(&mut bytes).expect("a page");
     let mut text = String::from_utf8(bytes).expect("text");

@@ -51,7 +51,8 @@ fn imports_point_downwards() {
         let body = text.split("#[cfg(test)]").next().expect("a body");
         for (number, line) in body.lines().enumerate() {
             for piece in line.split("crate::").skip(1) {
-                let target: String = piece.chars().take_while(|c| c.is_ascii_alphanumeric() || *c == '_').collect();
+                let target: String =
+                    piece.chars().take_while(|c| c.is_ascii_alphanumeric() || *c == '_').collect();
                 if rank(&target).is_some_and(|target| target > own) {
                     faults.push(format!("{relative}:{}: imports {target}", number + 1));
                 }

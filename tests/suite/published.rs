@@ -15,8 +15,8 @@ use moyo::data::{HallSymbol, hall_symbol_entry};
 use nalgebra::{Matrix3, Vector3};
 
 #[derive(serde::Deserialize)]
-pub struct Entry {
-    pub name: String,
+pub(crate) struct Entry {
+    pub(crate) name: String,
     sg: i32,
     setting: Option<String>,
     lattice: [f64; 6],
@@ -29,7 +29,7 @@ pub struct Entry {
     p_mod_2e: Option<[f64; 3]>,
 }
 
-pub fn entries() -> Vec<Entry> {
+pub(crate) fn entries() -> Vec<Entry> {
     serde_json::from_str(include_str!("../data/published.json")).expect("the check values")
 }
 
@@ -37,15 +37,19 @@ pub fn entries() -> Vec<Entry> {
 fn operations(number: i32, setting: Option<&str>) -> Vec<Operation> {
     let hall_number = (1..=530)
         .find(|&hall| {
-            hall_symbol_entry(hall)
-                .is_some_and(|entry| entry.number == number && setting.is_none_or(|wanted| entry.setting == wanted))
+            hall_symbol_entry(hall).is_some_and(|entry| {
+                entry.number == number && setting.is_none_or(|wanted| entry.setting == wanted)
+            })
         })
         .unwrap_or_else(|| panic!("no setting {setting:?} of group {number}"));
     let symbol = HallSymbol::from_hall_number(hall_number).expect("a Hall symbol");
-    symbol
-        .traverse()
-        .into_iter()
-        .map(|operation| Operation { rotation: operation.rotation, translation: operation.translation })
+    let centring = hall_symbol_entry(hall_number).expect("an entry").centering.lattice_points();
+    let with_centring = itertools::iproduct!(symbol.traverse(), centring);
+    with_centring
+        .map(|(operation, point)| Operation {
+            rotation: operation.rotation,
+            translation: operation.translation + point,
+        })
         .collect()
 }
 
@@ -65,7 +69,7 @@ fn element(symbol: &str, charge: f64) -> Element {
 }
 
 impl Entry {
-    pub fn unit(&self) -> AsymmetricUnit {
+    pub(crate) fn unit(&self) -> AsymmetricUnit {
         let [a, b, c, alpha, beta, gamma] = self.lattice;
         let parameters = CellParameters { lengths: [a, b, c], angles: [alpha, beta, gamma] };
         let sites = self
@@ -84,13 +88,18 @@ impl Entry {
         }
     }
 
-    pub fn is_averaged(&self) -> bool {
+    pub(crate) fn is_averaged(&self) -> bool {
         self.sites.iter().any(|(_, charge, _)| charge.fract() != 0.0)
     }
 
     fn charges(&self) -> Given {
-        let parts: Vec<String> =
-            self.unit().sites.iter().zip(&self.sites).map(|(site, (_, q, _))| format!("{}={q}", site.label)).collect();
+        let parts: Vec<String> = self
+            .unit()
+            .sites
+            .iter()
+            .zip(&self.sites)
+            .map(|(site, (_, q, _))| format!("{}={q}", site.label))
+            .collect();
         parts.join(",").parse().expect("charges")
     }
 
@@ -105,7 +114,7 @@ impl Entry {
         miss.norm() < 5e-4
     }
 
-    pub fn check(&self, work: &Classification) -> Result<(), String> {
+    pub(crate) fn check(&self, work: &Classification) -> Result<(), String> {
         let formal = work.outcome.as_ref().map_err(ToString::to_string)?;
         let primitive = work.primitive.as_ref().ok_or("no primitive cell")?;
         if primitive.positions.len() != self.n_prim {
@@ -118,7 +127,9 @@ impl Entry {
             Some(expected) if formal.pair().value != 2 || !self.agrees(work, formal.pair(), expected) => {
                 return Err(format!("{:?} modulo 2e in place of {expected:?}", formal.pair().offset));
             }
-            None if formal.pair().value != 1 => return Err("some charge is odd, yet the pair modulus is 2".into()),
+            None if formal.pair().value != 1 => {
+                return Err("some charge is odd, yet the pair modulus is 2".into());
+            }
             _ => {}
         }
         slow::check(work)
@@ -157,7 +168,9 @@ fn offsets_with_inferred_charges() {
     for entry in entries() {
         let work = classify_unit(&entry.unit(), &settings(None));
         match (&work.outcome, entry.check(&work)) {
-            (Err(refusal), _) => refused.push(format!("{}: {}: {}", entry.name, refusal.code, refusal.message)),
+            (Err(refusal), _) => {
+                refused.push(format!("{}: {}: {}", entry.name, refusal.code, refusal.message))
+            }
             (Ok(_), Ok(())) => right += 1,
             (Ok(_), Err(why)) => wrong.push(format!("{}: {why}", entry.name)),
         }

@@ -11,7 +11,7 @@ use cosetta::polarization::{Component, Label};
 use nalgebra::{Matrix3, Vector3};
 
 /// Compares a classification with the slow routine.
-pub fn check(work: &Classification) -> Result<(), String> {
+pub(crate) fn check(work: &Classification) -> Result<(), String> {
     let crystal = work.crystal.as_ref().ok_or("no crystal")?;
     let primitive = work.primitive.as_ref().ok_or("no primitive cell")?;
     let symmetry = work.symmetry.as_ref().ok_or("no symmetry")?;
@@ -43,7 +43,11 @@ pub fn check(work: &Classification) -> Result<(), String> {
         .filter(|t| (0..count).all(|i| find(i, &(place(i) + t)).is_some()))
         .collect();
     if translations.len() * primitive.positions.len() != count {
-        return Err(format!("{} translations by search, {} primitive atoms of {count}", translations.len(), primitive.positions.len()));
+        return Err(format!(
+            "{} translations by search, {} primitive atoms of {count}",
+            translations.len(),
+            primitive.positions.len()
+        ));
     }
     // They are lattice vectors in the primitive basis.
     for t in &translations {
@@ -97,7 +101,12 @@ pub fn check(work: &Classification) -> Result<(), String> {
             // Where the positions are too rough for 24ths, rounding says nothing.
             let is_clear = drift < 1.0 / 96.0;
             if is_clear && formal.electron().offset[axis] != Component::Exact(expected) {
-                return Err(format!("component {} is {} by rounding, {} exactly", axis + 1, expected, formal.electron().offset[axis]));
+                return Err(format!(
+                    "component {} is {} by rounding, {} exactly",
+                    axis + 1,
+                    expected,
+                    formal.electron().offset[axis]
+                ));
             }
         }
         // Fixed by every rotation, in exact numbers.

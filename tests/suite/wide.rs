@@ -85,14 +85,23 @@ fn labelled_oxides_agree_with_the_slow_routine() {
                     }
                 }
                 Err(refusal) => {
-                    refusals.entry(refusal.code).or_default().push(format!("{}: {}", record.id, refusal.message));
+                    refusals
+                        .entry(refusal.code)
+                        .or_default()
+                        .push(format!("{}: {}", record.id, refusal.message));
                 }
             }
         }
     }
-    println!("{count} oxides: {labels:?}, {centrosymmetric} centrosymmetric, largest residual {largest_residual:.4} e·Å");
+    println!(
+        "{count} oxides: {labels:?}, {centrosymmetric} centrosymmetric, largest residual {largest_residual:.4} e·Å"
+    );
     for (code, which) in &refusals {
-        println!("refused {code}: {}\n  {}", which.len(), which.iter().take(12).cloned().collect::<Vec<_>>().join("\n  "));
+        println!(
+            "refused {code}: {}\n  {}",
+            which.len(),
+            which.iter().take(12).cloned().collect::<Vec<_>>().join("\n  ")
+        );
     }
     assert!(faults.is_empty(), "{} disagree:\n{}", faults.len(), faults.join("\n"));
     assert!(!refusals.contains_key(&Code::PolarizationRoutes), "two routes disagree");
@@ -101,7 +110,13 @@ fn labelled_oxides_agree_with_the_slow_routine() {
 #[test]
 #[ignore = "needs the data sets in COSETTA_DATA"]
 fn every_block_of_the_cif_folders_is_a_row_or_a_coded_refusal() {
-    let folders = ["cif-public-domain", "cif-all-space-groups", "cif-oxidation-loops", "cif-edge-cases", "cif-mixed-exports"];
+    let folders = [
+        "cif-public-domain",
+        "cif-all-space-groups",
+        "cif-oxidation-loops",
+        "cif-edge-cases",
+        "cif-mixed-exports",
+    ];
     let paths: Vec<PathBuf> = folders.iter().map(|folder| data().join(folder)).collect();
     let inputs = find_inputs(&paths);
     let mut codes: BTreeMap<String, usize> = BTreeMap::new();
