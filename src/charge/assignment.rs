@@ -394,6 +394,9 @@ mod tests {
             (&[("Pb1", 2), ("Pb2", 4), ("O", 8)], "Pb1=4,Pb2=2,O=-2"),
             (&[("Sb1", 4), ("Sb2", 4), ("O", 16)], "charge-008"),
             (&[("N1", 1), ("N2", 1), ("H", 4), ("O", 3)], "charge-008"),
+            // Fe +2 and S −1 for textbooks, which the composition does not tell from Fe +4 and S −2.
+            (&[("Fe", 1), ("S", 2)], "charge-008"),
+            (&[("Eu", 1), ("Ti", 1), ("O", 3)], "Eu=2,Ti=4,O=-2"),
             // Averages, metals, elements.
             (&[("Li", 2), ("Mn", 4), ("O", 8)], "charge-005"),
             (&[("Fe", 3), ("O", 4)], "charge-005"),

@@ -9,10 +9,14 @@
 //!
 //! where p is the part of the element's published reports that have the state. The inner weights add up to one per
 //! element, not per atom: the atoms of one element in one crystal share their surroundings and are not independent
-//! witnesses (on 3,986 labelled oxides a weight per atom gives half again as many wrong answers). One element may
-//! carry two states, which must be neighbours (see `neighbours`); one oxide in twenty is of mixed valence, hence
-//! ln 20. Of all neutral arrangements the best two are found exactly, and the best is accepted only if it is
-//! [`MIN_LIKELIHOOD_RATIO`] times as likely as the second.
+//! witnesses. One element may carry two states, which must be neighbours (see `neighbours`); one oxide in twenty is of
+//! mixed valence, hence ln 20. Of all neutral arrangements the best two are found exactly, and the best is accepted only
+//! if it is [`MIN_LIKELIHOOD_RATIO`] times as likely as the second.
+//!
+//! Measured on 3,986 oxides labelled by bond valence (George et al., CC BY 4.0; the labels are not truth): 3,758 agree,
+//! 56 differ, 172 are refused. With a limit of 1.5 instead of 2, 3,775 agree and 69 differ. A weight per atom of the
+//! formula unit does as well on these oxides (3,777 and 57) but punishes a rare state of many atoms: pyrite, Fe +2 and
+//! S −1 in textbooks, would become Fe +4 and S −2 at odds of 15, where a weight per element refuses.
 //!
 //! The composition cannot tell which of two inequivalent sets of equal size carries which state; these tie, and are
 //! refused. The place for evidence from bond lengths is the argument of `best_arrangements`.
