@@ -10,6 +10,7 @@ mod spglib;
 
 use crate::crystal::{Crystal, Operation};
 use crate::diagnostic::{Code, Diagnostic};
+use ::moyo::data::{Setting, hall_symbol_entry};
 use std::cell::Cell;
 use std::fmt;
 use std::panic::{self, AssertUnwindSafe};
@@ -117,6 +118,14 @@ pub fn find_symmetry(
     Ok(found)
 }
 
+/// Short Hermann–Mauguin symbol, without blanks, and Hall symbol of the standard setting of a space group; `None` for
+/// a number outside 1 to 230. All engines take them from here, so that they name a group alike.
+fn standard_symbols(number: i32) -> Option<(String, String)> {
+    let number = (1..=230).contains(&number).then_some(number)?;
+    let entry = hall_symbol_entry(Setting::Standard.hall_number(number)?)?;
+    Some((entry.hm_short.replace(' ', ""), entry.hall_symbol.to_owned()))
+}
+
 thread_local! {
     static IS_GUARDED: Cell<bool> = const { Cell::new(false) };
 }
@@ -143,7 +152,8 @@ fn quietly<T>(run: AssertUnwindSafe<impl FnOnce() -> T>) -> std::thread::Result<
 fn check(found: &Symmetry, sites: usize) -> Result<(), String> {
     let translations = found.operations.iter().filter(|operation| operation.is_translation()).count();
     let count = found.operations.len();
-    if translations == 0 || count % translations != 0 || !(1..=48).contains(&(count / translations)) {
+    if translations == 0 || !count.is_multiple_of(translations) || !(1..=48).contains(&(count / translations))
+    {
         return Err(format!("it returned {count} operations with {translations} translations"));
     }
     if let Some(operation) = found.operations.iter().find(|operation| determinant(operation).abs() != 1) {
