@@ -6,13 +6,11 @@
 //! 1651 (1993); Resta, Rev. Mod. Phys. 66, 899 (1994)). Throughout, `p` is in units of `e a_i / V` along the
 //! primitive vectors `a_i`.
 
-
 mod choices;
 mod formal;
 mod label;
 mod modulus;
 mod permitted;
-
 
 pub use choices::{Choices, Sweep, SweepPlane};
 pub use formal::{C_PER_M2, Component, FormalPolarization};

@@ -110,7 +110,13 @@ pub fn known(sites: &[Site], orbits: &[usize], given: Option<&Given>) -> Result<
     let orbits = Orbit::collect(sites, orbits)?;
     let settled = |charges: Vec<i64>, source| {
         check(sites, &orbits, &charges)?;
-        Ok(Known::Settled(Assignment { charges, source, diagnostics: Vec::new(), runner_up: None, margin: None }))
+        Ok(Known::Settled(Assignment {
+            charges,
+            source,
+            diagnostics: Vec::new(),
+            runner_up: None,
+            margin: None,
+        }))
     };
     let proposed = |refusal| propose(refusal, sites, &orbits);
     if let Some(given) = given {

@@ -4,9 +4,6 @@ use crate::crystal::{Element, Site};
 use crate::diagnostic::{Code, Diagnostic};
 use std::collections::BTreeMap;
 
-/// Occupancies from here up count as full; the same limit as when a crystal is expanded.
-const FULL_OCCUPANCY: f64 = 0.999;
-
 /// A set of symmetry-equivalent sites of one cell.
 #[derive(Debug, Clone, PartialEq, Eq)]
 pub(crate) struct Orbit {
@@ -30,10 +27,12 @@ impl Orbit {
         let mut position: BTreeMap<usize, usize> = BTreeMap::new();
         let mut found: Vec<Self> = Vec::new();
         for (index, (site, orbit)) in sites.iter().zip(orbits).enumerate() {
-            if site.occupancy.is_nan() || site.occupancy < FULL_OCCUPANCY {
+            if !site.is_full() {
                 let message = format!(
-                    "site {} has occupancy {}, below {FULL_OCCUPANCY}; charges of shared sites are averages",
-                    site.label, site.occupancy
+                    "site {} has occupancy {}, below {}; charges of shared sites are averages",
+                    site.label,
+                    site.occupancy,
+                    Site::FULL_OCCUPANCY
                 );
                 return Err(Diagnostic::error(Code::SiteShared, message));
             }

@@ -67,7 +67,8 @@ pub(super) fn run(arguments: Arguments) -> anyhow::Result<Exit> {
     let settings = arguments.structure.settings();
     let inputs = find_inputs(&arguments.paths);
     let jobs = arguments.jobs.map_or(0, usize::from);
-    let pool = rayon::ThreadPoolBuilder::new().num_threads(jobs).build().context("cannot start worker threads")?;
+    let pool =
+        rayon::ThreadPoolBuilder::new().num_threads(jobs).build().context("cannot start worker threads")?;
     let mut sink = Sink {
         output: Output::open(arguments.output.output.as_deref())?,
         format: arguments.format,
@@ -119,10 +120,12 @@ fn classify_input(input: &Input, settings: &Settings) -> Vec<Material> {
 }
 
 fn progress_bar(inputs: usize, quiet: bool) -> ProgressBar {
-    let is_shown = !quiet && inputs > 1 && std::io::stderr().is_terminal() && !std::io::stdout().is_terminal();
+    let is_shown =
+        !quiet && inputs > 1 && std::io::stderr().is_terminal() && !std::io::stdout().is_terminal();
     let target = if is_shown { ProgressDrawTarget::stderr() } else { ProgressDrawTarget::hidden() };
     let bar = ProgressBar::with_draw_target(Some(inputs as u64), target);
-    if let Ok(style) = ProgressStyle::with_template("{pos} of {len} files  {wide_bar}  {per_sec}  {eta} left") {
+    if let Ok(style) = ProgressStyle::with_template("{pos} of {len} files  {wide_bar}  {per_sec}  {eta} left")
+    {
         bar.set_style(style);
     }
     bar
@@ -236,10 +239,12 @@ impl Tally {
 
 impl std::fmt::Display for Tally {
     fn fmt(&self, f: &mut std::fmt::Formatter<'_>) -> std::fmt::Result {
-        let mut parts: Vec<String> = self.labels.iter().map(|(label, count)| format!("{count} {label}")).collect();
+        let mut parts: Vec<String> =
+            self.labels.iter().map(|(label, count)| format!("{count} {label}")).collect();
         let refused: usize = self.refusals.values().sum();
         if refused > 0 {
-            let codes: Vec<String> = self.refusals.iter().map(|(code, count)| format!("{count} {code}")).collect();
+            let codes: Vec<String> =
+                self.refusals.iter().map(|(code, count)| format!("{count} {code}")).collect();
             parts.push(format!("{refused} refused ({})", codes.join(", ")));
         }
         write!(f, "{} materials: {}", self.materials, parts.join(", "))

@@ -73,11 +73,15 @@ fn positive(text: &str) -> Result<f64, String> {
 pub(super) fn plane(text: &str) -> Result<[i64; 3], String> {
     let indices: Vec<i64> = text
         .split(',')
-        .map(|part| part.trim().parse().map_err(|_| format!("'{part}' is not a whole number; write a plane as 0,0,1")))
+        .map(|part| {
+            part.trim().parse().map_err(|_| format!("'{part}' is not a whole number; write a plane as 0,0,1"))
+        })
         .collect::<Result<_, _>>()?;
     match <[i64; 3]>::try_from(indices) {
         Ok([0, 0, 0]) => Err("0,0,0 is not a plane".to_owned()),
-        Ok(indices) if indices.iter().any(|index| index.abs() > 1000) => Err("indices go up to 1000".to_owned()),
+        Ok(indices) if indices.iter().any(|index| index.abs() > 1000) => {
+            Err("indices go up to 1000".to_owned())
+        }
         Ok(indices) => Ok(indices),
         Err(indices) => Err(format!("{} indices in place of three; write a plane as 0,0,1", indices.len())),
     }

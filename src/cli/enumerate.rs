@@ -54,7 +54,8 @@ enum Family {
 
 pub(super) fn run(arguments: Arguments) -> anyhow::Result<Exit> {
     let settings = arguments.structure.settings();
-    let input = if arguments.file.as_os_str() == "-" { Input::Stdin } else { Input::File(arguments.file.clone()) };
+    let input =
+        if arguments.file.as_os_str() == "-" { Input::Stdin } else { Input::File(arguments.file.clone()) };
     let name = input.name();
     let materials = match input.read() {
         Ok(bytes) => classify_bytes(&name, &bytes, &settings),
@@ -85,7 +86,9 @@ pub(super) fn run(arguments: Arguments) -> anyhow::Result<Exit> {
             })
             .collect::<Vec<_>>()
             .join("\n"),
-        Format::Json => serde_json::to_string_pretty(&records).context("cannot write a record as JSON")? + "\n",
+        Format::Json => {
+            serde_json::to_string_pretty(&records).context("cannot write a record as JSON")? + "\n"
+        }
         Format::Jsonl => records
             .iter()
             .map(|record| serde_json::to_string(record).map(|line| line + "\n"))
@@ -104,8 +107,11 @@ fn enumerate(
     family: Family,
     window: u32,
 ) -> (EnumerationRecord, Option<Diagnostic>) {
-    let mut record =
-        EnumerationRecord { material: MaterialRecord::new(material, settings), sweep: Vec::new(), free: None };
+    let mut record = EnumerationRecord {
+        material: MaterialRecord::new(material, settings),
+        sweep: Vec::new(),
+        free: None,
+    };
     let work = &material.classification;
     let formal = match &work.outcome {
         Ok(formal) => formal,

@@ -20,7 +20,8 @@ impl Output {
                 let mut name = path.as_os_str().to_owned();
                 name.push(".partial");
                 let partial = PathBuf::from(name);
-                let file = File::create(&partial).with_context(|| format!("cannot write {}", partial.display()))?;
+                let file =
+                    File::create(&partial).with_context(|| format!("cannot write {}", partial.display()))?;
                 Self::File { writer: BufWriter::new(file), partial, path: path.to_owned() }
             }
         })
@@ -30,7 +31,9 @@ impl Output {
         match self {
             Self::Stdout(writer) => writer.write_all(text.as_bytes())?,
             Self::File { writer, path, .. } => {
-                writer.write_all(text.as_bytes()).with_context(|| format!("cannot write {}", path.display()))?;
+                writer
+                    .write_all(text.as_bytes())
+                    .with_context(|| format!("cannot write {}", path.display()))?;
             }
         }
         Ok(())
@@ -41,7 +44,8 @@ impl Output {
             Self::Stdout(mut writer) => writer.flush()?,
             Self::File { mut writer, partial, path } => {
                 writer.flush().with_context(|| format!("cannot write {}", path.display()))?;
-                std::fs::rename(&partial, &path).with_context(|| format!("cannot write {}", path.display()))?;
+                std::fs::rename(&partial, &path)
+                    .with_context(|| format!("cannot write {}", path.display()))?;
             }
         }
         Ok(())

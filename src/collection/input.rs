@@ -53,7 +53,10 @@ impl Input {
             return Err(too_large(bytes.len() as u64));
         }
         if bytes.iter().all(u8::is_ascii_whitespace) {
-            return Err(Diagnostic::error(Code::FileEmpty, format!("the file is empty ({} bytes)", bytes.len())));
+            return Err(Diagnostic::error(
+                Code::FileEmpty,
+                format!("the file is empty ({} bytes)", bytes.len()),
+            ));
         }
         Ok(bytes)
     }
@@ -72,7 +75,10 @@ fn unreadable(what: &str, error: &io::Error) -> Diagnostic {
 }
 
 fn too_large(length: u64) -> Diagnostic {
-    Diagnostic::error(Code::FileTooLarge, format!("the file has {length} bytes, above the limit of {MAX_FILE_BYTES}"))
+    Diagnostic::error(
+        Code::FileTooLarge,
+        format!("the file has {length} bytes, above the limit of {MAX_FILE_BYTES}"),
+    )
 }
 
 /// The inputs a list of paths names: files as given, folders searched for files ending in `.cif` (any case) at any
@@ -103,7 +109,8 @@ fn find_in_folder(folder: &Path, inputs: &mut Vec<Input>) {
             Ok(_) => {}
             Err(error) => {
                 let path = error.path().unwrap_or(folder).to_path_buf();
-                let diagnostic = Diagnostic::error(Code::FileUnreadable, format!("the folder cannot be read: {error}"));
+                let diagnostic =
+                    Diagnostic::error(Code::FileUnreadable, format!("the folder cannot be read: {error}"));
                 inputs.push(Input::Fault(path, diagnostic));
             }
         }
@@ -115,7 +122,9 @@ fn find_in_folder(folder: &Path, inputs: &mut Vec<Input>) {
 }
 
 fn has_cif_name(path: &Path) -> bool {
-    path.extension().is_some_and(|extension| extension.eq_ignore_ascii_case("cif") || extension.eq_ignore_ascii_case("mcif"))
+    path.extension().is_some_and(|extension| {
+        extension.eq_ignore_ascii_case("cif") || extension.eq_ignore_ascii_case("mcif")
+    })
 }
 
 #[cfg(test)]

@@ -25,9 +25,12 @@ impl Site {
         Self { label: label.into(), element, position, occupancy: 1.0, oxidation: None }
     }
 
-    /// Whether the site is filled in every cell. Occupancies within 0.001 of one count as full: files round them.
+    /// Occupancies from here up count as full: files round them.
+    pub const FULL_OCCUPANCY: f64 = 0.999;
+
+    /// Whether the site is filled in every cell.
     #[must_use]
     pub fn is_full(&self) -> bool {
-        self.occupancy >= 0.999
+        self.occupancy >= Self::FULL_OCCUPANCY
     }
 }

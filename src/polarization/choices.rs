@@ -72,7 +72,9 @@ impl Choices {
                 }
                 for n in -steps..=steps {
                     // Stays inside: |index − reach| ≤ w Σ|Z| of the ions so far.
-                    if let Some(target) = isize::try_from(charge * n).ok().and_then(|by| index.checked_add_signed(by)) {
+                    if let Some(target) =
+                        isize::try_from(charge * n).ok().and_then(|by| index.checked_add_signed(by))
+                    {
                         next[target] += ways;
                     }
                 }
@@ -132,8 +134,7 @@ impl Sweep {
         let gap = tolerance / primitive.lattice.face_distances()[axis];
         let coordinates: Vec<f64> = primitive.positions.iter().map(|position| position[axis]).collect();
         let (groups, lifts) = group_cyclic(&coordinates, gap);
-        let overflow =
-            |_| Diagnostic::error(Code::PolarizationOverflow, crate::exact::Overflow.to_string());
+        let overflow = |_| Diagnostic::error(Code::PolarizationOverflow, crate::exact::Overflow.to_string());
         let mut lifted: i128 =
             lifts.iter().zip(charges).map(|(&lift, &charge)| i128::from(lift) * i128::from(charge)).sum();
         let mut planes = Vec::with_capacity(groups.len());
@@ -141,9 +142,9 @@ impl Sweep {
             let charge: i64 = atoms.iter().map(|&atom| charges[atom]).sum();
             let mean = mean_coordinate(&atoms, &coordinates, &lifts);
             let value = match formal.polarization[axis] {
-                Component::Exact(ratio) => Component::Exact(
-                    ratio.checked_add(Ratio::from_integer(lifted)).map_err(overflow)?,
-                ),
+                Component::Exact(ratio) => {
+                    Component::Exact(ratio.checked_add(Ratio::from_integer(lifted)).map_err(overflow)?)
+                }
                 Component::Free(value) => Component::Free(value + float(lifted)),
             };
             planes.push(SweepPlane { coordinate: mean - mean.floor(), atoms, charge, value });

@@ -51,9 +51,7 @@ impl Component {
     #[allow(clippy::cast_precision_loss, reason = "moduli are small")]
     pub fn modulo(self, m: i64) -> Result<Self, Overflow> {
         Ok(match self {
-            Self::Exact(ratio) => {
-                Self::Exact(ratio.checked_div(Ratio::from_integer(i128::from(m)))?.fract())
-            }
+            Self::Exact(ratio) => Self::Exact(ratio.checked_div(Ratio::from_integer(i128::from(m)))?.fract()),
             Self::Free(value) => {
                 let scaled = value / m as f64;
                 let fraction = scaled - scaled.floor();
@@ -123,7 +121,8 @@ impl FormalPolarization {
                 format!("the charges of the primitive cell add up to {total:+} e, not to zero"),
             ));
         }
-        let rotations: Vec<Matrix3<i32>> = primitive.operations.iter().map(|operation| operation.rotation).collect();
+        let rotations: Vec<Matrix3<i32>> =
+            primitive.operations.iter().map(|operation| operation.rotation).collect();
         let permitted = Permitted::by_rotations(&rotations).map_err(overflow)?;
         let sum: Vector3<f64> =
             primitive.positions.iter().zip(charges).map(|(position, &charge)| position * float(charge)).sum();
@@ -237,7 +236,10 @@ fn overflow(cause: Overflow) -> Diagnostic {
 }
 
 fn disagreement(one: &str, other: &str) -> Diagnostic {
-    Diagnostic::error(Code::PolarizationRoutes, format!("two routes to the offset disagree: {one} and {other}"))
+    Diagnostic::error(
+        Code::PolarizationRoutes,
+        format!("two routes to the offset disagree: {one} and {other}"),
+    )
 }
 
 #[allow(clippy::cast_precision_loss, reason = "sums of charges and shifts of one cell are far below 2^52")]
@@ -273,7 +275,8 @@ fn exact_route(
         right.extend(shift);
     }
     if right.is_empty() {
-        right.extend([0; 3]);
+        // The one row of zeros that stands for no condition.
+        right.push(0);
     }
     let smith = permitted.smith();
     let transformed = smith.u.checked_mul_vector(&right).map_err(overflow)?;
@@ -288,7 +291,11 @@ fn exact_route(
     solve(permitted, &transformed, sum).map_err(overflow)
 }
 
-fn solve(permitted: &Permitted, transformed: &[i128], sum: &Vector3<f64>) -> Result<[Component; 3], Overflow> {
+fn solve(
+    permitted: &Permitted,
+    transformed: &[i128],
+    sum: &Vector3<f64>,
+) -> Result<[Component; 3], Overflow> {
     let divisors = permitted.divisors();
     let v = &permitted.smith().v;
     let free_part = free_coordinates(permitted, sum)?;

@@ -7,7 +7,9 @@ use std::fmt;
 use std::str::FromStr;
 
 /// What the polarization lattice of a material is like, for the modulus of single electrons.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, serde::Serialize, schemars::JsonSchema)]
+#[derive(
+    Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, serde::Serialize, schemars::JsonSchema,
+)]
 #[serde(rename_all = "kebab-case")]
 pub enum Label {
     /// Zero is one of the values.
@@ -63,6 +65,9 @@ impl FromStr for Label {
     type Err = String;
 
     fn from_str(text: &str) -> Result<Self, Self::Err> {
-        Self::ALL.into_iter().find(|label| label.to_string() == text).ok_or_else(|| format!("unknown label '{text}'"))
+        Self::ALL
+            .into_iter()
+            .find(|label| label.to_string() == text)
+            .ok_or_else(|| format!("unknown label '{text}'"))
     }
 }

@@ -67,7 +67,8 @@ impl Permitted {
                     let multiple = Ratio::new(step, divisors[axis]).ok_or(Overflow)?;
                     let mut next = *offset;
                     for (component, entry) in next.iter_mut().zip(column(axis)) {
-                        *component = component.checked_add(Ratio::from_integer(entry).checked_mul(multiple)?)?;
+                        *component =
+                            component.checked_add(Ratio::from_integer(entry).checked_mul(multiple)?)?;
                     }
                     extended.push(next);
                 }
@@ -123,7 +124,8 @@ impl Permitted {
 }
 
 fn difference_rows(rotation: &Matrix3<i32>) -> [[i128; 3]; 3] {
-    [0, 1, 2].map(|row| [0, 1, 2].map(|column| i128::from(rotation[(row, column)]) - i128::from(row == column)))
+    [0, 1, 2]
+        .map(|row| [0, 1, 2].map(|column| i128::from(rotation[(row, column)]) - i128::from(row == column)))
 }
 
 /// Removes from an offset the part along the free directions, so that equal classes are written alike: the free

@@ -116,7 +116,8 @@ pub fn full_row(record: &MaterialRecord) -> Vec<String> {
 fn charges_text(sites: &[ChargeRecord]) -> String {
     let mut parts: Vec<String> = Vec::new();
     for site in sites {
-        let is_uniform = sites.iter().all(|other| other.element != site.element || other.charge == site.charge);
+        let is_uniform =
+            sites.iter().all(|other| other.element != site.element || other.charge == site.charge);
         let name = if is_uniform { &site.element } else { &site.label };
         let part = format!("{name}={}", site.charge);
         if !parts.contains(&part) {

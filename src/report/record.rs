@@ -303,11 +303,16 @@ pub fn primitive_vectors(primitive: &Primitive) -> [[String; 3]; 3] {
 impl CentreRecord {
     fn all(material: &Material) -> Vec<Self> {
         let work = &material.classification;
-        let (Some(crystal), Some(primitive), Some(centres)) = (&work.crystal, &work.primitive, &work.centres) else {
+        let (Some(crystal), Some(primitive), Some(centres)) = (&work.crystal, &work.primitive, &work.centres)
+        else {
             return Vec::new();
         };
         let labels = |centre: &Centre| {
-            centre.atoms.iter().map(|&atom| crystal.sites[primitive.representatives[atom]].label.clone()).collect()
+            centre
+                .atoms
+                .iter()
+                .map(|&atom| crystal.sites[primitive.representatives[atom]].label.clone())
+                .collect()
         };
         centres
             .classes
@@ -346,7 +351,10 @@ impl ChargesRecord {
             } else {
                 let label = crystal.sites[orbit].label.clone();
                 let element = crystal.sites[orbit].element.to_string();
-                sites.push((orbit, ChargeRecord { label, element, charge: assignment.charges[orbit], count: 1 }));
+                sites.push((
+                    orbit,
+                    ChargeRecord { label, element, charge: assignment.charges[orbit], count: 1 },
+                ));
             }
         }
         let sites = sites.into_iter().map(|(_, record)| record).collect();
@@ -385,7 +393,8 @@ impl LevelRecord {
 
 impl PermittedRecord {
     fn new(formal: &FormalPolarization) -> Self {
-        let offsets = formal.permitted.offsets().iter().map(|offset| offset.map(|ratio| ratio.to_string())).collect();
+        let offsets =
+            formal.permitted.offsets().iter().map(|offset| offset.map(|ratio| ratio.to_string())).collect();
         let narrow = |direction: &[i128; 3]| direction.map(|entry| i64::try_from(entry).unwrap_or_default());
         Self { offsets, free: formal.permitted.free().iter().map(narrow).collect() }
     }

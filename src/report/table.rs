@@ -89,7 +89,9 @@ impl Table {
         for row in &self.rows {
             writer.write_record(row)?;
         }
-        let bytes = writer.into_inner().map_err(|error| csv::Error::from(std::io::Error::other(error.to_string())))?;
+        let bytes = writer
+            .into_inner()
+            .map_err(|error| csv::Error::from(std::io::Error::other(error.to_string())))?;
         Ok(String::from_utf8_lossy(&bytes).into_owned())
     }
 }
@@ -103,7 +105,10 @@ mod tests {
         let mut table = Table::new(&[Column::text("formula", "formula"), Column::number("atoms", "atoms")]);
         table.rows.push(vec!["BaSnO3".into(), "5".into()]);
         table.rows.push(vec!["a, \"quoted\"".into(), "12".into()]);
-        assert_eq!(table.to_csv(true).expect("rows fit"), "formula,atoms\nBaSnO3,5\n\"a, \"\"quoted\"\"\",12\n");
+        assert_eq!(
+            table.to_csv(true).expect("rows fit"),
+            "formula,atoms\nBaSnO3,5\n\"a, \"\"quoted\"\"\",12\n"
+        );
         assert!(table.to_text(None).starts_with("formula"));
     }
 }

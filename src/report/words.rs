@@ -10,7 +10,8 @@ use crate::symmetry::{Centring, Primitive};
 use std::fmt::Write;
 
 /// The sentence that goes under every answer.
-pub const INSULATOR: &str = "An insulator is assumed: formal charges do not show whether there is a band gap.";
+pub const INSULATOR: &str =
+    "An insulator is assumed: formal charges do not show whether there is a band gap.";
 
 /// Everything that was found about one material. `plane` is the direction of the number ladder, in the axes of the
 /// file; without it the first of (001), (100), (010), (110), (111) on which zero is missing, else (001).
@@ -35,7 +36,11 @@ fn write_description(
         writeln!(
             out,
             "  space group        {} {}, Hall {} ({} at {} Å)",
-            symmetry.number, symmetry.symbol, symmetry.hall, settings.engine, short(symmetry.tolerance)
+            symmetry.number,
+            symmetry.symbol,
+            symmetry.hall,
+            settings.engine,
+            short(symmetry.tolerance)
         )?;
     }
     if let Some(primitive) = &work.primitive {
@@ -63,7 +68,13 @@ fn write_description(
         }
     }
     for diagnostic in work.diagnostics.iter().filter(|diagnostic| diagnostic.severity >= Severity::Note) {
-        writeln!(out, "  {:<18} {}: {}", diagnostic.severity.to_string(), diagnostic.code, diagnostic.message)?;
+        writeln!(
+            out,
+            "  {:<18} {}: {}",
+            diagnostic.severity.to_string(),
+            diagnostic.code,
+            diagnostic.message
+        )?;
     }
     Ok(())
 }
@@ -91,8 +102,11 @@ fn write_centres(out: &mut String, material: &Material) -> std::fmt::Result {
         let title = if first { "inversion centres" } else { "" };
         first = false;
         let position = centre_position(primitive, centre.position).map(short);
-        let mut labels: Vec<&str> =
-            centre.atoms.iter().map(|&atom| crystal.sites[primitive.representatives[atom]].label.as_str()).collect();
+        let mut labels: Vec<&str> = centre
+            .atoms
+            .iter()
+            .map(|&atom| crystal.sites[primitive.representatives[atom]].label.as_str())
+            .collect();
         labels.sort_unstable();
         let ions = if labels.is_empty() { "no ion".to_owned() } else { labels.join(" ") };
         let origin = if index == centres.chosen { "   origin of the centrosymmetric setting" } else { "" };
@@ -107,7 +121,11 @@ fn write_answer(
     formal: &FormalPolarization,
     plane: Option<[i64; 3]>,
 ) -> std::fmt::Result {
-    writeln!(out, "  offset             {}   in e a_i / V along a1 a2 a3, modulo 1", offset_text(formal.electron()))?;
+    writeln!(
+        out,
+        "  offset             {}   in e a_i / V along a1 a2 a3, modulo 1",
+        offset_text(formal.electron())
+    )?;
     for coset in &formal.cosets {
         let zero = if coset.contains_zero { "contains zero" } else { "does not contain zero" };
         let unit = match coset.modulus {
@@ -144,7 +162,11 @@ fn write_answer(
     } else {
         "every value is permitted".to_owned()
     };
-    writeln!(out, "  residual           {:.2e} e·Å, limit {:.2e} e·Å, {next}", formal.residual, formal.residual_limit)?;
+    writeln!(
+        out,
+        "  residual           {:.2e} e·Å, limit {:.2e} e·Å, {next}",
+        formal.residual, formal.residual_limit
+    )?;
     writeln!(out, "  permitted offsets  {}", permitted_text(formal))?;
     if let Some(primitive) = primitive {
         write_ladder(out, primitive, formal, plane)?;

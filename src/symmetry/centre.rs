@@ -63,7 +63,8 @@ impl Centres {
             if target == atom {
                 // −x + w = x + shift and t ≡ w: 2x = t − shift (up to noise), so the class is the parity of shift.
                 let parity = mapping.shifts[atom].map(|n| n.rem_euclid(2));
-                if let Some(class) = classes.iter_mut().find(|class| class.halves == <[i64; 3]>::from(parity)) {
+                if let Some(class) = classes.iter_mut().find(|class| class.halves == <[i64; 3]>::from(parity))
+                {
                     class.atoms.push(atom);
                 }
             }

@@ -76,11 +76,17 @@ impl<'a> SiteIndex<'a> {
     }
 
     /// Where an operation takes every site, or the first site it takes nowhere.
-    #[allow(clippy::cast_possible_truncation, reason = "coordinates of one cell and its neighbours are small")]
+    #[allow(
+        clippy::cast_possible_truncation,
+        reason = "coordinates of one cell and its neighbours are small"
+    )]
     pub(crate) fn map(&self, operation: &Operation) -> Result<Mapping, usize> {
         let count = self.positions.len();
-        let mut mapping =
-            Mapping { targets: Vec::with_capacity(count), shifts: Vec::with_capacity(count), largest_miss: 0.0 };
+        let mut mapping = Mapping {
+            targets: Vec::with_capacity(count),
+            shifts: Vec::with_capacity(count),
+            largest_miss: 0.0,
+        };
         let mut taken = vec![false; count];
         for (site, position) in self.positions.iter().enumerate() {
             let image = operation.apply(position);

@@ -113,7 +113,8 @@ impl Primitive {
         let inverse = integer_inverse(&numerators, denominator)
             .ok_or_else(|| inconsistent("the translations found do not form a lattice"))?;
         let change = numerators.cast::<f64>() / float(denominator);
-        let lattice = crystal.lattice.transformed(&change).map_err(|error| crate::crystal::lattice_refusal(&error))?;
+        let lattice =
+            crystal.lattice.transformed(&change).map_err(|error| crate::crystal::lattice_refusal(&error))?;
 
         let all: Vec<Vector3<f64>> = crystal.sites.iter().map(|site| site.position).collect();
         let limit = match_limit(symmetry.tolerance);
@@ -129,7 +130,10 @@ impl Primitive {
             for translation in &translations {
                 let image = all[site] + translation.translation;
                 let (target, _) = index.nearest(&image, kinds[site]).ok_or_else(|| {
-                    inconsistent(&format!("a translation found takes site {} to no site", crystal.sites[site].label))
+                    inconsistent(&format!(
+                        "a translation found takes site {} to no site",
+                        crystal.sites[site].label
+                    ))
                 })?;
                 seen[target] = true;
                 sum += (all[target] - image).map(|x| x - x.round());
@@ -200,7 +204,10 @@ impl Primitive {
     pub fn map(&self, operation: &Operation) -> Result<Mapping, Diagnostic> {
         let limit = match_limit(self.tolerance);
         SiteIndex::new(&self.lattice, &self.positions, &self.kinds, limit).map(operation).map_err(|atom| {
-            inconsistent(&format!("an operation found takes atom {} of the primitive cell to no atom", atom + 1))
+            inconsistent(&format!(
+                "an operation found takes atom {} of the primitive cell to no atom",
+                atom + 1
+            ))
         })
     }
 }
@@ -215,7 +222,10 @@ fn inconsistent(why: &str) -> Diagnostic {
     Diagnostic::error(Code::SymmetryNotFound, why.to_owned())
 }
 
-#[allow(clippy::cast_precision_loss, reason = "called with numbers of sites and translations, far below 2^52")]
+#[allow(
+    clippy::cast_precision_loss,
+    reason = "called with numbers of sites and translations, far below 2^52"
+)]
 fn float(value: i64) -> f64 {
     value as f64
 }
@@ -236,7 +246,9 @@ fn whole_translations(
             let whole = scaled.map(f64::round);
             let miss = crystal.lattice.to_cartesian(&((scaled - whole) / float(count))).norm();
             if miss > match_limit(tolerance) {
-                return Err(inconsistent(&format!("a translation found is {miss:.3} Å away from a fraction of the cell")));
+                return Err(inconsistent(&format!(
+                    "a translation found is {miss:.3} Å away from a fraction of the cell"
+                )));
             }
             Ok([0, 1, 2].map(|axis| (whole[axis] as i64).rem_euclid(count)))
         })
@@ -290,7 +302,8 @@ fn primitive_vectors(
 /// `(N / d)⁻¹`, if it is an integer matrix.
 fn integer_inverse(numerators: &Matrix3<i64>, denominator: i64) -> Option<Matrix3<i64>> {
     let n = numerators.map(i128::from);
-    let minor = |r0: usize, r1: usize, c0: usize, c1: usize| n[(r0, c0)] * n[(r1, c1)] - n[(r0, c1)] * n[(r1, c0)];
+    let minor =
+        |r0: usize, r1: usize, c0: usize, c1: usize| n[(r0, c0)] * n[(r1, c1)] - n[(r0, c1)] * n[(r1, c0)];
     let next = |i: usize| ((i + 1) % 3, (i + 2) % 3);
     let determinant: i128 = (0..3).map(|c| n[(0, c)] * minor(1, 2, next(c).0, next(c).1)).sum();
     if determinant == 0 {
