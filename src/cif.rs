@@ -14,6 +14,7 @@ mod lex;
 mod number;
 mod operation;
 mod parse;
+mod read;
 
 
 pub use document::{Block, Document, Item, Loop, Pair, Table, Tag, Value, ValueKind};
@@ -21,4 +22,4 @@ pub use lex::{Dialect, Lexer, Token, TokenKind};
 pub use number::{Measured, parse_number};
 pub use operation::{OperationError, parse_operation};
 pub use parse::parse;
-// READ
+pub use read::{BlockReading, Reading, StatedSymmetry, SymmetrySource, read_bytes, read_document};

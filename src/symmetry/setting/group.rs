@@ -4,7 +4,9 @@ use super::affine::{Affine, UNIT};
 use crate::cell::Lattice;
 use crate::crystal::Operation;
 use nalgebra::{Matrix3, Vector3};
+use num_integer::Integer;
 use std::collections::HashSet;
+use std::fmt;
 
 /// An operation modulo whole cell translations: integer matrix, translation in units of 1/[`UNIT`], each in
 /// `0..UNIT`.
@@ -110,6 +112,36 @@ impl Motion {
     #[must_use]
     pub fn is_translation(&self) -> bool {
         self.rotation == Self::IDENTITY.rotation
+    }
+}
+
+impl fmt::Display for Motion {
+    /// As a CIF writes it, such as `-x+1/2,y,-z`.
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        for (i, row) in self.rotation.iter().enumerate() {
+            if i > 0 {
+                f.write_str(",")?;
+            }
+            let mut is_first = true;
+            for (entry, name) in row.iter().zip(["x", "y", "z"]).filter(|(entry, _)| **entry != 0) {
+                let sign = match (*entry < 0, is_first) {
+                    (true, _) => "-",
+                    (false, true) => "",
+                    (false, false) => "+",
+                };
+                f.write_str(sign)?;
+                if entry.unsigned_abs() != 1 {
+                    write!(f, "{}", entry.unsigned_abs())?;
+                }
+                f.write_str(name)?;
+                is_first = false;
+            }
+            if self.translation[i] != 0 {
+                let divisor = self.translation[i].gcd(&UNIT);
+                write!(f, "+{}/{}", self.translation[i] / divisor, UNIT / divisor)?;
+            }
+        }
+        Ok(())
     }
 }
 
@@ -300,6 +332,11 @@ mod tests {
         let mut odd = one.to_operation();
         odd.translation.x = 0.123_456_789;
         assert_eq!(Motion::from_operation(&odd), None);
+    }
+
+    #[test]
+    fn motions_are_written_as_files_write_them() {
+        assert_eq!(motion("-X+1/2, x-y, 0.25-z").to_string(), "-x+1/2,x-y,-z+1/4");
     }
 
     #[test]

@@ -25,7 +25,10 @@ pub fn from_hm(symbol: &str, hint: &Hint<'_>) -> Candidates {
         return Candidates { settings: vec![setting], fits: true };
     }
     let stated = Hint { code: code.as_deref().or(hint.code), ..*hint };
-    let exact = table::by_symbol(&key);
+    let mut exact = table::by_symbol(&key);
+    if exact.is_empty() {
+        exact = table::by_symbol(&without_axes(&key));
+    }
     let of_type = table::by_type(&key);
     let all: Vec<&Entry> = exact.iter().chain(&of_type).copied().collect();
     let best_of = |entries: &[&'static Entry]| {
@@ -81,6 +84,25 @@ fn choose(entries: &[&'static Entry], hint: &Hint<'_>, standard_first: bool) -> 
         }
     }
     Candidates { settings, fits }
+}
+
+/// A full symbol of three parts cut down to its planes, `P 4/m 21/b 2/m` to `P 4/m b m`: the list of settings has a few of
+/// them in another form. A symbol with fewer than two slashes is returned as it is.
+fn without_axes(key: &str) -> String {
+    if key.matches('/').count() < 2 {
+        return key.to_owned();
+    }
+    let mut short = String::with_capacity(key.len());
+    let mut rest = key;
+    while let Some(c) = rest.chars().next() {
+        let is_axis = !short.ends_with(|c: char| c.is_ascii_digit());
+        let after = rest.strip_prefix("21/").or_else(|| rest.strip_prefix("2/")).filter(|_| is_axis);
+        rest = after.unwrap_or_else(|| {
+            short.push(c);
+            &rest[c.len_utf8()..]
+        });
+    }
+    short
 }
 
 /// `A 1`, `I -1` and the like, which are not in the list of settings.
@@ -195,6 +217,9 @@ mod tests {
             (&["I 4(1)cd", "I 41 c d", "I4_1cd"], &[387]),
             (&["P n m a", "P 21/n 21/m 21/a"], &[292]),
             (&["P 1"], &[1]),
+            (&["P 4/m b m", "P 4/m 21/b 2/m"], &[406]),
+            (&["I b c a", "I 21/b 21/c 21/a"], &[341]),
+            (&["P 4/n 21/m 2/m (origin choice 2)"], &[409]),
             (&["P n 3 m S"], &[521]),
             (&["C 1 2/c 1 :b1"], &[90]),
         ] {
