@@ -1,29 +1,24 @@
-//! Placeholder until the reader lands.
+//! What structure does a CIF hold, and can it be trusted?
+//!
+//! Reading goes in two steps. [`parse`] turns bytes into a [`Document`] of blocks, tags and values, each with its place
+//! in the file, and tells what is wrong with the syntax (CIF 1.1: International Tables for Crystallography, volume G,
+//! chapter 2.2; Hall, Allen & Brown, Acta Cryst. A47 (1991) 655). [`read_document`] gives the tags their meaning and
+//! turns each block into an [`AsymmetricUnit`](crate::crystal::AsymmetricUnit), or says why it cannot.
+//!
+//! The reader is lenient about spelling and strict about meaning: it knows the tags of all dictionaries, every usual way
+//! to write numbers, symmetry operations and symbols, and it refuses a structure whenever a value it needs is missing,
+//! unreadable or open to two readings.
 
-use crate::crystal::AsymmetricUnit;
-use crate::diagnostic::Diagnostic;
+mod document;
+mod lex;
+mod number;
+mod operation;
+mod parse;
+mod read;
 
-/// The structures of a file.
-pub struct Reading {
-    /// One for each data block.
-    pub blocks: Vec<BlockReading>,
-    /// What was noticed.
-    pub diagnostics: Vec<Diagnostic>,
-}
-
-/// One block.
-pub struct BlockReading {
-    /// Its name.
-    pub name: String,
-    /// Whether it is about a structure.
-    pub is_structure: bool,
-    /// The structure.
-    pub unit: Result<AsymmetricUnit, Diagnostic>,
-    /// What was noticed.
-    pub diagnostics: Vec<Diagnostic>,
-}
-
-/// Reads nothing yet.
-pub fn read_bytes(_: &[u8]) -> Reading {
-    Reading { blocks: vec![], diagnostics: vec![] }
-}
+pub use document::{Block, Document, Item, Loop, Pair, Table, Tag, Value, ValueKind};
+pub use lex::{Dialect, Lexer, Token, TokenKind};
+pub use number::{Measured, parse_number};
+pub use operation::{OperationError, parse_operation};
+pub use parse::parse;
+pub use read::{BlockReading, Reading, StatedSymmetry, SymmetrySource, read_bytes, read_document};

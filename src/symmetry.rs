@@ -4,6 +4,7 @@ mod centre;
 pub mod engine;
 mod mapping;
 mod primitive;
+pub mod setting;
 
 pub use centre::{Centre, Centres};
 pub use engine::{Engine, Symmetry, find_symmetry};

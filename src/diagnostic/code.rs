@@ -43,10 +43,31 @@ codes! {
     FileNoInput = "file-003", "a folder holds no CIF file", "name the file itself, or a folder with files ending in .cif";
     FileUnknownBlock = "file-004", "the file has no data block of the name asked for", "use one of the names the message lists";
     FileTooLarge = "file-005", "the file is larger than the limit", "split the file";
+    // The syntax of a CIF.
+    CifEncoding = "cif-001", "the file is not in ASCII or UTF-8", "convert it: iconv -f UTF-16 -t UTF-8";
+    CifNotUtf8 = "cif-002", "the file holds bytes that are not UTF-8", "convert it: iconv -f ISO-8859-1 -t UTF-8";
+    CifControlByte = "cif-003", "the file holds control bytes", "remove them";
+    CifQuoteOpen = "cif-004", "a quote is not closed on its line", "close it with the same quote followed by a blank";
+    CifTextOpen = "cif-005", "a text field is not closed", "end it with a line that begins with a semicolon";
+    CifTagRepeated = "cif-006", "a tag is given twice in one block", "remove one of the two";
+    CifBlockRepeated = "cif-007", "two data blocks have the same name", "rename one of them";
+    CifBlockUnnamed = "cif-008", "a data block has no name", "write a name directly after data_";
+    CifLoopRagged = "cif-009", "the values of a loop do not fill whole rows", "put values with blanks in quotes, and ? for a missing value";
+    CifLoopNoTags = "cif-010", "a loop has no tags", "write the tags after loop_";
+    CifLoopEmpty = "cif-011", "a loop has no values", "remove it";
+    CifNoValue = "cif-012", "a tag has no value", "write ? for an unknown value";
+    CifNoTag = "cif-013", "a value has no tag", "put values with blanks in quotes";
+    CifNoHeader = "cif-014", "something stands before the first data block", "begin the file with data_ and a name";
+    CifReserved = "cif-015", "a reserved word is used that is not part of CIF", "remove it";
+    CifFrame = "cif-016", "a save frame is not opened or closed properly", "end each save frame with save_";
+    CifNumber = "cif-017", "a number cannot be read", "write it as 4.1163 or 4.1163(2)";
+    CifNoStructure = "cif-018", "a data block holds no crystal structure", "name another block";
+    CifMacromolecule = "cif-019", "a data block describes a macromolecule", "this program answers for crystals of ions";
     // The unit cell.
     CellMissing = "cell-001", "a cell length or angle is missing", "add the six _cell_ items";
     CellNotFinite = "cell-002", "a cell length or angle is not a finite number", "correct the value";
     CellDegenerate = "cell-003", "the cell has no volume, or lengths or angles out of range", "correct the cell parameters";
+    CellVolume = "cell-004", "the stated volume is not that of the cell parameters", "correct the value that was mistyped";
     // Sites.
     SitesMissing = "site-001", "there are no atom sites", "add an _atom_site_ loop with fractional coordinates";
     SitePositionInvalid = "site-002", "a coordinate is missing or is not a finite number", "correct the coordinate";
@@ -58,6 +79,13 @@ codes! {
     SiteTooMany = "site-008", "there are more sites than the limit", "use a smaller cell";
     SiteMultiplicity = "site-009", "the stated multiplicity differs from the number of images found", "check the coordinates against the special position";
     SiteListedTwice = "site-010", "a site is listed again as an image of another", "remove the repetition from the file";
+    SiteHydrogenAttached = "site-011", "hydrogen atoms are attached to sites but not listed", "add the hydrogen atoms with coordinates";
+    SiteFormula = "site-012", "the sites do not make up the stated formula", "add the missing sites, or correct the formula";
+    SiteHydrogenMissing = "site-013", "the formula holds hydrogen but no site does", "add the hydrogen atoms with coordinates";
+    SiteDropped = "site-014", "a site is a dummy or is never occupied, and was dropped", "remove it from the file";
+    SiteDisorder = "site-015", "a site of a disorder group is fully occupied", "state its occupancy";
+    SiteOxidation = "site-016", "the oxidation numbers of the file contradict each other, or cannot be read", "keep the one that is right";
+    SiteCartesian = "site-017", "positions were read from Cartesian coordinates", "add _atom_site_fract_x, _y and _z";
     // Symmetry.
     SymmetryMissing = "symmetry-001", "the file states no symmetry", "add the operations, or a space-group symbol";
     SymmetryUnknown = "symmetry-002", "a space-group symbol or number is not known", "give the operations as _space_group_symop_operation_xyz";
@@ -66,6 +94,12 @@ codes! {
     SymmetryTolerance = "symmetry-005", "the symmetry search used another tolerance than asked for", "set --symmetry-tolerance to the one used";
     SymmetryNotFound = "symmetry-006", "the operations found do not map the sites onto themselves", "lower --symmetry-tolerance";
     SymmetryMoved = "symmetry-007", "symmetrising moved an atom further than the tolerance", "lower --symmetry-tolerance";
+    SymmetryOperation = "symmetry-008", "a symmetry operation cannot be read", "write it as -x,y+1/2,-z+1/2";
+    SymmetryNotGroup = "symmetry-009", "the listed symmetry operations are not a group", "list every operation once, centring included";
+    SymmetrySetting = "symmetry-010", "a space-group symbol or number stands for several settings", "give the operations as _space_group_symop_operation_xyz";
+    SymmetryModulated = "symmetry-011", "the structure is modulated", "use the average structure or an approximant";
+    SymmetryMagnetic = "symmetry-012", "the symmetry is stated for the magnetic structure alone", "give the operations of the crystal structure";
+    SymmetryMetric = "symmetry-013", "the symmetry does not fit the cell parameters", "correct the cell or the symmetry";
     // Charges.
     ChargeSyntax = "charge-001", "a charge given on the command line cannot be read", "write --charges 'Ta=5,K=1,O=-2'";
     ChargeUnknownSite = "charge-002", "a charge was given for an element or label that the structure does not have", "use one of the labels the message lists";
