@@ -17,7 +17,7 @@ mod orbit;
 mod stated;
 mod states;
 
-pub use assignment::{Assignment, Known, Source, assign, charges_text, infer, known};
+pub use assignment::{Assignment, Known, Source, assign, charged_formula, charges_text, infer, known};
 pub use given::Given;
 pub use inferred::MIN_LIKELIHOOD_RATIO;
 pub use states::{State, share, states};

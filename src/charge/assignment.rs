@@ -283,13 +283,26 @@ fn ambiguous(
     }
 }
 
+/// The formula in its usual order, which goes by the mean charge of each element.
+#[must_use]
+pub fn charged_formula(sites: &[Site], charges: &[i64]) -> Formula {
+    formula(sites).by_charge(|element| {
+        let of_element = charges_of(sites, charges, element).map(|(_, charge)| charge);
+        let (sum, count) =
+            of_element.fold((0_i64, 0_u32), |(sum, count), charge| (sum.saturating_add(charge), count + 1));
+        #[expect(clippy::cast_precision_loss, reason = "sums of charges of one cell are far below 2^52")]
+        let sum = sum as f64;
+        sum / f64::from(count.max(1))
+    })
+}
+
 /// Charges in the form that [`Given`] reads: by element where all its sites agree, else by label.
 ///
 /// Where sites of one label differ the charges cannot be typed; they are then joined by `|`, as in `Co=2|3`.
 #[must_use]
 pub fn charges_text(sites: &[Site], charges: &[i64]) -> String {
     let mut parts: Vec<String> = Vec::new();
-    for (element, _) in formula(sites).counts() {
+    for (element, _) in charged_formula(sites, charges).counts() {
         let pairs = || charges_of(sites, charges, *element);
         if pairs().map(|(_, charge)| charge).all_equal() {
             parts.extend(pairs().next().map(|(_, charge)| format!("{element}={charge}")));
@@ -505,9 +518,9 @@ mod tests {
     fn ambiguity_lists_both_and_ties_say_why() {
         let refusal = run(&[("Cu1", 1), ("Fe1", 1), ("O1", 2)], None).expect_err("close");
         assert_eq!(refusal.code, Code::ChargeAmbiguous);
-        assert!(refusal.message.contains("Fe=3,Cu=1,O=-2 is only 1."), "{}", refusal.message);
+        assert!(refusal.message.contains("Cu=1,Fe=3,O=-2 is only 1."), "{}", refusal.message);
         assert!(refusal.message.contains("Fe=2,Cu=2,O=-2, and the limit is 2 times"), "{}", refusal.message);
-        assert_eq!(refusal.hint.as_deref(), Some("--charges 'Fe=3,Cu=1,O=-2'"));
+        assert_eq!(refusal.hint.as_deref(), Some("--charges 'Cu=1,Fe=3,O=-2'"));
         let refusal = run(&[("Sb1", 4), ("Sb2", 4), ("O1", 16)], None).expect_err("tie");
         assert!(
             refusal.message.contains("cannot tell which site carries which charge"),

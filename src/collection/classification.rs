@@ -83,11 +83,14 @@ impl Classification {
         }
     }
 
-    /// The formula, once the atoms are known.
+    /// The formula, once the atoms are known; in the usual order once the charges are.
     #[must_use]
     pub fn formula(&self) -> Option<Formula> {
-        let crystal = self.crystal.as_ref()?;
-        crystal.is_ordered().then(|| Formula::from_elements(crystal.sites.iter().map(|site| site.element)))
+        let crystal = self.crystal.as_ref().filter(|crystal| crystal.is_ordered())?;
+        Some(match &self.assignment {
+            Some(assignment) => charge::charged_formula(&crystal.sites, &assignment.charges),
+            None => Formula::from_elements(crystal.sites.iter().map(|site| site.element)),
+        })
     }
 
     /// Charges of the atoms of the primitive cell in e, once they are known.

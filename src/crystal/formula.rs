@@ -17,7 +17,8 @@ const SEQUENCE: [u8; 118] = [
     4, 12, 20, 38, 56, 88, 3, 11, 19, 37, 55, 87, 2, 10, 18, 36, 54, 86, 118,
 ];
 
-/// Counts of elements, divided by their common divisor and ordered from electropositive to electronegative.
+/// Counts of elements, divided by their common divisor and ordered from electropositive to electronegative, or, once
+/// charges are known, by them.
 ///
 /// ```
 /// use cosetta::crystal::{Element, Formula};
@@ -42,6 +43,31 @@ impl Formula {
         let mut counts: Vec<_> = tally.into_iter().map(|(element, count)| (element, count / units)).collect();
         counts.sort_by_key(|(element, _)| std::cmp::Reverse(rank(*element)));
         Self { counts, units }
+    }
+
+    /// The same formula in the order in which oxides and halides are usually written: cations by formal charge, the
+    /// heavier element first among equals, then the anions (common practice, no source). `charge` gives the mean
+    /// charge of an element.
+    ///
+    /// ```
+    /// use cosetta::crystal::{Element, Formula};
+    /// let atoms = ["O", "Pb", "O", "Ti", "O"].map(|s| Element::from_symbol(s).expect("known"));
+    /// let charge = |element: Element| match element.symbol() { "Pb" => 2.0, "Ti" => 4.0, _ => -2.0 };
+    /// assert_eq!(Formula::from_elements(atoms).by_charge(charge).to_string(), "PbTiO3");
+    /// ```
+    #[must_use]
+    pub fn by_charge(mut self, charge: impl Fn(Element) -> f64) -> Self {
+        self.counts.sort_by(|(one, _), (other, _)| {
+            let (a, b) = (charge(*one), charge(*other));
+            let is_anion = (a < 0.0).cmp(&(b < 0.0));
+            let among = if a < 0.0 {
+                rank(*other).cmp(&rank(*one))
+            } else {
+                a.total_cmp(&b).then(other.number().cmp(&one.number()))
+            };
+            is_anion.then(among)
+        });
+        self
     }
 
     /// Elements with their counts per formula unit.

@@ -1,9 +1,9 @@
 //! The values of a polarization lattice along one direction, on one line.
 //!
 //! ```text
-//! −2 ···●···┼···●···0···●···┼···●··· +2
+//! −2 |···●···|···●···0···●···|···●···| +2
 //! ```
-//! Each step is a tenth of a quantum; `●` is a value the crystal allows, `0` is zero, `◉` is zero when it is allowed.
+//! Each step is an eighth of a quantum; `●` is a value the crystal allows, `0` is zero, `◉` is zero when it is allowed.
 
 /// Steps per quantum.
 const STEPS: i32 = 8;

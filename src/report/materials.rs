@@ -1,6 +1,6 @@
 //! The table of classified materials, short for the terminal and full for CSV.
 
-use super::record::{ChargeRecord, LevelRecord, MaterialRecord, OffsetComponent};
+use super::record::{LevelRecord, MaterialRecord, OffsetComponent};
 use super::table::{Column, Table};
 
 const SHORT: &[Column] = &[
@@ -61,7 +61,7 @@ pub fn short_row(record: &MaterialRecord) -> Vec<String> {
     };
     let last = match (&record.refusal, &record.charges) {
         (Some(refusal), _) => shorten(&refusal.message, 60),
-        (None, Some(charges)) => format!("{} ({})", charges_text(&charges.sites), charges.source),
+        (None, Some(charges)) => format!("{} ({})", charges.text, charges.source),
         (None, None) => String::new(),
     };
     vec![
@@ -101,7 +101,7 @@ pub fn full_row(record: &MaterialRecord) -> Vec<String> {
         of_level(&|level| level.pair.contains_zero.to_string()),
         of_level(&|level| level.ion.spacing.to_string()),
         of_level(&|level| level.ion.contains_zero.to_string()),
-        text(record.charges.as_ref().map(|charges| charges_text(&charges.sites))),
+        text(record.charges.as_ref().map(|charges| charges.text.clone())),
         text(record.charges.as_ref().map(|charges| charges.source.clone())),
         of_level(&|level| format!("{:.6}", level.residual)),
         of_level(&|level| text(level.residual_fraction.map(|fraction| format!("{fraction:.6}")))),
@@ -110,21 +110,6 @@ pub fn full_row(record: &MaterialRecord) -> Vec<String> {
         text(record.refusal.as_ref().map(|refusal| refusal.code.to_string())),
         text(record.refusal.as_ref().map(|refusal| refusal.message.clone())),
     ]
-}
-
-/// Charges in the form of `--charges`: by element where all its sites agree, else by label.
-fn charges_text(sites: &[ChargeRecord]) -> String {
-    let mut parts: Vec<String> = Vec::new();
-    for site in sites {
-        let is_uniform =
-            sites.iter().all(|other| other.element != site.element || other.charge == site.charge);
-        let name = if is_uniform { &site.element } else { &site.label };
-        let part = format!("{name}={}", site.charge);
-        if !parts.contains(&part) {
-            parts.push(part);
-        }
-    }
-    parts.join(",")
 }
 
 fn component_text(component: &OffsetComponent, digits: usize) -> String {

@@ -1,6 +1,7 @@
 //! One object per material for machines. The field names are a contract: they are documented by the generated schema
 //! `man/classify.schema.json` and only ever added to. A field that does not apply is absent.
 
+use crate::charge::charges_text;
 use crate::collection::{Material, Settings};
 use crate::diagnostic::{Code, Diagnostic};
 use crate::exact::Ratio;
@@ -126,6 +127,8 @@ pub struct CentreRecord {
 pub struct ChargesRecord {
     /// Where they come from: `given`, `file` or `inferred`.
     pub source: String,
+    /// All of them in the form of `--charges`, by element where its sites agree, else by label.
+    pub text: String,
     /// One entry for each orbit of sites.
     pub sites: Vec<ChargeRecord>,
 }
@@ -227,7 +230,7 @@ pub struct TolerancesRecord {
     pub min_distance: f64,
 }
 
-/// e/Å² in C/m² and e/nm².
+/// One e/Å² in e/nm².
 const E_PER_NM2: f64 = 100.0;
 
 impl MaterialRecord {
@@ -358,7 +361,8 @@ impl ChargesRecord {
             }
         }
         let sites = sites.into_iter().map(|(_, record)| record).collect();
-        Some(Self { source: assignment.source.to_string(), sites })
+        let text = charges_text(&crystal.sites, &assignment.charges);
+        Some(Self { source: assignment.source.to_string(), text, sites })
     }
 }
 

@@ -4,7 +4,6 @@ use super::ladder::ladder;
 use super::record::{EnumerationRecord, centre_position, primitive_vectors};
 use crate::charge::charges_text;
 use crate::collection::{Material, Settings};
-use crate::diagnostic::Severity;
 use crate::polarization::{C_PER_M2, Component, Coset, FormalPolarization, Label, Modulus};
 use crate::symmetry::{Centring, Primitive};
 use std::fmt::Write;
@@ -55,6 +54,15 @@ fn write_description(
             assignment.source.describe()
         )?;
     }
+    for diagnostic in &work.diagnostics {
+        writeln!(
+            out,
+            "  {:<18} {}: {}",
+            diagnostic.severity.to_string(),
+            diagnostic.code,
+            diagnostic.message
+        )?;
+    }
     match &work.outcome {
         Ok(formal) => write_answer(out, work.primitive.as_ref(), formal, plane)?,
         Err(refusal) => {
@@ -66,15 +74,6 @@ fn write_description(
                 writeln!(out, "  hint               {hint}")?;
             }
         }
-    }
-    for diagnostic in work.diagnostics.iter().filter(|diagnostic| diagnostic.severity >= Severity::Note) {
-        writeln!(
-            out,
-            "  {:<18} {}: {}",
-            diagnostic.severity.to_string(),
-            diagnostic.code,
-            diagnostic.message
-        )?;
     }
     Ok(())
 }
@@ -130,8 +129,10 @@ fn write_answer(
         let zero = if coset.contains_zero { "contains zero" } else { "does not contain zero" };
         let unit = match coset.modulus {
             Modulus::Electron => "one electron at a time".to_owned(),
-            Modulus::Pair => format!("electrons in pairs, modulo {} e", coset.value),
-            Modulus::Ion => format!("whole ions only, modulo {} e", coset.value),
+            Modulus::Pair if coset.value == 1 => "an odd charge: as single electrons".to_owned(),
+            Modulus::Pair => "electrons in pairs, modulo 2 e".to_owned(),
+            Modulus::Ion if coset.value == 1 => "whole ions: as single electrons".to_owned(),
+            Modulus::Ion => format!("whole ions, modulo {} e", coset.value),
         };
         writeln!(
             out,
@@ -140,23 +141,7 @@ fn write_answer(
             offset_text(coset)
         )?;
     }
-    let quanta = formal.quanta();
-    let offset = formal.electron().offset.map(Component::value);
-    for axis in 0..3 {
-        let title = if axis == 0 { "polarization" } else { "" };
-        let (quantum, value) = (quanta[axis], quanta[axis] * offset[axis]);
-        writeln!(
-            out,
-            "  {title:<18} a{}: {:.4} C/m² = {:.2} µC/cm² = {:.4} e/nm², modulo the quantum {:.4} C/m² = {:.2} µC/cm² = {:.4} e/nm²",
-            axis + 1,
-            value * C_PER_M2,
-            value * C_PER_M2 * 100.0,
-            value * 100.0,
-            quantum * C_PER_M2,
-            quantum * C_PER_M2 * 100.0,
-            quantum * 100.0
-        )?;
-    }
+    write_units(out, formal)?;
     let next = if formal.runner_up.is_finite() {
         format!("next permitted value {:.3} e·Å away", formal.runner_up)
     } else {
@@ -174,6 +159,28 @@ fn write_answer(
     writeln!(out, "  label              {}", formal.label)?;
     writeln!(out, "  {}", sentence(formal))?;
     writeln!(out, "  {INSULATOR}")
+}
+
+/// The offset and the quantum in other units, one row for each primitive vector.
+fn write_units(out: &mut String, formal: &FormalPolarization) -> std::fmt::Result {
+    writeln!(
+        out,
+        "  {:<18} {:>13} {:>9} {:>9} {:>13} {:>9} {:>9}",
+        "polarization", "C/m²", "µC/cm²", "e/nm²", "modulo C/m²", "µC/cm²", "e/nm²"
+    )?;
+    let offset = formal.electron().offset.map(Component::value);
+    for (axis, quantum) in formal.quanta().into_iter().enumerate() {
+        let units = |value: f64| (value * C_PER_M2, value * C_PER_M2 * 100.0, value * 100.0);
+        let (value, value_uc, value_e) = units(quantum * offset[axis]);
+        let (whole, whole_uc, whole_e) = units(quantum);
+        writeln!(
+            out,
+            "  {:<18} a{} {value:>10.4} {value_uc:>9.2} {value_e:>9.4} {whole:>13.4} {whole_uc:>9.2} {whole_e:>9.4}",
+            "",
+            axis + 1
+        )?;
+    }
+    Ok(())
 }
 
 fn write_ladder(
@@ -201,7 +208,8 @@ fn write_ladder(
     let indices = miller.map(|index| index.to_string()).join(" ");
     writeln!(
         out,
-        "  across ({indices})      {}   steps of e/A = {:.4} C/m²",
+        "  {:<18} {}   in quanta e/A = {:.4} C/m²",
+        format!("across ({indices})"),
         ladder(component.value()),
         quantum * C_PER_M2
     )

@@ -1,5 +1,6 @@
 //! All integration tests, linked once.
 
+mod demo;
 mod enumeration;
 mod generated;
 mod layers;
