@@ -16,7 +16,6 @@ mod operation;
 mod parse;
 mod read;
 
-
 pub use document::{Block, Document, Item, Loop, Pair, Table, Tag, Value, ValueKind};
 pub use lex::{Dialect, Lexer, Token, TokenKind};
 pub use number::{Measured, parse_number};

@@ -354,8 +354,9 @@ mod tests {
     #[test]
     fn many_tags_take_linear_time() {
         // With a quadratic lookup this would take minutes.
-        let text: String =
-            std::iter::once("data_x\n".to_owned()).chain((0..200_000).map(|n| format!("_t{n} {n}\n"))).collect();
+        let text: String = std::iter::once("data_x\n".to_owned())
+            .chain((0..200_000).map(|n| format!("_t{n} {n}\n")))
+            .collect();
         let (document, found) = parse(text.as_bytes());
         assert!(found.is_empty());
         assert_eq!(document.blocks[0].value("_T199999").map(|v| v.text.as_ref()), Some("199999"));

@@ -73,8 +73,7 @@ impl<'s> Lexer<'s> {
     #[must_use]
     pub fn new(bytes: &'s [u8]) -> Self {
         let start = if bytes.starts_with(BYTE_ORDER_MARK) { BYTE_ORDER_MARK.len() } else { 0 };
-        let dialect =
-            if bytes[start..].starts_with(b"#\\#CIF_2.0") { Dialect::Two } else { Dialect::One };
+        let dialect = if bytes[start..].starts_with(b"#\\#CIF_2.0") { Dialect::Two } else { Dialect::One };
         Self { bytes, at: start, line: 1, line_start: start, dialect, diagnostics: Vec::new() }
     }
 
@@ -155,7 +154,7 @@ impl<'s> Lexer<'s> {
             }
             self.at += 1;
             let is_closing = byte == quote
-                && (self.dialect == Dialect::Two || self.peek().is_none_or(|next| is_blank_or_line_end(next)));
+                && (self.dialect == Dialect::Two || self.peek().is_none_or(is_blank_or_line_end));
             if is_closing {
                 let span = self.span_from(start, line, line_start);
                 return Token { kind: TokenKind::Quoted, span, start: start + 1, end: self.at - 1 };
@@ -388,7 +387,10 @@ mod tests {
     #[test]
     fn bytes_are_inspected_once() {
         let found = inspect(b"ab\n\xE9\xE9\x00\x00");
-        assert_eq!(found.iter().map(|d| d.code).collect::<Vec<_>>(), [Code::CifNotUtf8, Code::CifControlByte]);
+        assert_eq!(
+            found.iter().map(|d| d.code).collect::<Vec<_>>(),
+            [Code::CifNotUtf8, Code::CifControlByte]
+        );
         assert_eq!(found[0].span.map(|s| (s.line, s.column)), Some((2, 1)));
         assert_eq!(inspect(b"\xFF\xFEd\0")[0].code, Code::CifEncoding);
         assert!(inspect("# Å\n\t".as_bytes()).is_empty());
@@ -416,9 +418,7 @@ mod tests {
         for token in Lexer::new(bytes) {
             prop_assert!(token.span.start >= end && token.span.end > token.span.start);
             prop_assert!(token.span.end <= bytes.len());
-            prop_assert_eq!(
-                span_of_byte(bytes, token.span.start).line, token.span.line
-            );
+            prop_assert_eq!(span_of_byte(bytes, token.span.start).line, token.span.line);
             end = token.span.end;
         }
         Ok(())

@@ -70,8 +70,10 @@ fn measured(input: &str) -> IResult<&str, Option<Measured>> {
 /// Digits with an optional point; at least one digit. (`digit0` of nom 8.0.0 must not stand in `recognize`: at the end of
 /// the input it returns a rest that begins before the digits.)
 fn mantissa(input: &str) -> IResult<&str, &str> {
-    verify(recognize((opt(digit1), opt((char('.'), opt(digit1))))), |text: &str| text.bytes().any(|b| b.is_ascii_digit()))
-        .parse(input)
+    verify(recognize((opt(digit1), opt((char('.'), opt(digit1))))), |text: &str| {
+        text.bytes().any(|b| b.is_ascii_digit())
+    })
+    .parse(input)
 }
 
 fn uncertainty(input: &str) -> IResult<&str, &str> {
@@ -128,8 +130,8 @@ mod tests {
     #[test]
     fn other_texts_are_not_numbers() {
         for text in [
-            "", ".", "-", "x", "1,5", "1.2.3", "1(2", "1(x)", "1()", "nan", "inf", "1e999", "1/0", "1/", "e5", "0x10",
-            "1 2", "(2)",
+            "", ".", "-", "x", "1,5", "1.2.3", "1(2", "1(x)", "1()", "nan", "inf", "1e999", "1/0", "1/",
+            "e5", "0x10", "1 2", "(2)",
         ] {
             assert_eq!(parse_number(text), None, "{text}");
         }

@@ -95,7 +95,8 @@ fn read_block(document: &Document<'_>, block: &Block<'_>) -> BlockReading {
         name: block.name.clone().into_owned(),
         span: block.span,
         is_structure: has_cell(block) || has_sites(block),
-        unit: Err(Diagnostic::error(Code::CifNoStructure, "the block holds no cell and no atom sites").at(block.span)),
+        unit: Err(Diagnostic::error(Code::CifNoStructure, "the block holds no cell and no atom sites")
+            .at(block.span)),
         stated: StatedSymmetry::default(),
         formula_sum: value_of(block, FORMULA_SUM).and_then(Value::stated).map(str::to_owned),
         formula_units: optional_number(block, FORMULA_UNITS, &mut diagnostics).filter(|units| *units > 0.0),
@@ -121,19 +122,24 @@ fn read_unit(
     reading.cell_uncertainty = uncertainty;
     let formula = reading.formula_sum.as_deref().and_then(Composition::parse);
     let found = read_sites(block, &lattice, formula.as_ref(), noticed)?;
-    let evidence = Evidence { lattice: &lattice, found: &found, formula: formula.as_ref(), units: reading.formula_units };
+    let evidence = Evidence {
+        lattice: &lattice,
+        found: &found,
+        formula: formula.as_ref(),
+        units: reading.formula_units,
+    };
     let (stated, operations) =
         read_symmetry(block, document.source, &lattice, |operations| evidence.misfit(operations), noticed);
     reading.stated = stated;
     let operations = operations?;
-    let evidence = Evidence { units: reading.formula_units, ..evidence };
     evidence.check(block, &operations, noticed)?;
-    Ok(AsymmetricUnit { lattice, sites: found.sites, operations })
+    Ok(AsymmetricUnit { lattice, sites: found.list, operations })
 }
 
 /// Refuses structures that are not crystals of atoms in three dimensions, by name.
 fn refuse_other_kinds(block: &Block<'_>) -> Result<(), Diagnostic> {
-    let stated = |tags: Spellings| tags.iter().filter_map(|tag| block.value(tag)).find(|v| v.stated().is_some());
+    let stated =
+        |tags: Spellings| tags.iter().filter_map(|tag| block.value(tag)).find(|v| v.stated().is_some());
     let dimension = stated(MODULATION_DIMENSION).filter(|value| value.stated() != Some("0"));
     if let Some(value) = dimension.or_else(|| stated(SUPERSPACE)) {
         let message = "the structure is modulated: its symmetry is that of a superspace group";
@@ -141,7 +147,8 @@ fn refuse_other_kinds(block: &Block<'_>) -> Result<(), Diagnostic> {
     }
     let is_ordinary = [OPERATIONS, HALL, HERMANN_MAUGUIN, NUMBER].iter().any(|tags| stated(tags).is_some());
     if let Some(value) = stated(MAGNETIC).filter(|_| !is_ordinary) {
-        let message = "only the symmetry of the magnetic structure is stated, not that of the crystal structure";
+        let message =
+            "only the symmetry of the magnetic structure is stated, not that of the crystal structure";
         return Err(Diagnostic::error(Code::SymmetryMagnetic, message)
             .at(value.span)
             .hint("_space_group_symop_operation_xyz with one operation per line"));
@@ -168,7 +175,7 @@ impl Evidence<'_> {
     fn misfit(&self, operations: &[Operation]) -> u32 {
         let unit = AsymmetricUnit {
             lattice: self.lattice.clone(),
-            sites: self.found.sites.clone(),
+            sites: self.found.list.clone(),
             operations: operations.to_vec(),
         };
         let has_clash = unit.expand(&ExpandTolerance::default()).is_err();
@@ -176,23 +183,31 @@ impl Evidence<'_> {
         let made = self.composition(&multiplicities);
         let units = self.formula.map(|formula| made.units_of(formula));
         let misses_formula = units.is_some_and(|units| units.is_none());
-        let misses_units = match (units.flatten(), self.units) {
-            (Some(found), Some(stated)) => (found - stated).abs() > UNITS_TOLERANCE * stated,
-            _ => false,
-        };
+        let misses_units = units.flatten().is_some_and(|found| !self.is_stated_number_of_units(found));
         let wrong = self.wrong_multiplicities(&multiplicities, operations.len()).count();
         let wrong = u32::try_from(wrong).unwrap_or(u32::MAX).min(9_999);
-        u32::from(has_clash) * 1_000_000 + u32::from(misses_formula) * 100_000 + u32::from(misses_units) * 10_000 + wrong
+        u32::from(has_clash) * 1_000_000
+            + u32::from(misses_formula) * 100_000
+            + u32::from(misses_units) * 10_000
+            + wrong
     }
 
     /// How many images each site has in the cell: operations divided by those that leave the site in place.
     fn multiplicities(&self, operations: &[Operation]) -> Vec<f64> {
-        self.found.sites.iter().map(|site| multiplicity(self.lattice, operations, site)).collect()
+        self.found.list.iter().map(|site| multiplicity(self.lattice, operations, site)).collect()
+    }
+
+    /// Whether a number of formula units is the stated one, if one is stated. Some programs state the number of units but
+    /// write the content of the whole cell as the formula; that counts as agreement too.
+    fn is_stated_number_of_units(&self, found: f64) -> bool {
+        let (Some(stated), Some(formula)) = (self.units, self.formula) else { return true };
+        let is_of_cell = (found - 1.0).abs() <= UNITS_TOLERANCE && formula.is_divisible_by(stated);
+        is_of_cell || (found - stated).abs() <= UNITS_TOLERANCE * stated
     }
 
     fn composition(&self, multiplicities: &[f64]) -> Composition {
         let mut made = Composition::default();
-        for (site, multiplicity) in self.found.sites.iter().zip(multiplicities) {
+        for (site, multiplicity) in self.found.list.iter().zip(multiplicities) {
             made.add(site.element, site.occupancy * multiplicity);
         }
         made
@@ -212,7 +227,9 @@ impl Evidence<'_> {
         let are_orders =
             pairs().all(|(_, (stated, found))| stated.is_none_or(|stated| is_same(stated * found, order)));
         pairs()
-            .filter(move |(_, (stated, found))| !are_orders && stated.is_some_and(|stated| !is_same(stated, **found)))
+            .filter(move |(_, (stated, found))| {
+                !are_orders && stated.is_some_and(|stated| !is_same(stated, **found))
+            })
             .map(|(index, _)| index)
     }
 
@@ -231,7 +248,7 @@ impl Evidence<'_> {
             };
             let message = format!(
                 "site {} has {} images in the cell, but its stated multiplicity is {}{more}",
-                self.found.sites[first].label,
+                self.found.list[first].label,
                 multiplicities[first],
                 self.found.multiplicities[first].unwrap_or_default()
             );
@@ -267,15 +284,11 @@ impl Evidence<'_> {
         }
         match (units, self.units) {
             (None, _) => {
-                let message = format!("the sites make up {made} in the cell, no multiple of the formula {formula}");
+                let message =
+                    format!("the sites make up {made} in the cell, no multiple of the formula {formula}");
                 noticed.push(Diagnostic::warning(Code::SiteFormula, message).at(span));
             }
-            (Some(found), Some(stated)) if (found - stated).abs() > UNITS_TOLERANCE * stated => {
-                // Some programs write the content of the whole cell as the formula.
-                let is_of_cell = (found - 1.0).abs() <= UNITS_TOLERANCE && formula.is_divisible_by(stated);
-                if is_of_cell {
-                    return Ok(units);
-                }
+            (Some(found), Some(stated)) if !self.is_stated_number_of_units(found) => {
                 let message = format!(
                     "the sites make up {:.3} formula units {formula} in the cell, but {} is {stated}",
                     found, FORMULA_UNITS[0]
@@ -296,7 +309,8 @@ fn multiplicity(lattice: &Lattice, operations: &[Operation], site: &Site) -> f64
         .iter()
         .filter(|operation| {
             let offset = (operation.apply(&site.position) - site.position).map(|x| x - x.round());
-            (0..3).all(|i| offset[i].abs() <= limits[i]) && lattice.to_cartesian(&offset).norm() <= SAME_POSITION
+            (0..3).all(|i| offset[i].abs() <= limits[i])
+                && lattice.to_cartesian(&offset).norm() <= SAME_POSITION
         })
         .count();
     operations.len().max(1) as f64 / fixing.max(1) as f64

@@ -1,1 +1,3 @@
+//! Tests through the public interface, in one binary.
 
+mod cif;

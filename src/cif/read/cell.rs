@@ -65,8 +65,7 @@ pub(super) fn read_cell(
     }
     let [a, b, c, alpha, beta, gamma] = numbers.map(|number| number.value);
     let parameters = CellParameters { lengths: [a, b, c], angles: [alpha, beta, gamma] };
-    let lattice =
-        Lattice::from_parameters(&parameters).map_err(|error| refusal(block, &error))?;
+    let lattice = Lattice::from_parameters(&parameters).map_err(|error| refusal(block, &error))?;
     check_volume(block, &lattice, noticed);
     Ok((lattice, numbers.map(|number| number.uncertainty)))
 }

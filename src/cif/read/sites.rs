@@ -21,7 +21,7 @@ const MAX_UNCERTAINTY: f64 = 0.5;
 /// The sites, and what was said about each.
 #[derive(Debug, Default)]
 pub(super) struct Sites {
-    pub(super) sites: Vec<Site>,
+    pub(super) list: Vec<Site>,
     /// For each site, its stated multiplicity.
     pub(super) multiplicities: Vec<Option<f64>>,
     /// For each site, where it is in the file.
@@ -42,9 +42,10 @@ pub(super) fn read_sites(
     formula: Option<&Composition>,
     noticed: &mut Vec<Diagnostic>,
 ) -> Result<Sites, Diagnostic> {
-    let table = block.table(&SITE).filter(|table| table.rows() > 0).ok_or_else(|| {
-        Diagnostic::error(Code::SitesMissing, "the block has no atom sites").at(block.span)
-    })?;
+    let table = block
+        .table(&SITE)
+        .filter(|table| table.rows() > 0)
+        .ok_or_else(|| Diagnostic::error(Code::SitesMissing, "the block has no atom sites").at(block.span))?;
     if let Some(fault) = table.fault() {
         return Err(fault.clone());
     }
@@ -72,17 +73,18 @@ pub(super) fn read_sites(
             found.attached = row.attached_hydrogens(&label, formula.as_ref());
         }
         let position = position.read(&row, &label)?;
-        found.sites.push(Site { label, element: species, position, occupancy, oxidation });
-        found.multiplicities.push(
-            row.stated(site::MULTIPLICITY).and_then(parse_number).map(|number| number.value),
-        );
+        found.list.push(Site { label, element: species, position, occupancy, oxidation });
+        found
+            .multiplicities
+            .push(row.stated(site::MULTIPLICITY).and_then(parse_number).map(|number| number.value));
         found.spans.push(span);
     }
     noticed.extend(dropped.report(Code::SiteDropped, "a dummy, or of zero occupancy, and dropped"));
     noticed.extend(
-        disordered.report(Code::SiteDisorder, "in a disorder group but fully occupied; the occupancy was kept"),
+        disordered
+            .report(Code::SiteDisorder, "in a disorder group but fully occupied; the occupancy was kept"),
     );
-    if found.sites.is_empty() {
+    if found.list.is_empty() {
         let message = "every atom site is a dummy or has zero occupancy";
         return Err(Diagnostic::error(Code::SitesMissing, message).at(table.span().unwrap_or(block.span)));
     }
@@ -136,7 +138,10 @@ impl<'d, 's> Row<'_, 'd, 's> {
     }
 
     fn span(&self) -> Option<Span> {
-        (0..SITE.len()).filter_map(|column| self.value(column)).map(|value| value.span).min_by_key(|s| s.start)
+        (0..SITE.len())
+            .filter_map(|column| self.value(column))
+            .map(|value| value.span)
+            .min_by_key(|s| s.start)
     }
 
     fn occupancy(&self, label: &str) -> Result<f64, Diagnostic> {
@@ -180,11 +185,15 @@ impl<'d, 's> Row<'_, 'd, 's> {
             let species = parse_species(symbol)
                 .or_else(|| implied_hydrogen(symbol).map(|element| Species { element, charge: None }))
                 .ok_or_else(|| {
-                    refuse(format!("type symbol '{}' of site {label} does not begin with an element", shown(symbol)))
+                    refuse(format!(
+                        "type symbol '{}' of site {label} does not begin with an element",
+                        shown(symbol)
+                    ))
                 })?;
             return Ok((species.element, types.oxidation(symbol, &species)));
         }
-        let element = match implied_hydrogen(label).map_or_else(|| guess_element(label, formula), Guess::One) {
+        let element = match implied_hydrogen(label).map_or_else(|| guess_element(label, formula), Guess::One)
+        {
             Guess::One(element) => element,
             Guess::Two(first, second) => {
                 return Err(refuse(format!("label '{}' may stand for {first} or {second}", shown(label))));
@@ -202,10 +211,10 @@ impl<'d, 's> Row<'_, 'd, 's> {
         let may_hold_hydrogen = formula.is_none_or(|formula| formula.contains(&Element::HYDROGEN));
         let name = self.stated(site::TYPE).unwrap_or(label);
         let (message, column) = if count > 0.0 {
-            let message =
-                format!("site {label} has {count} attached hydrogen atoms without coordinates");
+            let message = format!("site {label} has {count} attached hydrogen atoms without coordinates");
             (message, site::ATTACHED_HYDROGENS)
-        } else if may_hold_hydrogen && (implied_hydrogen(name).is_some() || implied_hydrogen(label).is_some()) {
+        } else if may_hold_hydrogen && (implied_hydrogen(name).is_some() || implied_hydrogen(label).is_some())
+        {
             let message =
                 format!("site {label} stands for a group with hydrogen atoms, which have no coordinates");
             (message, site::LABEL)
@@ -248,7 +257,7 @@ impl Position {
                 .map(|tags| value_of(block, tags)?.stated().and_then(parse_number).map(|number| number.value))
                 .collect()
         };
-        let vector = numbers(&CARTESIAN_VECTOR).map_or_else(Vector3::zeros, |v| Vector3::from_iterator(v));
+        let vector = numbers(&CARTESIAN_VECTOR).map_or_else(Vector3::zeros, Vector3::from_iterator);
         if let Some(matrix) = numbers(&CARTESIAN_MATRIX) {
             let inverse = Matrix3::from_row_iterator(matrix).try_inverse().ok_or_else(|| {
                 let message = "the matrix _atom_sites_Cartn_tran_matrix has no inverse";
@@ -328,19 +337,25 @@ impl AtomTypes {
             return types;
         };
         for row in 0..table.rows() {
-            let (Some(symbol), Some(value)) = (table.value(row, 0).and_then(Value::stated), table.value(row, 1))
+            let (Some(symbol), Some(value)) =
+                (table.value(row, 0).and_then(Value::stated), table.value(row, 1))
             else {
                 continue;
             };
             let Some(text) = value.stated() else { continue };
             let Some(number) = parse_number(text).map(|n| n.value).or_else(|| parse_charge(text)) else {
-                let message =
-                    format!("the oxidation number of {} is '{}', which is not a number", shown(symbol), shown(text));
+                let message = format!(
+                    "the oxidation number of {} is '{}', which is not a number",
+                    shown(symbol),
+                    shown(text)
+                );
                 noticed.push(Diagnostic::warning(Code::SiteOxidation, message).at(value.span));
                 continue;
             };
             let species = parse_species(symbol);
-            if let Some(charge) = species.and_then(|s| s.charge).filter(|charge| (charge - number).abs() > 1e-6) {
+            if let Some(charge) =
+                species.and_then(|s| s.charge).filter(|charge| (charge - number).abs() > 1e-6)
+            {
                 let message = format!(
                     "the oxidation number of {} is {number}, but its symbol says {charge}; {number} was used",
                     shown(symbol)

@@ -84,11 +84,8 @@ pub(super) fn guess_element(label: &str, formula: Option<&BTreeSet<Element>>) ->
 /// Whether a label or symbol stands for an oxygen or nitrogen with hydrogen that may not be listed: `Wat`, `OH`, `O-H`,
 /// `H2O`, `OW`, `NH4`.
 pub(super) fn implied_hydrogen(name: &str) -> Option<Element> {
-    let letters: String = name
-        .chars()
-        .filter(char::is_ascii_alphanumeric)
-        .collect::<String>()
-        .to_ascii_lowercase();
+    let letters: String =
+        name.chars().filter(char::is_ascii_alphanumeric).collect::<String>().to_ascii_lowercase();
     let stem = letters.trim_end_matches(|c: char| c.is_ascii_digit());
     if letters.starts_with("nh3") || letters.starts_with("nh4") {
         return Element::from_symbol("N");
@@ -103,7 +100,9 @@ fn is_hydrogen_isotope(text: &str) -> bool {
 
 /// Names of points that are not atoms.
 fn is_dummy(letters: &str) -> bool {
-    ["dum", "du", "dummy", "vac", "void", "cent", "cen", "wat"].iter().any(|name| letters.eq_ignore_ascii_case(name))
+    ["dum", "du", "dummy", "vac", "void", "cent", "cen", "wat"]
+        .iter()
+        .any(|name| letters.eq_ignore_ascii_case(name))
 }
 
 fn leading_letters(text: &str) -> &str {

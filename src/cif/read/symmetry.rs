@@ -160,7 +160,8 @@ fn read_operations(
     for row in 0..table.rows() {
         let Some(value) = table.value(row, 0) else { continue };
         let motion = parse_operation(&value.text).map_err(|error| {
-            let message = format!("symmetry operation {}, '{}', cannot be read: {error}", row + 1, shown(&value.text));
+            let message =
+                format!("symmetry operation {}, '{}', cannot be read: {error}", row + 1, shown(&value.text));
             Diagnostic::error(Code::SymmetryOperation, message).at(value.span).hint("'-x, y+1/2, -z+1/2'")
         })?;
         if seen.insert(motion) {
@@ -170,7 +171,8 @@ fn read_operations(
         }
     }
     if repeated > 0 {
-        let message = format!("{repeated} of the {} symmetry operations are listed more than once", table.rows());
+        let message =
+            format!("{repeated} of the {} symmetry operations are listed more than once", table.rows());
         noticed.push(Diagnostic::warning(Code::SymmetryNotGroup, message).at(span));
     }
     let group = Group::generate(listed.iter().copied(), MAX_ORDER.max(listed.len()));
@@ -178,9 +180,9 @@ fn read_operations(
         let operations = listed.iter().map(Motion::to_operation).collect();
         return Ok(Some((operations, group.clone(), table.rows())));
     }
-    let lacks_identity_alone = group.as_ref().is_some_and(|group| {
-        group.order() == listed.len() + 1 && !listed.contains(&Motion::IDENTITY)
-    });
+    let lacks_identity_alone = group
+        .as_ref()
+        .is_some_and(|group| group.order() == listed.len() + 1 && !listed.contains(&Motion::IDENTITY));
     let completed = group.filter(|group| lacks_identity_alone || named.has(group));
     let Some(group) = completed else { return Err(not_a_group(&listed).at(span)) };
     let message = format!(
@@ -272,8 +274,9 @@ impl Named {
         }
         if let Some(symbol) = stated.hm.as_ref().filter(|_| !is_used(SymmetrySource::HermannMauguin)) {
             let settings = &self.hm.settings;
-            let agrees =
-                |setting: &Setting| setting.group().equals(group) || setting.group().equals_up_to_origin(group);
+            let agrees = |setting: &Setting| {
+                setting.group().equals(group) || setting.group().equals_up_to_origin(group)
+            };
             if let Some(first) = settings.first().filter(|_| !settings.iter().any(agrees)) {
                 let difference = difference(first.group(), group, what);
                 report(format!("Hermann-Mauguin symbol '{}' {difference}", shown(symbol)), self.places.hm);
@@ -302,7 +305,8 @@ impl Named {
         let (setting, source) = if let Some(setting) = &self.hall {
             (setting, SymmetrySource::Hall)
         } else if !self.hm.settings.is_empty() {
-            let name = format!("Hermann-Mauguin symbol '{}'", shown(stated.hm.as_deref().unwrap_or_default()));
+            let name =
+                format!("Hermann-Mauguin symbol '{}'", shown(stated.hm.as_deref().unwrap_or_default()));
             (pick(&self.hm, &name, self.places.hm, prefer, noticed), SymmetrySource::HermannMauguin)
         } else if !self.number.settings.is_empty() {
             let name = format!("space-group number {}", stated.number.unwrap_or_default());
@@ -317,10 +321,7 @@ impl Named {
         Ok((setting.operations.clone(), setting.group().clone()))
     }
 
-    fn without_setting(
-        &self,
-        noticed: &mut Vec<Diagnostic>,
-    ) -> Result<(Vec<Operation>, Group), Diagnostic> {
+    fn without_setting(&self, noticed: &mut Vec<Diagnostic>) -> Result<(Vec<Operation>, Group), Diagnostic> {
         let place = self.places.hall.or(self.places.hm).or(self.places.number);
         if let Some(span) = place {
             return Err(Diagnostic::error(
@@ -337,9 +338,8 @@ impl Named {
             )
             .hint("_space_group_symop_operation_xyz 'x, y, z'"),
         );
-        let group = Group::generate([], 1).ok_or_else(|| {
-            Diagnostic::error(Code::SymmetryMissing, "no symmetry is stated")
-        })?;
+        let group = Group::generate([], 1)
+            .ok_or_else(|| Diagnostic::error(Code::SymmetryMissing, "no symmetry is stated"))?;
         Ok((group.operations(), group))
     }
 }
@@ -371,12 +371,17 @@ where
         .map(|(_, setting)| format!("'{}'", setting.hall))
         .collect();
     let others = match others.as_slice() {
-        [front @ .., last] if !front.is_empty() && others.len() <= 3 => format!("{} or {last}", front.join(", ")),
+        [front @ .., last] if !front.is_empty() && others.len() <= 3 => {
+            format!("{} or {last}", front.join(", "))
+        }
         [first, second, ..] => format!("{first}, {second} or one of {} more", others.len() - 2),
         _ => others.join(""),
     };
     let severity_and_reason = if is_decided {
-        (crate::diagnostic::Severity::Note, "because it alone makes the sites agree with the formula and distances")
+        (
+            crate::diagnostic::Severity::Note,
+            "because it alone makes the sites agree with the formula and distances",
+        )
     } else {
         (crate::diagnostic::Severity::Warning, "because it comes first; the sites do not decide")
     };

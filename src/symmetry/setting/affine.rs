@@ -211,7 +211,8 @@ mod tests {
     #[test]
     fn faults_are_told_apart() {
         assert_eq!(parse_affine("x,y"), Err(AffineError::Count { found: 2 }));
-        for text in ["x,=y,z", "x,,z", "x,y,z-", "x,2 + q,z", "x,y,-z*1/2*2", "a,b,c", "x,y81/2,z", "x,yz,z"] {
+        for text in ["x,=y,z", "x,,z", "x,y,z-", "x,2 + q,z", "x,y,-z*1/2*2", "a,b,c", "x,y81/2,z", "x,yz,z"]
+        {
             assert!(matches!(parse_affine(text), Err(AffineError::Expression { .. })), "{text}");
         }
         assert!(matches!(parse_affine("x+0.3456,y,z"), Err(AffineError::Fraction { .. })));

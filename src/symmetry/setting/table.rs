@@ -80,8 +80,12 @@ struct Table {
 }
 
 static TABLE: LazyLock<Table> = LazyLock::new(|| {
-    let mut table =
-        Table { entries: Vec::new(), by_hall: HashMap::new(), by_symbol: HashMap::new(), by_type: HashMap::new() };
+    let mut table = Table {
+        entries: Vec::new(),
+        by_hall: HashMap::new(),
+        by_symbol: HashMap::new(),
+        by_type: HashMap::new(),
+    };
     for hall_number in 1..=COUNT {
         let Some(found) = hall_symbol_entry(i32::from(hall_number)) else { continue };
         let Ok(number) = u16::try_from(found.number) else { continue };
@@ -191,7 +195,8 @@ mod tests {
                     rotation: operation.rotation,
                     translation: operation.translation,
                 };
-                crate::symmetry::setting::Motion::from_operation(&operation).is_some_and(|m| group.contains(&m))
+                crate::symmetry::setting::Motion::from_operation(&operation)
+                    .is_some_and(|m| group.contains(&m))
             }));
         }
         assert_eq!(TABLE.entries.len(), 530);
