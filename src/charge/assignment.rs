@@ -519,7 +519,7 @@ mod tests {
         let refusal = run(&[("Cu1", 1), ("Fe1", 1), ("O1", 2)], None).expect_err("close");
         assert_eq!(refusal.code, Code::ChargeAmbiguous);
         assert!(refusal.message.contains("Cu=1,Fe=3,O=-2 is only 1."), "{}", refusal.message);
-        assert!(refusal.message.contains("Fe=2,Cu=2,O=-2, and the limit is 2 times"), "{}", refusal.message);
+        assert!(refusal.message.contains("Cu=2,Fe=2,O=-2, and the limit is 2 times"), "{}", refusal.message);
         assert_eq!(refusal.hint.as_deref(), Some("--charges 'Cu=1,Fe=3,O=-2'"));
         let refusal = run(&[("Sb1", 4), ("Sb2", 4), ("O1", 16)], None).expect_err("tie");
         assert!(

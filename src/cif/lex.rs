@@ -154,8 +154,7 @@ impl<'s> Lexer<'s> {
             }
             self.at += 1;
             let is_closing = byte == quote
-                && (self.dialect == Dialect::Two
-                    || self.peek().is_none_or(|next| is_blank_or_line_end(next)));
+                && (self.dialect == Dialect::Two || self.peek().is_none_or(is_blank_or_line_end));
             if is_closing {
                 let span = self.span_from(start, line, line_start);
                 return Token { kind: TokenKind::Quoted, span, start: start + 1, end: self.at - 1 };

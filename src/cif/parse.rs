@@ -173,16 +173,13 @@ impl<'s> Parser<'s> {
 
     fn read_pair(&mut self, token: &Token) {
         let tag = self.tag_of(token);
-        match self.next_if(is_value) {
-            Some(value) => {
-                let value = self.value_of(&value);
-                self.push(Item::Pair(Pair { tag, value, surplus: None }), token.span);
-            }
-            None => {
-                let message = format!("tag {} has no value", shown(&tag.name));
-                let hint = format!("{} ?", shown(&tag.name));
-                self.diagnostics.push(Diagnostic::error(Code::CifNoValue, message).at(token.span).hint(hint));
-            }
+        if let Some(value) = self.next_if(is_value) {
+            let value = self.value_of(&value);
+            self.push(Item::Pair(Pair { tag, value, surplus: None }), token.span);
+        } else {
+            let message = format!("tag {} has no value", shown(&tag.name));
+            let hint = format!("{} ?", shown(&tag.name));
+            self.diagnostics.push(Diagnostic::error(Code::CifNoValue, message).at(token.span).hint(hint));
         }
     }
 

@@ -132,9 +132,8 @@ fn read_unit(
         read_symmetry(block, document.source, &lattice, |operations| evidence.misfit(operations), noticed);
     reading.stated = stated;
     let operations = operations?;
-    let evidence = Evidence { units: reading.formula_units, ..evidence };
     evidence.check(block, &operations, noticed)?;
-    Ok(AsymmetricUnit { lattice, sites: found.sites, operations })
+    Ok(AsymmetricUnit { lattice, sites: found.list, operations })
 }
 
 /// Refuses structures that are not crystals of atoms in three dimensions, by name.
@@ -176,7 +175,7 @@ impl Evidence<'_> {
     fn misfit(&self, operations: &[Operation]) -> u32 {
         let unit = AsymmetricUnit {
             lattice: self.lattice.clone(),
-            sites: self.found.sites.clone(),
+            sites: self.found.list.clone(),
             operations: operations.to_vec(),
         };
         let has_clash = unit.expand(&ExpandTolerance::default()).is_err();
@@ -184,10 +183,7 @@ impl Evidence<'_> {
         let made = self.composition(&multiplicities);
         let units = self.formula.map(|formula| made.units_of(formula));
         let misses_formula = units.is_some_and(|units| units.is_none());
-        let misses_units = match (units.flatten(), self.units) {
-            (Some(found), Some(stated)) => (found - stated).abs() > UNITS_TOLERANCE * stated,
-            _ => false,
-        };
+        let misses_units = units.flatten().is_some_and(|found| !self.is_stated_number_of_units(found));
         let wrong = self.wrong_multiplicities(&multiplicities, operations.len()).count();
         let wrong = u32::try_from(wrong).unwrap_or(u32::MAX).min(9_999);
         u32::from(has_clash) * 1_000_000
@@ -198,12 +194,20 @@ impl Evidence<'_> {
 
     /// How many images each site has in the cell: operations divided by those that leave the site in place.
     fn multiplicities(&self, operations: &[Operation]) -> Vec<f64> {
-        self.found.sites.iter().map(|site| multiplicity(self.lattice, operations, site)).collect()
+        self.found.list.iter().map(|site| multiplicity(self.lattice, operations, site)).collect()
+    }
+
+    /// Whether a number of formula units is the stated one, if one is stated. Some programs state the number of units but
+    /// write the content of the whole cell as the formula; that counts as agreement too.
+    fn is_stated_number_of_units(&self, found: f64) -> bool {
+        let (Some(stated), Some(formula)) = (self.units, self.formula) else { return true };
+        let is_of_cell = (found - 1.0).abs() <= UNITS_TOLERANCE && formula.is_divisible_by(stated);
+        is_of_cell || (found - stated).abs() <= UNITS_TOLERANCE * stated
     }
 
     fn composition(&self, multiplicities: &[f64]) -> Composition {
         let mut made = Composition::default();
-        for (site, multiplicity) in self.found.sites.iter().zip(multiplicities) {
+        for (site, multiplicity) in self.found.list.iter().zip(multiplicities) {
             made.add(site.element, site.occupancy * multiplicity);
         }
         made
@@ -244,7 +248,7 @@ impl Evidence<'_> {
             };
             let message = format!(
                 "site {} has {} images in the cell, but its stated multiplicity is {}{more}",
-                self.found.sites[first].label,
+                self.found.list[first].label,
                 multiplicities[first],
                 self.found.multiplicities[first].unwrap_or_default()
             );
@@ -284,12 +288,7 @@ impl Evidence<'_> {
                     format!("the sites make up {made} in the cell, no multiple of the formula {formula}");
                 noticed.push(Diagnostic::warning(Code::SiteFormula, message).at(span));
             }
-            (Some(found), Some(stated)) if (found - stated).abs() > UNITS_TOLERANCE * stated => {
-                // Some programs write the content of the whole cell as the formula.
-                let is_of_cell = (found - 1.0).abs() <= UNITS_TOLERANCE && formula.is_divisible_by(stated);
-                if is_of_cell {
-                    return Ok(units);
-                }
+            (Some(found), Some(stated)) if !self.is_stated_number_of_units(found) => {
                 let message = format!(
                     "the sites make up {:.3} formula units {formula} in the cell, but {} is {stated}",
                     found, FORMULA_UNITS[0]

