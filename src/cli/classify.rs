@@ -198,12 +198,11 @@ impl Sink<'_> {
             }
             Format::Json if self.written == 0 => self.output.write("[]\n")?,
             Format::Json => self.output.write("\n]\n")?,
-            Format::Jsonl => {}
             Format::Csv if self.written == 0 => {
                 let text = self.table.to_csv(true).context("cannot write a heading as CSV")?;
                 self.output.write(&text)?;
             }
-            Format::Csv => {}
+            Format::Jsonl | Format::Csv => {}
         }
         self.output.close()
     }

@@ -118,25 +118,26 @@ pub fn classify_bytes(file: &str, bytes: &[u8], settings: &Settings) -> Vec<Mate
         classification.diagnostics = reading.diagnostics;
         return vec![material("", classification)];
     }
-    if let Some(wanted) = &settings.block {
-        if !reading.blocks.iter().any(|block| block.name.eq_ignore_ascii_case(wanted)) {
-            let names: Vec<_> = reading.blocks.iter().map(|block| block.name.as_str()).collect();
-            let refusal = Diagnostic::error(
-                Code::FileUnknownBlock,
-                format!("the file has no data block '{wanted}'; it has: {}", names.join(", ")),
-            )
-            .hint(format!("--block {}", names[0]));
-            return vec![material(wanted, Classification::refused(refusal))];
-        }
+    let is_wanted =
+        |name: &str| settings.block.as_ref().is_none_or(|wanted| name.eq_ignore_ascii_case(wanted));
+    if let Some(wanted) = &settings.block
+        && !reading.blocks.iter().any(|block| is_wanted(&block.name))
+    {
+        let names: Vec<_> = reading.blocks.iter().map(|block| block.name.as_str()).collect();
+        let refusal = Diagnostic::error(
+            Code::FileUnknownBlock,
+            format!("the file has no data block '{wanted}'; it has: {}", names.join(", ")),
+        )
+        .hint(format!("--block {}", names[0]));
+        return vec![material(wanted, Classification::refused(refusal))];
     }
     let any_structure = reading.blocks.iter().any(|block| block.is_structure);
     let mut first_diagnostics = reading.diagnostics;
     reading
         .blocks
         .into_iter()
-        .filter(|block| match &settings.block {
-            Some(wanted) => block.name.eq_ignore_ascii_case(wanted),
-            None => block.is_structure || !any_structure,
+        .filter(|block| {
+            is_wanted(&block.name) && (settings.block.is_some() || block.is_structure || !any_structure)
         })
         .map(|block| {
             let mut classification = match block.unit {

@@ -243,7 +243,7 @@ mod tests {
 
     #[test]
     fn too_long_is_refused() {
-        let refusal = Choices::count(&[4; 100_000], 9).expect_err("too long");
+        let refusal = Choices::count(&vec![4; 100_000], 9).expect_err("too long");
         assert_eq!(refusal.code, Code::PolarizationWindow);
     }
 }

@@ -3,6 +3,7 @@
 
 use crate::charge::charges_text;
 use crate::collection::{Material, Settings};
+use crate::crystal::Operation;
 use crate::diagnostic::{Code, Diagnostic};
 use crate::exact::Ratio;
 use crate::polarization::{Component, Coset, FormalPolarization, Label, Sweep};
@@ -249,7 +250,7 @@ impl MaterialRecord {
             centrosymmetric: work
                 .primitive
                 .as_ref()
-                .map(|primitive| primitive.operations.iter().any(|operation| operation.is_inversion())),
+                .map(|primitive| primitive.operations.iter().any(Operation::is_inversion)),
             primitive: work.primitive.as_ref().map(PrimitiveRecord::new),
             inversion_centres: CentreRecord::all(material),
             charges: ChargesRecord::new(material),

@@ -6,14 +6,14 @@ use std::collections::BTreeMap;
 /// Every way of putting each ion into one of the (2w+1)³ cells around its own, by the change of `p` it makes.
 fn list_all(charges: &[i64], window: i64) -> BTreeMap<[i64; 3], u64> {
     fn go(charges: &[i64], window: i64, change: [i64; 3], found: &mut BTreeMap<[i64; 3], u64>) {
-        let Some((&charge, rest)) = charges.split_first() else {
+        let Some((&first, rest)) = charges.split_first() else {
             *found.entry(change).or_default() += 1;
             return;
         };
         for x in -window..=window {
             for y in -window..=window {
                 for z in -window..=window {
-                    let next = [change[0] + charge * x, change[1] + charge * y, change[2] + charge * z];
+                    let next = [change[0] + first * x, change[1] + first * y, change[2] + first * z];
                     go(rest, window, next, found);
                 }
             }

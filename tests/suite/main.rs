@@ -1,6 +1,9 @@
 //! All integration tests, linked once.
 
+#![allow(clippy::print_stdout, reason = "figures of a run are shown with --nocapture")]
+
 mod cif;
+mod commands;
 mod demo;
 mod enumeration;
 mod generated;

@@ -169,7 +169,7 @@ fn offsets_with_inferred_charges() {
         let work = classify_unit(&entry.unit(), &settings(None));
         match (&work.outcome, entry.check(&work)) {
             (Err(refusal), _) => {
-                refused.push(format!("{}: {}: {}", entry.name, refusal.code, refusal.message))
+                refused.push(format!("{}: {}: {}", entry.name, refusal.code, refusal.message));
             }
             (Ok(_), Ok(())) => right += 1,
             (Ok(_), Err(why)) => wrong.push(format!("{}: {why}", entry.name)),

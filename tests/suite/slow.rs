@@ -16,7 +16,6 @@ pub(crate) fn check(work: &Classification) -> Result<(), String> {
     let primitive = work.primitive.as_ref().ok_or("no primitive cell")?;
     let symmetry = work.symmetry.as_ref().ok_or("no symmetry")?;
     let assignment = work.assignment.as_ref().ok_or("no charges")?;
-    let formal = work.outcome.as_ref().map_err(ToString::to_string)?;
     let tolerance = (4.0 * symmetry.tolerance).max(0.02);
 
     // Translations by trying all atoms of the first atom's kind as its image.
@@ -80,6 +79,13 @@ pub(crate) fn check(work: &Classification) -> Result<(), String> {
             }
         }
     }
+    check_offset(work, &sum)
+}
+
+/// Compares the label and the offset with the sum over one atom of each class.
+fn check_offset(work: &Classification, sum: &Vector3<f64>) -> Result<(), String> {
+    let primitive = work.primitive.as_ref().ok_or("no primitive cell")?;
+    let formal = work.outcome.as_ref().map_err(ToString::to_string)?;
     // Polar: the sum of all rotations is not zero.
     let total: Matrix3<i32> = primitive.operations.iter().map(|operation| operation.rotation).sum();
     let is_polar = total != Matrix3::zeros();
