@@ -1,1 +1,4 @@
+//! Tests through the public interface, linked once.
 
+#[cfg(feature = "spglib")]
+mod engines;
