@@ -89,7 +89,7 @@ fn parse_piece(piece: &str) -> Result<(String, Value), Fault> {
     if piece.is_empty() {
         return Err(Fault::new("there is nothing between the commas"));
     }
-    let Some((key, value)) = piece.rsplit_once('=') else {
+    let Some((key, value)) = piece.split_once('=') else {
         return Err(Fault { reason: "there is no '='".into(), meant: guess(piece) });
     };
     let key = key.trim();

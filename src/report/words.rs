@@ -29,8 +29,10 @@ fn write_description(
     plane: Option<[i64; 3]>,
 ) -> std::fmt::Result {
     let work = &material.classification;
-    let formula = work.formula().map_or_else(|| "unknown formula".to_owned(), |formula| formula.to_string());
-    writeln!(out, "{formula}   {} (block {})", material.file, material.block)?;
+    let formula = work.formula().map_or_else(|| "?".to_owned(), |formula| formula.to_string());
+    let block =
+        if material.block.is_empty() { String::new() } else { format!(" (block {})", material.block) };
+    writeln!(out, "{formula}   {}{block}", material.file)?;
     if let Some(symmetry) = &work.symmetry {
         writeln!(
             out,

@@ -5,6 +5,8 @@
 mod cif;
 mod commands;
 mod demo;
+#[cfg(feature = "spglib")]
+mod engines;
 mod enumeration;
 mod generated;
 mod layers;

@@ -5,14 +5,17 @@
 //!   with `spg_free_dataset`, or null.
 //! - Every call stores its outcome in one static integer that is neither atomic nor thread-local; it is the only
 //!   static the library writes. Calls are therefore serialised here, which also ties the message to its call.
-//! - It prints only when compiled with `SPGDEBUG` or `SPGWARNING`; its CMake file sets both for the build type Debug,
+//! - It prints only when compiled with `SPGDEBUG` or `SPGWARNING`. Its build file sets both for the build type `Debug`,
 //!   which is what a Cargo profile with `opt-level = 0` asks for. No profile of this package does.
 //! - It lowers the tolerance by itself when a search fails, and does not say to what.
 //! - NaN and infinity crash it, and it casts coordinates to `int` when it rounds them.
+//! - Large tolerances are unsafe. Above 1.13 it can use an origin it never set, since it compares a fractional length,
+//!   at most √3/2, with 2 minus the tolerance. Above about half the shortest lattice vector it can dereference null.
 
 #![allow(unsafe_code, reason = "the C library has no other interface; no other file of the crate needs this")]
 
 use super::{Symmetry, standard_symbols};
+use crate::cell::{Lattice, Reduced};
 use crate::crystal::{Crystal, Operation};
 use nalgebra::{Matrix3, Vector3};
 use spglib_sys as ffi;
@@ -24,11 +27,19 @@ use std::sync::{Mutex, PoisonError};
 /// Held during every call, since each one writes the library's error code.
 static LIBRARY: Mutex<()> = Mutex::new(());
 
+/// The largest tolerance given to the library: in Å, and as a fraction of the shortest lattice vector. Twice as much
+/// is unsafe, and atoms that far apart are different atoms.
+const MAX_TOLERANCE: (f64, f64) = (1.0, 0.25);
+
 /// Searches with spglib. The caller has made sure that the cell is not empty and every coordinate is finite.
 pub(super) fn find(crystal: &Crystal, kinds: &[i32], tolerance: f64) -> Result<Symmetry, String> {
     let basis = crystal.lattice.basis();
     if !basis.iter().all(|x| x.is_finite()) || basis.determinant().abs() < f64::MIN_POSITIVE {
         return Err("the lattice vectors are not a lattice".into());
+    }
+    let limit = largest_tolerance(&crystal.lattice)?;
+    if !(tolerance > 0.0 && tolerance <= limit) {
+        return Err(format!("it takes a tolerance of at most {limit:.3} Å in this cell"));
     }
     // The library takes lattice vectors as columns, in the order of a C array: one row after the other.
     let lattice = [0, 1, 2].map(|i| [0, 1, 2].map(|j| basis[(i, j)]));
@@ -46,6 +57,13 @@ pub(super) fn find(crystal: &Crystal, kinds: &[i32], tolerance: f64) -> Result<S
         orbits: first_of_orbit(found.orbits()?)?,
         tolerance,
     })
+}
+
+fn largest_tolerance(lattice: &Lattice) -> Result<f64, String> {
+    let reduced = Reduced::new(lattice).map_err(|error| error.to_string())?;
+    let lengths = reduced.lattice().parameters().lengths;
+    let shortest = lengths.into_iter().fold(f64::INFINITY, f64::min);
+    Ok(MAX_TOLERANCE.0.min(MAX_TOLERANCE.1 * shortest))
 }
 
 /// For each site the first site with the same mark. The library marks an orbit by one of its sites.
@@ -77,7 +95,8 @@ impl Dataset {
         }
         let count = c_int::try_from(sites).map_err(|_| format!("{sites} sites are too many for it"))?;
         let guard = LIBRARY.lock().unwrap_or_else(PoisonError::into_inner);
-        // SAFETY: the arrays hold 3, `count` and `count` entries and outlive the call; all numbers are finite.
+        // SAFETY: the arrays hold 3, `count` and `count` entries and outlive the call. `find` has made sure that all
+        // numbers are finite and the tolerance is one the library can take.
         let raw = unsafe {
             ffi::spg_get_dataset(
                 lattice.as_mut_ptr(),
@@ -157,7 +176,6 @@ fn last_error() -> String {
 #[cfg(test)]
 mod tests {
     use super::*;
-    use crate::cell::Lattice;
     use crate::crystal::{Element, Site};
     use std::thread;
 
@@ -207,6 +225,21 @@ mod tests {
         let twice = crystal(Matrix3::identity() * 4.0, &[[0.0; 3], [0.0; 3]]);
         assert_eq!(find(&twice, &[1, 1], 1e-3).err().as_deref(), Some("too close distance between atoms"));
         assert_eq!(find(&twice, &[1], 1e-3).err().as_deref(), Some("2 sites with 1 kinds"));
+    }
+
+    #[test]
+    fn a_tolerance_the_library_cannot_take() {
+        let limit = |edge: f64, tolerance| {
+            let crystal = crystal(Matrix3::identity() * edge, &[[0.0; 3]]);
+            find(&crystal, &[1], tolerance).map(|found| found.number)
+        };
+        assert_eq!(limit(8.0, 0.9), Ok(221));
+        assert_eq!(limit(8.0, 1.1), Err("it takes a tolerance of at most 1.000 Å in this cell".into()));
+        assert_eq!(limit(2.0, 0.6), Err("it takes a tolerance of at most 0.500 Å in this cell".into()));
+        assert!(limit(2.0, f64::NAN).is_err() && limit(2.0, 0.0).is_err());
+        // All three vectors are long, but a + b is 0.3 Å.
+        let skew = Matrix3::new(8.0, -8.0, 0.0, 0.0, 0.3, 0.0, 0.0, 0.0, 8.0);
+        assert!(find(&crystal(skew, &[[0.0; 3]]), &[1], 0.2).is_err());
     }
 
     #[test]
