@@ -159,7 +159,7 @@ fn write_answer(
         write_ladder(out, primitive, formal, plane)?;
     }
     writeln!(out, "  label              {}", formal.label)?;
-    writeln!(out, "  {}", sentence(formal))?;
+    write_wrapped(out, &sentence(formal))?;
     writeln!(out, "  {INSULATOR}")
 }
 
@@ -215,6 +215,23 @@ fn write_ladder(
         ladder(component.value()),
         quantum * C_PER_M2
     )
+}
+
+/// A sentence in lines of at most 96 characters.
+fn write_wrapped(out: &mut String, sentence: &str) -> std::fmt::Result {
+    const WIDTH: usize = 96;
+    let mut line = String::new();
+    for word in sentence.split(' ') {
+        if !line.is_empty() && line.chars().count() + 1 + word.chars().count() > WIDTH {
+            writeln!(out, "  {line}")?;
+            line.clear();
+        }
+        if !line.is_empty() {
+            line.push(' ');
+        }
+        line.push_str(word);
+    }
+    writeln!(out, "  {line}")
 }
 
 /// The conclusion in one sentence.

@@ -12,5 +12,6 @@ mod generated;
 mod layers;
 mod permitted;
 mod published;
+mod readme;
 mod slow;
 mod wide;
