@@ -40,12 +40,16 @@ pub struct Setting {
     pub hall: String,
     /// Hermann-Mauguin symbol, followed by `:1`, `:2`, `:H` or `:R` where the symbol alone is not enough.
     pub hm: String,
-    /// All operations, centring translations included, the identity first.
-    pub operations: Vec<Operation>,
     group: Arc<Group>,
 }
 
 impl Setting {
+    /// All operations, centring translations included, the identity first.
+    #[must_use]
+    pub fn operations(&self) -> Vec<Operation> {
+        self.group.operations()
+    }
+
     /// The operations as a group.
     #[must_use]
     pub fn group(&self) -> &Group {
@@ -81,6 +85,12 @@ impl Candidates {
     }
 }
 
+/// The standard setting of a number of the International Tables; see [`from_number`].
+#[must_use]
+pub fn standard(number: u16) -> Option<Setting> {
+    table::standard(number).and_then(table::Entry::setting)
+}
+
 /// The setting of a Hall symbol.
 ///
 /// Blanks may be missing, underscores stand for blanks, the two kinds of prime are written `'` and `"`, and a change
@@ -88,7 +98,7 @@ impl Candidates {
 ///
 /// ```
 /// let setting = cosetta::symmetry::setting::from_hall("-R 3 2\"c").unwrap();
-/// assert_eq!((setting.number, setting.operations.len()), (Some(167), 36));
+/// assert_eq!((setting.number, setting.group().order()), (Some(167), 36));
 /// ```
 #[must_use]
 pub fn from_hall(symbol: &str) -> Option<Setting> {
@@ -110,14 +120,7 @@ pub fn from_hall(symbol: &str) -> Option<Setting> {
         }
     };
     let hall = symbol.trim().to_owned();
-    Some(Setting {
-        hall_number: None,
-        number,
-        hm: String::new(),
-        hall,
-        operations: group.operations(),
-        group,
-    })
+    Some(Setting { hall_number: None, number, hm: String::new(), hall, group })
 }
 
 #[cfg(test)]
@@ -148,14 +151,14 @@ mod tests {
             ("R 3 (-y+z,x+z,-x+y+z)", 146, 3),
         ] {
             let setting = from_hall(symbol).unwrap_or_else(|| panic!("{symbol} is a Hall symbol"));
-            assert_eq!((setting.number, setting.operations.len()), (Some(number), order), "{symbol}");
+            assert_eq!((setting.number, setting.group().order()), (Some(number), order), "{symbol}");
         }
     }
 
     #[test]
     fn centred_cells_of_triclinic_groups() {
         let setting = from_hall("-I 1").expect("a Hall symbol");
-        assert_eq!((setting.number, setting.hall_number, setting.operations.len()), (Some(2), None, 4));
+        assert_eq!((setting.number, setting.hall_number, setting.group().order()), (Some(2), None, 4));
     }
 
     #[test]

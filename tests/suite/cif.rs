@@ -188,6 +188,35 @@ fn a_list_with_a_gap_names_what_is_missing() {
     );
 }
 
+#[test]
+fn every_statement_of_symmetry_leads_to_the_same_operations() {
+    let cell = "data_ZnO\n_cell_length_a 3.25\n_cell_length_b 3.25\n_cell_length_c 5.2\n_cell_angle_alpha 90\n_cell_angle_beta 90\n_cell_angle_gamma 120\n";
+    let sites = "\nloop_\n_atom_site_label\n_atom_site_fract_x\n_atom_site_fract_y\n_atom_site_fract_z\nZn1 1/3 2/3 0\nO1 1/3 2/3 .382\n";
+    let listed = read_good("operations.cif").unit.expect("a structure").operations;
+    for statement in [
+        "_space_group_name_Hall 'P 6c -2c'",
+        "_symmetry_space_group_name_Hall P_6c_-2c",
+        "_space_group_name_H-M_alt 'P 63 m c'",
+        "_symmetry_space_group_name_H-M P63mc",
+        "_space_group.name_H-M_alt \"P 6_3 m c\"",
+        // Not quoted: a fault of syntax, but what is meant is plain.
+        "_symmetry_space_group_name_H-M P 63 m c",
+        "_space_group_IT_number 186",
+        "_symmetry_Int_Tables_number 186",
+    ] {
+        let text = format!("{cell}{statement}{sites}");
+        let unit = read_bytes(text.as_bytes()).blocks.swap_remove(0).unit.expect("a structure");
+        assert_eq!(unit.operations.len(), 12, "{statement}");
+        for operation in &listed {
+            let is_same = |other: &cosetta::crystal::Operation| {
+                other.rotation == operation.rotation
+                    && (other.translation - operation.translation).norm() < 1e-12
+            };
+            assert!(unit.operations.iter().any(is_same), "{statement}");
+        }
+    }
+}
+
 proptest! {
     /// Damaged files are read or refused, and never stop the program.
     #[test]

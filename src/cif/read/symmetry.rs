@@ -8,7 +8,9 @@ use super::tags::{COORDINATE_SYSTEM, HALL, HERMANN_MAUGUIN, NUMBER, OPERATIONS, 
 use crate::cell::Lattice;
 use crate::crystal::Operation;
 use crate::diagnostic::{Code, Diagnostic, Span};
-use crate::symmetry::setting::{Candidates, Group, Hint, Motion, Setting, from_hall, from_hm, from_number};
+use crate::symmetry::setting::{
+    Candidates, Group, Hint, Motion, Setting, from_hall, from_hm, from_number, standard,
+};
 
 /// More operations than this are accepted only if the file lists them itself.
 const MAX_ORDER: usize = 192;
@@ -73,9 +75,8 @@ where
         hm: stated.hm.as_deref().map_or_else(Candidates::default, |symbol| {
             from_hm(symbol, &Hint { lattice: Some(lattice), code, number: stated.number })
         }),
-        number: stated.number.map_or_else(Candidates::default, |number| {
-            from_number(number, &Hint { lattice: Some(lattice), code, number: None })
-        }),
+        number: stated.number,
+        hint: Hint { lattice: Some(lattice), code, number: None },
         places,
     };
     named.report_unknown(&stated, noticed);
@@ -140,7 +141,7 @@ type Listed = (Vec<Operation>, Group, usize);
 
 fn read_operations(
     block: &Block<'_>,
-    named: &Named,
+    named: &Named<'_>,
     noticed: &mut Vec<Diagnostic>,
 ) -> Result<Option<Listed>, Diagnostic> {
     let tables = OPERATIONS.iter().filter_map(|tag| block.column(&[tag]));
@@ -220,20 +221,24 @@ fn not_a_group(listed: &[Motion]) -> Diagnostic {
 }
 
 /// The settings that the names in the file may mean.
-struct Named {
+struct Named<'a> {
     hall: Option<Setting>,
     hm: Candidates,
-    number: Candidates,
+    number: Option<u16>,
+    hint: Hint<'a>,
     places: Places,
 }
 
-impl Named {
-    fn settings(&self) -> impl Iterator<Item = &Setting> {
-        self.hall.iter().chain(&self.hm.settings).chain(&self.number.settings)
+impl Named<'_> {
+    /// The settings of the number, which are made only when they are needed.
+    fn of_number(&self) -> Candidates {
+        self.number.map_or_else(Candidates::default, |number| from_number(number, &self.hint))
     }
 
     fn has(&self, group: &Group) -> bool {
-        self.settings().any(|setting| setting.group().equals(group))
+        let of_number = self.of_number();
+        let mut settings = self.hall.iter().chain(&self.hm.settings).chain(&of_number.settings);
+        settings.any(|setting| setting.group().equals(group))
     }
 
     fn report_unknown(&self, stated: &StatedSymmetry, noticed: &mut Vec<Diagnostic>) {
@@ -283,9 +288,8 @@ impl Named {
             }
         }
         if let Some(number) = stated.number.filter(|_| !is_used(SymmetrySource::Number)) {
-            let settings = &self.number.settings;
             // Only the geometric class is compared: the file may use any axes.
-            if let Some(first) = settings.first().filter(|s| s.group().kinds() != group.kinds()) {
+            if let Some(first) = standard(number).filter(|s| s.group().kinds() != group.kinds()) {
                 let difference = difference(first.group(), group, what);
                 report(format!("space-group number {number} {difference}"), self.places.number);
             }
@@ -302,15 +306,20 @@ impl Named {
     where
         F: Fn(&[Operation]) -> u32,
     {
+        let of_number = if self.hall.is_none() && self.hm.settings.is_empty() {
+            self.of_number()
+        } else {
+            Candidates::default()
+        };
         let (setting, source) = if let Some(setting) = &self.hall {
             (setting, SymmetrySource::Hall)
         } else if !self.hm.settings.is_empty() {
             let name =
                 format!("Hermann-Mauguin symbol '{}'", shown(stated.hm.as_deref().unwrap_or_default()));
             (pick(&self.hm, &name, self.places.hm, prefer, noticed), SymmetrySource::HermannMauguin)
-        } else if !self.number.settings.is_empty() {
+        } else if !of_number.settings.is_empty() {
             let name = format!("space-group number {}", stated.number.unwrap_or_default());
-            (pick(&self.number, &name, self.places.number, prefer, noticed), SymmetrySource::Number)
+            (pick(&of_number, &name, self.places.number, prefer, noticed), SymmetrySource::Number)
         } else {
             return self.without_setting(noticed);
         };
@@ -318,7 +327,7 @@ impl Named {
         stated.hall_number = setting.hall_number;
         let name = format!("'{}'", setting.hall);
         self.compare(setting.group(), &name, stated, noticed);
-        Ok((setting.operations.clone(), setting.group().clone()))
+        Ok((setting.operations(), setting.group().clone()))
     }
 
     fn without_setting(&self, noticed: &mut Vec<Diagnostic>) -> Result<(Vec<Operation>, Group), Diagnostic> {
@@ -359,7 +368,7 @@ where
     if !candidates.is_ambiguous() {
         return &settings[0];
     }
-    let scores: Vec<u32> = settings.iter().map(|setting| prefer(&setting.operations)).collect();
+    let scores: Vec<u32> = settings.iter().map(|setting| prefer(&setting.operations())).collect();
     let best = scores.iter().min().copied().unwrap_or(0);
     let first = scores.iter().position(|score| *score == best).unwrap_or(0);
     let chosen = &settings[first];

@@ -7,13 +7,26 @@ use nalgebra::{Matrix3, Vector3};
 use num_integer::Integer;
 use std::collections::HashSet;
 use std::fmt;
+use std::hash::{Hash, Hasher};
+use std::sync::OnceLock;
 
 /// An operation modulo whole cell translations: integer matrix, translation in units of 1/[`UNIT`], each in
 /// `0..UNIT`.
-#[derive(Debug, Clone, Copy, PartialEq, Eq, Hash, PartialOrd, Ord)]
+#[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord)]
 pub struct Motion {
     rotation: [[i8; 3]; 3],
     translation: [i32; 3],
+}
+
+impl Hash for Motion {
+    /// Two words in place of twelve numbers, because groups are made for every file.
+    fn hash<H: Hasher>(&self, state: &mut H) {
+        let pack = |word: u64, entry: u64, bits: u32| (word << bits) ^ entry;
+        let rotation = self.rotation.iter().flatten();
+        state.write_u64(rotation.fold(0, |word, entry| pack(word, u64::from(entry.cast_unsigned()), 7)));
+        let translation = self.translation.iter();
+        state.write_u64(translation.fold(0, |word, entry| pack(word, u64::from(entry.cast_unsigned()), 20)));
+    }
 }
 
 impl Motion {
@@ -153,6 +166,9 @@ fn units_of(value: f64) -> i64 {
 pub struct Group {
     motions: Vec<Motion>,
     members: HashSet<Motion>,
+    /// Motions that generate the others.
+    generators: Vec<Motion>,
+    kinds: OnceLock<Vec<(i32, i32)>>,
 }
 
 impl Group {
@@ -162,8 +178,12 @@ impl Group {
     /// each generator that was needed, so the work grows with the order of the group times a handful.
     #[must_use]
     pub fn generate(generators: impl IntoIterator<Item = Motion>, limit: usize) -> Option<Self> {
-        let mut group = Self { motions: vec![Motion::IDENTITY], members: HashSet::from([Motion::IDENTITY]) };
-        let mut needed: Vec<Motion> = Vec::new();
+        let mut group = Self {
+            motions: vec![Motion::IDENTITY],
+            members: HashSet::from([Motion::IDENTITY]),
+            generators: Vec::new(),
+            kinds: OnceLock::new(),
+        };
         for generator in generators {
             if group.contains(&generator) {
                 continue;
@@ -171,13 +191,14 @@ impl Group {
             if generator.determinant().abs() != 1 {
                 return None;
             }
-            needed.push(generator);
+            group.generators.push(generator);
             // Elements from before are closed under the older generators.
             let old = group.motions.len();
             let mut at = 0;
             while at < group.motions.len() {
                 let element = group.motions[at];
-                let factors = if at < old { std::slice::from_ref(&generator) } else { needed.as_slice() };
+                let factors =
+                    if at < old { std::slice::from_ref(&generator) } else { group.generators.as_slice() };
                 for factor in factors {
                     let product = element.after(factor)?;
                     if group.members.insert(product) {
@@ -238,14 +259,19 @@ impl Group {
     /// Determinant and trace of each element's matrix, sorted, divided among the lattice points. Groups of the same
     /// geometric class have the same list, whatever their axes and origin.
     #[must_use]
-    pub fn kinds(&self) -> Vec<(i32, i32)> {
-        let mut rotations: Vec<&Motion> = self.motions.iter().collect();
-        rotations.sort_by_key(|motion| motion.rotation);
-        rotations.dedup_by_key(|motion| motion.rotation);
-        let mut kinds: Vec<_> =
-            rotations.iter().map(|motion| (motion.determinant(), motion.trace())).collect();
-        kinds.sort_unstable();
-        kinds
+    pub fn kinds(&self) -> &[(i32, i32)] {
+        self.kinds.get_or_init(|| {
+            let mut rotations: Vec<_> = self.motions.iter().map(|motion| motion.rotation).collect();
+            rotations.sort_unstable();
+            rotations.dedup();
+            let mut kinds: Vec<_> = rotations
+                .into_iter()
+                .map(|rotation| Motion { rotation, translation: [0; 3] })
+                .map(|motion| (motion.determinant(), motion.trace()))
+                .collect();
+            kinds.sort_unstable();
+            kinds
+        })
     }
 
     /// Whether a shift of origin makes the other group out of this one. Shifts in steps of 1/24 are tried.
@@ -261,7 +287,7 @@ impl Group {
             steps().any(|j| {
                 steps().any(|k| {
                     let shift = [i * step, j * step, k * step];
-                    self.motions
+                    self.generators
                         .iter()
                         .all(|motion| motion.shifted(&shift).is_some_and(|motion| other.contains(&motion)))
                 })
@@ -274,7 +300,7 @@ impl Group {
     pub fn fits(&self, lattice: &Lattice) -> bool {
         const TOLERANCE: f64 = 0.02;
         let metric = lattice.basis().transpose() * lattice.basis();
-        self.motions.iter().all(|motion| {
+        self.generators.iter().all(|motion| {
             let rotation = Matrix3::from_fn(|i, j| f64::from(motion.rotation[i][j]));
             let moved = rotation.transpose() * metric * rotation;
             (0..3).all(|i| {

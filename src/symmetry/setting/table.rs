@@ -48,7 +48,6 @@ impl Entry {
             number: Some(self.number),
             hall: self.hall.replace('=', "\"").replace('^', "'"),
             hm: self.hm.clone(),
-            operations: group.operations(),
             group: Arc::clone(group),
         })
     }
@@ -174,6 +173,13 @@ fn select(indices: Option<&Vec<usize>>) -> Vec<&'static Entry> {
     indices.into_iter().flatten().filter_map(|index| TABLE.entries.get(*index)).collect()
 }
 
+/// The entry of the standard setting of a number.
+pub(super) fn standard(number: u16) -> Option<&'static Entry> {
+    let hall_number = moyo::data::Setting::Standard.hall_number(i32::from(number).max(1))?;
+    let index = usize::try_from(hall_number).ok()?.checked_sub(1)?;
+    TABLE.entries.get(index).filter(|entry| entry.number == number)
+}
+
 /// The entries of a number of the International Tables.
 pub(super) fn by_number(number: u16) -> Vec<&'static Entry> {
     TABLE.entries.iter().filter(|entry| entry.number == number).collect()
@@ -200,6 +206,16 @@ mod tests {
             }));
         }
         assert_eq!(TABLE.entries.len(), 530);
+    }
+
+    #[test]
+    fn standard_settings_are_those_listed_first() {
+        for number in 1..=230 {
+            let listed = super::super::from_number(number, &Hint::default());
+            let hall_number = super::super::standard(number).and_then(|setting| setting.hall_number);
+            assert_eq!(listed.settings[0].hall_number, hall_number, "{number}");
+        }
+        assert!(standard(0).is_none() && standard(231).is_none() && standard(u16::MAX).is_none());
     }
 
     #[test]
