@@ -29,7 +29,7 @@ fn page(command: Command, name: &str, diagnostics: bool) {
     if diagnostics {
         text.push_str(".SH DIAGNOSTICS\n");
         for code in Code::ALL {
-            text += &format!(".TP\n{code}\n{}. Remedy: {}.\n", code.cause(), code.remedy());
+            text.extend([".TP\n", code.as_str(), "\n", code.cause(), ". Remedy: ", code.remedy(), ".\n"]);
         }
     }
     compare(&format!("{name}.1"), &text);
