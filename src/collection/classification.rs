@@ -5,7 +5,7 @@ use crate::cif;
 use crate::crystal::{AsymmetricUnit, Crystal, ExpandTolerance, Formula};
 use crate::diagnostic::{Code, Diagnostic};
 use crate::polarization::FormalPolarization;
-use crate::symmetry::{Centres, Engine, Primitive, Symmetry, find_symmetry};
+use crate::symmetry::{Centres, Engine, Primitive, Symmetry, analyse};
 
 /// What a classification is asked to use. Printed in every report.
 #[derive(Debug, Clone)]
@@ -179,8 +179,9 @@ fn run(
             *kind += 1000 * i32::try_from(*charge).unwrap_or(0);
         }
     }
-    let symmetry = find_symmetry(crystal, &kinds, settings.engine, settings.symmetry_tolerance)?;
+    let (symmetry, primitive) = analyse(crystal, &kinds, settings.engine, settings.symmetry_tolerance)?;
     let symmetry = &*work.symmetry.insert(symmetry);
+    let primitive = &*work.primitive.insert(primitive);
     if (symmetry.tolerance - settings.symmetry_tolerance).abs() > 1e-12 {
         work.diagnostics.push(Diagnostic::note(
             Code::SymmetryTolerance,
@@ -190,7 +191,6 @@ fn run(
             ),
         ));
     }
-    let primitive = &*work.primitive.insert(Primitive::new(crystal, &kinds, symmetry)?);
     work.centres = Centres::find(primitive)?;
     let assignment = match known {
         Known::Settled(assignment) => assignment,

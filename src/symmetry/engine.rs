@@ -79,6 +79,25 @@ pub struct Symmetry {
     pub tolerance: f64,
 }
 
+/// Order of the point group of a space-group number (International Tables for Crystallography, volume A, the ranges of
+/// numbers of the 32 crystal classes); 0 outside 1 to 230.
+#[must_use]
+pub(crate) fn point_group_order(number: u16) -> usize {
+    match number {
+        1 => 1,
+        2..=9 => 2,
+        10..=46 | 75..=82 => 4,
+        47..=74 | 83..=122 => 8,
+        123..=142 => 16,
+        143..=146 => 3,
+        147..=161 | 168..=174 => 6,
+        162..=167 | 175..=190 | 195..=199 => 12,
+        191..=194 | 200..=220 => 24,
+        221..=230 => 48,
+        _ => 0,
+    }
+}
+
 /// Searches for the symmetry of a crystal at a distance tolerance in Å. Sites with different `kinds` are never mapped
 /// onto each other.
 ///
@@ -173,4 +192,25 @@ fn determinant(operation: &Operation) -> i64 {
     w[(0, 0)] * (w[(1, 1)] * w[(2, 2)] - w[(1, 2)] * w[(2, 1)])
         - w[(0, 1)] * (w[(1, 0)] * w[(2, 2)] - w[(1, 2)] * w[(2, 0)])
         + w[(0, 2)] * (w[(1, 0)] * w[(2, 1)] - w[(1, 1)] * w[(2, 0)])
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use ::moyo::data::{HallSymbol, Setting};
+
+    #[test]
+    fn point_group_orders_are_those_of_the_tables() {
+        // Against the operations that the crate moyo lists for each group.
+        for number in 1..=230 {
+            let hall = Setting::Standard.hall_number(number).expect("230 groups");
+            let operations = HallSymbol::from_hall_number(hall).expect("a symbol").primitive_traverse();
+            assert_eq!(
+                point_group_order(u16::try_from(number).expect("small")),
+                operations.len(),
+                "group {number}"
+            );
+        }
+        assert_eq!((point_group_order(0), point_group_order(231)), (0, 0));
+    }
 }

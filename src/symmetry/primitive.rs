@@ -18,7 +18,7 @@
 use super::engine::Symmetry;
 use super::mapping::{Mapping, SiteIndex};
 use crate::cell::{Lattice, Reduced};
-use crate::crystal::{Crystal, Operation};
+use crate::crystal::{Crystal, Operation, Site};
 use crate::diagnostic::{Code, Diagnostic};
 use crate::exact::{Overflow, RowLattice};
 use nalgebra::{Matrix3, Vector3};
@@ -86,6 +86,8 @@ pub struct Primitive {
     pub centring: Centring,
     /// For each atom of the primitive cell, the site of the crystal that stands for it.
     pub representatives: Vec<usize>,
+    /// For each site of the crystal, the atom of the primitive cell it is an image of.
+    pub atoms: Vec<usize>,
     /// Fractional positions in primitive axes, averaged over the translations of the crystal's cell.
     pub positions: Vec<Vector3<f64>>,
     /// What the symmetry search took each atom for.
@@ -121,9 +123,9 @@ impl Primitive {
         let index = SiteIndex::new(&crystal.lattice, &all, kinds, limit);
         let mut representatives = Vec::new();
         let mut positions = Vec::new();
-        let mut seen = vec![false; all.len()];
+        let mut atoms = vec![usize::MAX; all.len()];
         for site in 0..all.len() {
-            if seen[site] {
+            if atoms[site] != usize::MAX {
                 continue;
             }
             let mut sum = Vector3::zeros();
@@ -135,14 +137,14 @@ impl Primitive {
                         crystal.sites[site].label
                     ))
                 })?;
-                seen[target] = true;
+                atoms[target] = representatives.len();
                 sum += (all[target] - image).map(|x| x - x.round());
             }
             let mean = all[site] + sum / float(i64::try_from(translations.len()).unwrap_or(1));
             representatives.push(site);
             positions.push(inverse.cast::<f64>() * mean);
         }
-        if representatives.len() * translations.len() != all.len() {
+        if representatives.len() * translations.len() != all.len() || atoms.contains(&usize::MAX) {
             return Err(inconsistent(&format!(
                 "{} sites and {} translations do not make a whole number of primitive atoms",
                 all.len(),
@@ -155,6 +157,7 @@ impl Primitive {
             centring,
             kinds: representatives.iter().map(|&site| kinds[site]).collect(),
             representatives,
+            atoms,
             positions,
             operations,
             tolerance: symmetry.tolerance,
@@ -162,6 +165,17 @@ impl Primitive {
             denominator,
             inverse,
         })
+    }
+
+    /// The primitive cell as a crystal of its own, one site for each atom.
+    #[must_use]
+    pub fn to_crystal(&self, crystal: &Crystal) -> Crystal {
+        let sites = self.representatives.iter().zip(&self.positions);
+        Crystal {
+            lattice: self.lattice.clone(),
+            sites: sites.map(|(&site, &position)| Site { position, ..crystal.sites[site].clone() }).collect(),
+            origins: (0..self.positions.len()).collect(),
+        }
     }
 
     /// The primitive vectors in the axes of the crystal's cell: whole numbers, one vector a column, over a common
@@ -218,7 +232,7 @@ fn match_limit(tolerance: f64) -> f64 {
     (4.0 * tolerance).clamp(0.02, 0.24)
 }
 
-fn inconsistent(why: &str) -> Diagnostic {
+pub(super) fn inconsistent(why: &str) -> Diagnostic {
     Diagnostic::error(Code::SymmetryNotFound, why.to_owned())
 }
 

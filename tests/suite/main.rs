@@ -9,6 +9,7 @@ mod demo;
 mod engines;
 mod enumeration;
 mod generated;
+mod invariance;
 mod layers;
 mod permitted;
 mod published;

@@ -88,6 +88,11 @@ impl Entry {
         }
     }
 
+    /// The charges of the listed sites in e.
+    pub(crate) fn formal_charges(&self) -> Vec<f64> {
+        self.sites.iter().map(|(_, charge, _)| *charge).collect()
+    }
+
     pub(crate) fn is_averaged(&self) -> bool {
         self.sites.iter().any(|(_, charge, _)| charge.fract() != 0.0)
     }
