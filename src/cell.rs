@@ -1,9 +1,11 @@
 //! The lattice: its vectors, its metric, and distances between images of points.
 
+mod cyclic;
 mod lattice;
 mod neighbours;
 mod reduce;
 
+pub(crate) use cyclic::group_cyclic;
 pub use lattice::{CellParameters, Lattice, LatticeError};
 pub use neighbours::{Contact, closest_contact, contacts_within};
 pub use reduce::Reduced;

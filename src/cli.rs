@@ -4,6 +4,7 @@ mod classify;
 mod common;
 mod enumerate;
 mod exit;
+mod facets;
 mod output;
 
 pub use exit::Exit;
@@ -27,6 +28,8 @@ enum Task {
     Classify(classify::Arguments),
     /// List the basis choices of one material and the polarization values they reach
     Enumerate(enumerate::Arguments),
+    /// Survey planes: layers, terminations, bound charge, and what cures it
+    Facets(facets::Arguments),
 }
 
 /// The definition of the command line, from which the manual pages are made.
@@ -50,6 +53,7 @@ pub fn run() -> Exit {
     let outcome = match arguments.command {
         Task::Classify(arguments) => classify::run(arguments),
         Task::Enumerate(arguments) => enumerate::run(arguments),
+        Task::Facets(arguments) => facets::run(arguments),
     };
     outcome.unwrap_or_else(|error| {
         if output::is_broken_pipe(&error) {

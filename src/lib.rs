@@ -12,6 +12,7 @@
 //! | [`cif`] | what does the file say? |
 //! | [`charge`] | which formal charge does each ion carry? |
 //! | [`polarization`] | which values are allowed, and is zero among them? |
+//! | [`facet`] | what does that mean on a plane that is cut? |
 //! | [`collection`] | the same for many files |
 //! | [`report`] | records, tables, words |
 //! | [`cli`] | the command line |
@@ -26,6 +27,7 @@ pub mod collection;
 pub mod crystal;
 pub mod diagnostic;
 pub mod exact;
+pub mod facet;
 pub mod polarization;
 pub mod report;
 pub mod symmetry;

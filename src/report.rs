@@ -1,5 +1,6 @@
 //! What the answers look like: records for machines, tables and words for people.
 
+pub mod facets;
 pub mod ladder;
 pub mod materials;
 pub mod record;

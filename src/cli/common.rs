@@ -61,7 +61,7 @@ pub(super) struct OutputOptions {
     pub(super) verbose: bool,
 }
 
-fn positive(text: &str) -> Result<f64, String> {
+pub(super) fn positive(text: &str) -> Result<f64, String> {
     match text.parse::<f64>() {
         Ok(value) if value.is_finite() && value > 0.0 => Ok(value),
         Ok(value) => Err(format!("{value} is not a positive number")),

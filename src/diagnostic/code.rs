@@ -119,6 +119,8 @@ codes! {
     PolarizationRoutes = "polarization-002", "two independent routes to the offset disagree", "report this file as a fault of the program";
     PolarizationOverflow = "polarization-003", "an exact number left the range of 128-bit integers", "reduce the cell or the charges";
     PolarizationWindow = "polarization-004", "the number of basis choices asked for is over the limit", "use a smaller --window";
+    // Facets.
+    FacetIndices = "facet-001", "the indices do not name a plane", "write a plane as --plane 0,0,1";
 }
 
 impl fmt::Display for Code {

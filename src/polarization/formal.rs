@@ -213,6 +213,14 @@ impl FormalPolarization {
     /// # Errors
     /// When an exact number leaves its range.
     pub fn along(&self, plane: [i64; 3]) -> Result<Component, Overflow> {
+        self.unreduced_along(plane)?.modulo(1)
+    }
+
+    /// `h · p` for the atoms as listed in the primitive cell, not reduced.
+    ///
+    /// # Errors
+    /// When an exact number leaves its range.
+    pub fn unreduced_along(&self, plane: [i64; 3]) -> Result<Component, Overflow> {
         let mut exact = Ratio::ZERO;
         let mut free = None;
         for (component, index) in self.polarization.iter().zip(plane) {
@@ -224,10 +232,10 @@ impl FormalPolarization {
                 Component::Free(_) => {}
             }
         }
-        match free {
-            None => Component::Exact(exact).modulo(1),
-            Some(value) => Component::Free(value + ratio_value(exact)).modulo(1),
-        }
+        Ok(match free {
+            None => Component::Exact(exact),
+            Some(value) => Component::Free(value + ratio_value(exact)),
+        })
     }
 }
 

@@ -22,6 +22,28 @@ pub fn describe(material: &Material, settings: &Settings, plane: Option<[i64; 3]
     text
 }
 
+/// Formula, file, group, charges, offset and label, one line each; a refusal with its reason.
+#[must_use]
+pub fn describe_briefly(material: &Material, settings: &Settings) -> String {
+    let full = describe(material, settings, None);
+    let kept = [
+        "  space group",
+        "  primitive cell",
+        "  formal charges",
+        "  refused",
+        "  where",
+        "  hint",
+        "  offset",
+        "  label",
+    ];
+    let mut lines = full.lines();
+    let mut brief: String = lines.next().map(|line| line.to_owned() + "\n").unwrap_or_default();
+    brief.extend(
+        lines.filter(|line| kept.iter().any(|start| line.starts_with(start))).flat_map(|line| [line, "\n"]),
+    );
+    brief + "  " + INSULATOR + "\n"
+}
+
 fn write_description(
     out: &mut String,
     material: &Material,

@@ -3,6 +3,7 @@
 
 use clap::Command;
 use cosetta::diagnostic::Code;
+use cosetta::report::facets::FacetsRecord;
 use cosetta::report::record::{EnumerationRecord, MaterialRecord};
 use std::fs;
 use std::path::Path;
@@ -49,5 +50,6 @@ fn generated_manual_pages() {
 fn generated_schema() {
     let schema = |schema: schemars::Schema| serde_json::to_string_pretty(&schema).expect("JSON") + "\n";
     compare("classify.schema.json", &schema(schemars::schema_for!(MaterialRecord)));
+    compare("facets.schema.json", &schema(schemars::schema_for!(FacetsRecord)));
     compare("enumerate.schema.json", &schema(schemars::schema_for!(EnumerationRecord)));
 }

@@ -4,7 +4,7 @@ use std::fs;
 use std::path::{Path, PathBuf};
 
 /// From the ground up. A room may import from rooms before it, never from one after it.
-const ROOMS: [&str; 11] = [
+const ROOMS: [&str; 12] = [
     "diagnostic",
     "exact",
     "cell",
@@ -13,6 +13,7 @@ const ROOMS: [&str; 11] = [
     "cif",
     "charge",
     "polarization",
+    "facet",
     "collection",
     "report",
     "cli",

@@ -8,11 +8,13 @@ mod demo;
 #[cfg(feature = "spglib")]
 mod engines;
 mod enumeration;
+mod facets;
 mod generated;
 mod invariance;
 mod layers;
 mod permitted;
 mod published;
 mod readme;
+mod remedies;
 mod slow;
 mod wide;
