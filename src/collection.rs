@@ -3,5 +3,7 @@
 mod classification;
 mod input;
 
-pub use classification::{Classification, Material, Settings, classify_bytes, classify_unit};
+pub use classification::{
+    Classification, Material, PARENT_TOLERANCE, ParentLevel, Settings, classify_bytes, classify_unit,
+};
 pub use input::{Input, find_inputs};

@@ -3,12 +3,14 @@
 mod centre;
 pub mod engine;
 mod mapping;
+mod parent;
 mod primitive;
 pub mod setting;
 
 pub use centre::{Centre, Centres};
 pub use engine::{Engine, Symmetry, find_symmetry};
 pub use mapping::Mapping;
+pub use parent::Parent;
 pub use primitive::{Centring, Primitive};
 
 use crate::crystal::Crystal;

@@ -1,7 +1,7 @@
 //! Options that several commands share.
 
 use crate::charge::Given;
-use crate::collection::Settings;
+use crate::collection::{PARENT_TOLERANCE, Settings};
 use crate::crystal::ExpandTolerance;
 use crate::symmetry::Engine;
 use clap::Args;
@@ -22,6 +22,12 @@ pub(super) struct StructureOptions {
     /// Distance tolerance of the symmetry search in Å
     #[arg(long, value_name = "Å", default_value_t = 0.01, value_parser = positive, help_heading = "Structure")]
     symmetry_tolerance: f64,
+    /// Largest distance in Å of an atom from its place in the parent structure
+    #[arg(long, value_name = "Å", default_value_t = PARENT_TOLERANCE, value_parser = positive, help_heading = "Structure")]
+    parent_tolerance: f64,
+    /// Do not look for the parent cell of a distorted crystal
+    #[arg(long, conflicts_with = "parent_tolerance", help_heading = "Structure")]
+    no_parent: bool,
     /// Refuse different atoms nearer than this, in Å
     #[arg(long, value_name = "Å", default_value_t = ExpandTolerance::default().min_distance, value_parser = positive,
           help_heading = "Structure")]
@@ -42,6 +48,7 @@ impl StructureOptions {
                 max_sites: self.max_sites,
                 ..ExpandTolerance::default()
             },
+            parent_tolerance: (!self.no_parent).then_some(self.parent_tolerance),
             block: self.block,
         }
     }

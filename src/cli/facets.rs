@@ -36,7 +36,7 @@ pub(super) struct Arguments {
     /// Without --plane: all symmetry-distinct planes up to this index
     #[arg(long, value_name = "N", default_value_t = 1, value_parser = clap::value_parser!(i64).range(1..=9))]
     max_index: i64,
-    /// Atoms nearer in height than this are one layer, in Å; raise it for rumpled layers of tilted perovskites
+    /// Atoms nearer in height than this are one layer, in Å; heights are those of the parent structure where there is one
     #[arg(long, value_name = "Å", default_value_t = 0.3, value_parser = common::positive)]
     layer_tolerance: f64,
     /// Form of the answer; csv has one row for each termination
@@ -114,10 +114,11 @@ fn survey(
     };
     let elements = primitive.representatives.iter().map(|&site| crystal.sites[site].element);
     let parts = Parts { primitive, ions: elements.zip(charges.iter().copied()).collect() };
+    let ideal = work.parent.as_ref().map(|found| found.parent.ideal.as_slice());
     let planes = if named.is_empty() { distinct_planes(primitive, max_index) } else { named.to_vec() };
     for miller in planes {
         let facet = Facet::new(primitive, miller)?;
-        let stacking = Stacking::new(&facet, primitive, &charges, formal, layer_tolerance)?;
+        let stacking = Stacking::new(&facet, primitive, &charges, formal, ideal, layer_tolerance)?;
         record.planes.push(parts.plane(&facet, &stacking));
     }
     Ok(())

@@ -5,7 +5,8 @@ use crate::cif;
 use crate::crystal::{AsymmetricUnit, Crystal, ExpandTolerance, Formula};
 use crate::diagnostic::{Code, Diagnostic};
 use crate::polarization::FormalPolarization;
-use crate::symmetry::{Centres, Engine, Primitive, Symmetry, analyse};
+use crate::symmetry::{Centres, Engine, Parent, Primitive, Symmetry, analyse};
+use std::collections::BTreeSet;
 
 /// What a classification is asked to use. Printed in every report.
 #[derive(Debug, Clone)]
@@ -18,6 +19,8 @@ pub struct Settings {
     pub symmetry_tolerance: f64,
     /// Distances that merge images and refuse clashes.
     pub expand: ExpandTolerance,
+    /// Largest distance in Å of an atom from its place in the parent structure; without it no parent is searched.
+    pub parent_tolerance: Option<f64>,
     /// Only the data block of this name.
     pub block: Option<String>,
 }
@@ -31,9 +34,27 @@ impl Default for Settings {
             engine: Engine::default(),
             symmetry_tolerance: 0.01,
             expand: ExpandTolerance::default(),
+            parent_tolerance: Some(PARENT_TOLERANCE),
             block: None,
         }
     }
+}
+
+/// Oxygen atoms of strongly tilted perovskites lie up to 0.75 Å from their places in the cubic parent (DyScO3 0.72 Å),
+/// those of rutiles 0.82 to 0.88 Å from a body-centred arrangement that nobody calls their parent.
+pub const PARENT_TOLERANCE: f64 = 0.8;
+
+/// The answer for the averaged structure of the parent cell.
+#[derive(Debug, Clone)]
+pub struct ParentLevel {
+    /// The averaged structure.
+    pub parent: Parent,
+    /// Its symmetry.
+    pub symmetry: Symmetry,
+    /// Its primitive cell.
+    pub primitive: Primitive,
+    /// Its polarization.
+    pub formal: FormalPolarization,
 }
 
 /// How far the classification of one structure came, and what it found.
@@ -51,6 +72,8 @@ pub struct Classification {
     pub centres: Option<Centres>,
     /// The charges used.
     pub assignment: Option<Assignment>,
+    /// The parent cell, where there is one and it was searched for.
+    pub parent: Option<ParentLevel>,
     /// The answer, or why there is none.
     pub outcome: Result<FormalPolarization, Diagnostic>,
     /// What was noticed on the way.
@@ -78,6 +101,7 @@ impl Classification {
             primitive: None,
             centres: None,
             assignment: None,
+            parent: None,
             outcome: Err(refusal),
             diagnostics: Vec::new(),
         }
@@ -199,7 +223,80 @@ fn run(
     let charges: Vec<i64> = primitive.representatives.iter().map(|&site| assignment.charges[site]).collect();
     work.diagnostics.extend(assignment.diagnostics.iter().cloned());
     work.assignment = Some(assignment);
-    FormalPolarization::new(primitive, work.centres.as_ref(), &charges)
+    let formal = FormalPolarization::new(primitive, work.centres.as_ref(), &charges)?;
+    if let Some(tolerance) = settings.parent_tolerance {
+        work.parent = parent_level(crystal, primitive, &charges, settings, tolerance, &mut work.diagnostics);
+    }
+    Ok(formal)
+}
+
+/// The parent level. It adds to the answer and never takes it away: a parent that cannot be classified is a note.
+fn parent_level(
+    crystal: &Crystal,
+    primitive: &Primitive,
+    charges: &[i64],
+    settings: &Settings,
+    tolerance: f64,
+    noticed: &mut Vec<Diagnostic>,
+) -> Option<ParentLevel> {
+    let elements: Vec<i32> = primitive
+        .representatives
+        .iter()
+        .map(|&site| i32::from(crystal.sites[site].element.number()))
+        .collect();
+    let kinds: Vec<i32> = elements
+        .iter()
+        .zip(charges)
+        .map(|(element, &charge)| element + 1000 * i32::try_from(charge).unwrap_or(0))
+        .collect();
+    let mut note = |why: String| noticed.push(Diagnostic::note(Code::ParentRefused, why));
+    let find = |kinds: &[i32]| Parent::find(primitive, crystal, kinds, tolerance);
+    let found = match find(&kinds) {
+        Ok(found) => found,
+        Err(why) => {
+            note(format!("no parent: {}", why.message));
+            return None;
+        }
+    };
+    if kinds.iter().collect::<BTreeSet<_>>().len() > elements.iter().collect::<BTreeSet<_>>().len() {
+        let cells = |parents: &[Parent]| parents.first().map_or(1, |parent| parent.cells);
+        if let Ok(plain) = find(&elements)
+            && cells(&plain) > cells(&found)
+        {
+            note(format!(
+                "charge order blocks a smaller parent: {} cells without it, {} with it",
+                cells(&plain),
+                cells(&found)
+            ));
+        }
+    }
+    for parent in found {
+        match classify_parent(parent, &kinds, charges, settings) {
+            // The averaged structure of a true parent has every rotation of the crystal.
+            Ok(level) if level.primitive.operations.len() >= primitive.operations.len() => {
+                return Some(level);
+            }
+            Ok(_) => {}
+            Err(why) => note(format!("a parent structure could not be classified: {}", why.message)),
+        }
+    }
+    None
+}
+
+fn classify_parent(
+    parent: Parent,
+    kinds: &[i32],
+    charges: &[i64],
+    settings: &Settings,
+) -> Result<ParentLevel, Diagnostic> {
+    let of_first = |members: &Vec<usize>| (kinds[members[0]], charges[members[0]]);
+    let (kinds, charges): (Vec<i32>, Vec<i64>) = parent.members.iter().map(of_first).unzip();
+    let (symmetry, primitive) =
+        analyse(&parent.crystal, &kinds, settings.engine, settings.symmetry_tolerance)?;
+    let centres = Centres::find(&primitive)?;
+    let charges: Vec<i64> = primitive.representatives.iter().map(|&site| charges[site]).collect();
+    let formal = FormalPolarization::new(&primitive, centres.as_ref(), &charges)?;
+    Ok(ParentLevel { parent, symmetry, primitive, formal })
 }
 
 /// Averages over unlike cells have no quantized polarization.
@@ -207,7 +304,7 @@ fn refuse_shared(crystal: &Crystal) -> Result<(), Diagnostic> {
     if crystal.is_ordered() {
         return Ok(());
     }
-    let mut seen = std::collections::BTreeSet::new();
+    let mut seen = BTreeSet::new();
     let mut names: Vec<String> = crystal
         .sites
         .iter()

@@ -94,6 +94,7 @@ codes! {
     SymmetryTolerance = "symmetry-005", "the symmetry search used another tolerance than asked for", "set --symmetry-tolerance to the one used";
     SymmetryNotFound = "symmetry-006", "the operations found do not map the sites onto themselves", "lower --symmetry-tolerance";
     SymmetryMoved = "symmetry-007", "symmetrising moved an atom further than the tolerance", "lower --symmetry-tolerance";
+    ParentRefused = "parent-001", "there is no parent cell, or it could not be classified", "set --parent-tolerance, or leave the parent out with --no-parent";
     SymmetryOperation = "symmetry-008", "a symmetry operation cannot be read", "write it as -x,y+1/2,-z+1/2";
     SymmetryNotGroup = "symmetry-009", "the listed symmetry operations are not a group", "list every operation once, centring included";
     SymmetrySetting = "symmetry-010", "a space-group symbol or number stands for several settings", "give the operations as _space_group_symop_operation_xyz";

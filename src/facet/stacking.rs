@@ -84,7 +84,9 @@ pub struct Stacking {
 }
 
 impl Stacking {
-    /// Groups the atoms of a primitive cell into layers closer than `tolerance` Å and cuts below each of them.
+    /// Groups the atoms of a primitive cell into layers closer than `tolerance` Å and cuts below each of them. Where the
+    /// crystal has a parent, `ideal` gives the places of the atoms in it, and the layers are those of the parent; heights
+    /// and sums are of the atoms themselves.
     ///
     /// # Errors
     /// `polarization-003` when a number leaves the exact range.
@@ -93,11 +95,13 @@ impl Stacking {
         primitive: &Primitive,
         charges: &[i64],
         formal: &FormalPolarization,
+        ideal: Option<&[Vector3<f64>]>,
         tolerance: f64,
     ) -> Result<Self, Diagnostic> {
         let overflow = |_: Overflow| Diagnostic::error(Code::PolarizationOverflow, Overflow.to_string());
         let heights = facet.heights(&primitive.positions);
-        let (groups, lifts) = group_cyclic(&heights, tolerance / facet.spacing);
+        let grouped = ideal.map_or_else(|| heights.clone(), |ideal| facet.heights(ideal));
+        let (groups, lifts) = group_cyclic(&grouped, tolerance / facet.spacing);
         let lifted: Vec<f64> =
             heights.iter().zip(&lifts).map(|(height, &lift)| height + float(lift)).collect();
 

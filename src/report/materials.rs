@@ -11,6 +11,7 @@ const SHORT: &[Column] = &[
     Column::text("label", "label"),
     Column::text("offset", "offset"),
     Column::text("zero", "zero e/pair"),
+    Column::text("parent", "parent"),
     Column::text("charges", "charges"),
 ];
 
@@ -31,6 +32,9 @@ const FULL: &[Column] = &[
     Column::text("pair_contains_zero", "zero in pairs"),
     Column::number("ion_spacing", "ion spacing"),
     Column::text("ion_contains_zero", "zero by ions"),
+    Column::text("parent_label", "parent"),
+    Column::number("parent_cells", "parent cells"),
+    Column::number("parent_max_displacement_angstrom", "displacement"),
     Column::text("charges", "charges"),
     Column::text("charges_source", "source"),
     Column::number("residual_e_angstrom", "residual"),
@@ -72,6 +76,7 @@ pub fn short_row(record: &MaterialRecord) -> Vec<String> {
         label,
         offset,
         zero,
+        record.parent.as_ref().map_or_else(String::new, |parent| parent.level.label.to_string()),
         last,
     ]
 }
@@ -101,6 +106,9 @@ pub fn full_row(record: &MaterialRecord) -> Vec<String> {
         of_level(&|level| level.pair.contains_zero.to_string()),
         of_level(&|level| level.ion.spacing.to_string()),
         of_level(&|level| level.ion.contains_zero.to_string()),
+        text(record.parent.as_ref().map(|parent| parent.level.label.to_string())),
+        text(record.parent.as_ref().map(|parent| parent.cells.to_string())),
+        text(record.parent.as_ref().map(|parent| format!("{:.4}", parent.max_displacement))),
         text(record.charges.as_ref().map(|charges| charges.text.clone())),
         text(record.charges.as_ref().map(|charges| charges.source.clone())),
         of_level(&|level| format!("{:.6}", level.residual)),

@@ -2,7 +2,7 @@
 //! `man/classify.schema.json` and only ever added to. A field that does not apply is absent.
 
 use crate::charge::charges_text;
-use crate::collection::{Material, Settings};
+use crate::collection::{Material, ParentLevel, Settings};
 use crate::crystal::Operation;
 use crate::diagnostic::{Code, Diagnostic};
 use crate::exact::Ratio;
@@ -74,6 +74,9 @@ pub struct MaterialRecord {
     /// The coset of the primitive cell as given.
     #[serde(skip_serializing_if = "Option::is_none")]
     pub strict: Option<LevelRecord>,
+    /// The coset of the parent cell, where the crystal is a distorted multiple of a smaller cell.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub parent: Option<ParentRecord>,
     /// The offsets that the point group permits.
     #[serde(skip_serializing_if = "Option::is_none")]
     pub permitted: Option<PermittedRecord>,
@@ -167,6 +170,26 @@ pub struct LevelRecord {
     pub ion: IonRecord,
 }
 
+/// The answer for the averaged structure of the parent cell.
+#[derive(Debug, Clone, Serialize, JsonSchema)]
+pub struct ParentRecord {
+    /// The coset, in the reduced vectors of the parent cell.
+    #[serde(flatten)]
+    pub level: LevelRecord,
+    /// Space group of the averaged structure at the tolerance of the search.
+    pub space_group: SpaceGroupRecord,
+    /// How many parent cells make a primitive cell of the crystal.
+    pub cells: usize,
+    /// Largest distance in Å of an atom from its place in the parent.
+    pub max_displacement: f64,
+    /// Root mean square of these distances in Å.
+    pub rms_displacement: f64,
+    /// Lengths in Å of the vectors of the parent cell.
+    pub lengths: [f64; 3],
+    /// Angles in degrees of the vectors of the parent cell.
+    pub angles: [f64; 3],
+}
+
 /// The coset for electrons in pairs.
 #[derive(Debug, Clone, Serialize, JsonSchema)]
 pub struct PairRecord {
@@ -255,6 +278,7 @@ impl MaterialRecord {
             inversion_centres: CentreRecord::all(material),
             charges: ChargesRecord::new(material),
             strict: formal.map(LevelRecord::new),
+            parent: work.parent.as_ref().map(ParentRecord::new),
             permitted: formal.map(PermittedRecord::new),
             polarization: formal.map(UnitsRecord::new),
             tolerances: TolerancesRecord {
@@ -392,6 +416,21 @@ impl LevelRecord {
                 offset: offset_components(ion),
                 contains_zero: ion.contains_zero,
             },
+        }
+    }
+}
+
+impl ParentRecord {
+    fn new(found: &ParentLevel) -> Self {
+        let parameters = found.primitive.lattice.parameters();
+        Self {
+            level: LevelRecord::new(&found.formal),
+            space_group: SpaceGroupRecord::new(&found.symmetry),
+            cells: found.parent.cells,
+            max_displacement: found.parent.max_displacement,
+            rms_displacement: found.parent.rms_displacement,
+            lengths: parameters.lengths,
+            angles: parameters.angles,
         }
     }
 }

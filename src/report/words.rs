@@ -3,7 +3,7 @@
 use super::ladder::ladder;
 use super::record::{EnumerationRecord, centre_position, primitive_vectors};
 use crate::charge::charges_text;
-use crate::collection::{Material, Settings};
+use crate::collection::{Material, ParentLevel, Settings};
 use crate::polarization::{C_PER_M2, Component, Coset, FormalPolarization, Label, Modulus};
 use crate::symmetry::{Centring, Primitive};
 use std::fmt::Write;
@@ -35,6 +35,8 @@ pub fn describe_briefly(material: &Material, settings: &Settings) -> String {
         "  hint",
         "  offset",
         "  label",
+        "  parent label",
+        "                     averaged",
     ];
     let mut lines = full.lines();
     let mut brief: String = lines.next().map(|line| line.to_owned() + "\n").unwrap_or_default();
@@ -88,7 +90,7 @@ fn write_description(
         )?;
     }
     match &work.outcome {
-        Ok(formal) => write_answer(out, work.primitive.as_ref(), formal, plane)?,
+        Ok(formal) => write_answer(out, work.primitive.as_ref(), work.parent.as_ref(), formal, plane)?,
         Err(refusal) => {
             writeln!(out, "  refused            {}: {}", refusal.code, refusal.message)?;
             if let Some(span) = refusal.span {
@@ -141,6 +143,7 @@ fn write_centres(out: &mut String, material: &Material) -> std::fmt::Result {
 fn write_answer(
     out: &mut String,
     primitive: Option<&Primitive>,
+    parent: Option<&ParentLevel>,
     formal: &FormalPolarization,
     plane: Option<[i64; 3]>,
 ) -> std::fmt::Result {
@@ -181,6 +184,25 @@ fn write_answer(
         write_ladder(out, primitive, formal, plane)?;
     }
     writeln!(out, "  label              {}", formal.label)?;
+    if let Some(found) = parent {
+        let cell =
+            found.primitive.lattice.parameters().lengths.map(|length| format!("{length:.3}")).join(" × ");
+        writeln!(
+            out,
+            "  parent label       {}: offset {} in the parent cell of {cell} Å ({} of them make the primitive cell)",
+            found.formal.label,
+            offset_text(found.formal.electron()),
+            found.parent.cells
+        )?;
+        writeln!(
+            out,
+            "                     averaged structure {} {}; displacements up to {:.3} Å, r.m.s. {:.3} Å",
+            found.symmetry.number,
+            found.symmetry.symbol,
+            found.parent.max_displacement,
+            found.parent.rms_displacement
+        )?;
+    }
     write_wrapped(out, &sentence(formal))?;
     writeln!(out, "  {INSULATOR}")
 }

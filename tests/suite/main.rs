@@ -12,6 +12,7 @@ mod facets;
 mod generated;
 mod invariance;
 mod layers;
+mod parents;
 mod permitted;
 mod published;
 mod readme;
