@@ -1,8 +1,8 @@
 //! The parent cell: the smaller cell of which a crystal is a distorted multiple.
 //!
 //! A pseudo-translation is a vector that takes every atom near an atom of its kind. It is a fraction of a lattice vector:
-//! applied often enough it has to become one. Candidates are the vectors between atoms of the rarest kind, set to the
-//! nearest fraction; each is tried on all atoms by an optimal assignment (Kuhn, Nav. Res. Logist. Q. 2, 83 (1955)). The
+//! applied often enough it has to become one. Candidates are the vectors between atoms of one kind, set to the nearest
+//! fraction; each is tried on all atoms by an optimal assignment (Kuhn, Nav. Res. Logist. Q. 2, 83 (1955)). The
 //! accepted ones are closed to a group, and the atoms that the group joins are averaged.
 
 use super::primitive::Primitive;
@@ -67,7 +67,7 @@ impl Parent {
         }
         let reduced =
             Reduced::new(&primitive.lattice).map_err(|error| crate::crystal::lattice_refusal(&error))?;
-        let search = Search { primitive, reduced: &reduced, kinds, tolerance };
+        let search = Search::new(primitive, &reduced, kinds, tolerance);
         let mut accepted: Vec<Pseudo> =
             search.candidates().into_iter().filter_map(|vector| search.try_vector(vector)).collect();
         accepted.sort_by(|a, b| a.largest.total_cmp(&b.largest));
@@ -94,26 +94,50 @@ struct Search<'a> {
     reduced: &'a Reduced,
     kinds: &'a [i32],
     tolerance: f64,
+    /// Positions in the reduced vectors, and the change of axes that leads there.
+    places: Vec<Vector3<f64>>,
+    change: Matrix3<f64>,
+    /// Twice the tolerance over the face distances of the reduced cell.
+    reach: Vector3<f64>,
+    /// Atoms of each kind, the rarest kind first.
+    by_kind: Vec<Vec<usize>>,
 }
 
-impl Search<'_> {
-    /// Vectors from the first atom of the rarest kind to the others of it, as fractions of lattice vectors.
+impl<'a> Search<'a> {
+    fn new(primitive: &'a Primitive, reduced: &'a Reduced, kinds: &'a [i32], tolerance: f64) -> Self {
+        let change = reduced.lattice().inverse() * primitive.lattice.basis();
+        let distinct: BTreeSet<i32> = kinds.iter().copied().collect();
+        let mut by_kind: Vec<Vec<usize>> = distinct
+            .into_iter()
+            .map(|kind| (0..kinds.len()).filter(|&atom| kinds[atom] == kind).collect())
+            .collect();
+        by_kind.sort_by_key(Vec::len);
+        Self {
+            primitive,
+            reduced,
+            kinds,
+            tolerance,
+            places: primitive.positions.iter().map(|position| change * position).collect(),
+            change,
+            reach: reduced.lattice().face_distances().map(|distance| 2.0 * tolerance / distance),
+            by_kind,
+        }
+    }
+
+    /// Vectors from the first atom of each kind to the others of it, as fractions of lattice vectors.
     fn candidates(&self) -> Vec<Vector3<f64>> {
-        let tally = |kind: i32| self.kinds.iter().filter(|other| **other == kind).count();
-        let Some(first) = (0..self.kinds.len()).min_by_key(|&atom| tally(self.kinds[atom])) else {
-            return Vec::new();
+        // The order of a translation divides the number of atoms of each kind.
+        let divides = |order: &i64| {
+            usize::try_from(*order).is_ok_and(|n| self.by_kind.iter().all(|members| members.len() % n == 0))
         };
-        let members = tally(self.kinds[first]);
+        let orders: Vec<i64> = (2..=MAX_ORDER).filter(divides).collect();
         let positions = &self.primitive.positions;
         let mut found: Vec<Vector3<f64>> = Vec::new();
-        for other in
-            (0..positions.len()).filter(|&atom| atom != first && self.kinds[atom] == self.kinds[first])
-        {
+        let firsts = self.by_kind.iter().filter_map(|members| members.split_first());
+        let pairs = firsts.flat_map(|(first, others)| others.iter().map(|other| (*first, *other)));
+        for (first, other) in pairs {
             let step = positions[other] - positions[first];
-            // The order of a translation divides the number of atoms of each kind.
-            let orders =
-                (2..=MAX_ORDER).filter(|&order| usize::try_from(order).is_ok_and(|n| members % n == 0));
-            for order in orders {
+            for &order in &orders {
                 #[allow(clippy::cast_precision_loss, reason = "orders are small")]
                 let order = order as f64;
                 let vector = (step * order).map(f64::round) / order;
@@ -128,29 +152,34 @@ impl Search<'_> {
         found
     }
 
+    /// Distance in Å between two places in the reduced vectors, or infinity where it is above twice the tolerance.
     fn distance(&self, from: &Vector3<f64>, to: &Vector3<f64>) -> f64 {
-        self.reduced.shortest_image(&self.primitive.lattice.to_cartesian(&(to - from))).norm()
+        let offset = (to - from).map(|x| x - x.round());
+        // A wrapped coordinate beyond the reach puts every image beyond it: the planes of atoms are that far apart.
+        if (0..3).any(|axis| offset[axis].abs() > self.reach[axis]) {
+            return f64::INFINITY;
+        }
+        self.reduced.shortest_image(&self.reduced.lattice().to_cartesian(&offset)).norm()
     }
 
     /// Where a vector takes every atom, by an assignment of the least sum of squared distances within each kind. `None`
     /// when some atom is further from its target than twice the tolerance.
     fn try_vector(&self, vector: Vector3<f64>) -> Option<Pseudo> {
-        let positions = &self.primitive.positions;
         let limit = 2.0 * self.tolerance;
-        let mut targets = vec![usize::MAX; positions.len()];
+        let step = self.change * vector;
+        let mut targets = vec![usize::MAX; self.places.len()];
         let mut largest = 0.0_f64;
-        let kinds: BTreeSet<i32> = self.kinds.iter().copied().collect();
-        for kind in kinds {
-            let members: Vec<usize> = (0..positions.len()).filter(|&atom| self.kinds[atom] == kind).collect();
-            let table: Vec<Vec<f64>> = members
-                .iter()
-                .map(|&from| {
-                    members
-                        .iter()
-                        .map(|&to| self.distance(&(positions[from] + vector), &positions[to]))
-                        .collect()
-                })
-                .collect();
+        for members in &self.by_kind {
+            let mut table: Vec<Vec<f64>> = Vec::with_capacity(members.len());
+            for &from in members {
+                let place = self.places[from] + step;
+                let row: Vec<f64> =
+                    members.iter().map(|&to| self.distance(&place, &self.places[to])).collect();
+                if row.iter().all(|distance| *distance > limit) {
+                    return None;
+                }
+                table.push(row);
+            }
             for (row, to) in assign(&table, limit)?.into_iter().enumerate() {
                 let distance = table[row][to];
                 if distance > limit {
