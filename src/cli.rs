@@ -1,10 +1,12 @@
 //! The command line: what may be typed, and what is done with it.
 
+mod check;
 mod classify;
 mod common;
 mod enumerate;
 mod exit;
 mod output;
+mod render;
 
 pub use exit::Exit;
 
@@ -27,6 +29,8 @@ enum Task {
     Classify(classify::Arguments),
     /// List the basis choices of one material and the polarization values they reach
     Enumerate(enumerate::Arguments),
+    /// Say what is wrong or suspicious in files, with line, column and what to type
+    Check(check::Arguments),
 }
 
 /// The definition of the command line, from which the manual pages are made.
@@ -50,6 +54,7 @@ pub fn run() -> Exit {
     let outcome = match arguments.command {
         Task::Classify(arguments) => classify::run(arguments),
         Task::Enumerate(arguments) => enumerate::run(arguments),
+        Task::Check(arguments) => check::run(arguments),
     };
     outcome.unwrap_or_else(|error| {
         if output::is_broken_pipe(&error) {
