@@ -146,8 +146,10 @@ pub fn classify_bytes(file: &str, bytes: &[u8], settings: &Settings) -> Vec<Mate
             };
             let mut diagnostics = std::mem::take(&mut first_diagnostics);
             diagnostics.extend(block.diagnostics);
-            diagnostics.append(&mut classification.diagnostics);
+            let located = |found: Diagnostic| found.located(&block.site_spans);
+            diagnostics.extend(std::mem::take(&mut classification.diagnostics).into_iter().map(located));
             classification.diagnostics = diagnostics;
+            classification.outcome = classification.outcome.map_err(located);
             material(&block.name, classification)
         })
         .collect()
@@ -207,6 +209,7 @@ fn refuse_shared(crystal: &Crystal) -> Result<(), Diagnostic> {
     if crystal.is_ordered() {
         return Ok(());
     }
+    let first = crystal.sites.iter().position(|site| !site.is_full()).unwrap_or(0);
     let mut seen = std::collections::BTreeSet::new();
     let mut names: Vec<String> = crystal
         .sites
@@ -225,5 +228,6 @@ fn refuse_shared(crystal: &Crystal) -> Result<(), Diagnostic> {
              {}{more}",
             names.join(", ")
         ),
-    ))
+    )
+    .about(crystal.origins[first]))
 }
