@@ -103,13 +103,6 @@ impl Diagnostic {
         self
     }
 
-    /// The same finding with its place taken from those of the listed sites, if it names one and has no place yet.
-    #[must_use]
-    pub fn located(mut self, sites: &[Span]) -> Self {
-        self.span = self.span.or_else(|| sites.get(self.site?).copied());
-        self
-    }
-
     /// The same finding with something to type.
     #[must_use]
     pub fn hint(mut self, hint: impl Into<String>) -> Self {

@@ -47,7 +47,7 @@ pub struct BlockReading {
     /// Standard uncertainties of a, b, c, alpha, beta, gamma.
     pub cell_uncertainty: [Option<f64>; 6],
     /// Where each listed site is in the file, in the order of the sites of `unit`.
-    pub site_spans: Vec<Span>,
+    pub site_places: Vec<SitePlace>,
     /// Standard uncertainties of the fractional coordinates of each listed site, in the order of the sites of `unit`.
     pub site_uncertainty: Vec<[Option<f64>; 3]>,
     /// Everything noticed but the refusal.
@@ -103,7 +103,7 @@ fn read_block(document: &Document<'_>, block: &Block<'_>) -> BlockReading {
         formula_sum: value_of(block, FORMULA_SUM).and_then(Value::stated).map(str::to_owned),
         formula_units: optional_number(block, FORMULA_UNITS, &mut diagnostics).filter(|units| *units > 0.0),
         cell_uncertainty: [None; 6],
-        site_spans: Vec::new(),
+        site_places: Vec::new(),
         site_uncertainty: Vec::new(),
         diagnostics: Vec::new(),
     };
@@ -126,7 +126,7 @@ fn read_unit(
     reading.cell_uncertainty = uncertainty;
     let formula = reading.formula_sum.as_deref().and_then(Composition::parse);
     let found = read_sites(block, &lattice, formula.as_ref(), noticed)?;
-    reading.site_spans.clone_from(&found.spans);
+    reading.site_places.clone_from(&found.places);
     reading.site_uncertainty.clone_from(&found.uncertainties);
     let evidence = Evidence {
         lattice: &lattice,
@@ -178,6 +178,33 @@ struct Evidence<'a> {
     found: &'a Sites,
     formula: Option<&'a Composition>,
     units: Option<f64>,
+}
+
+/// Where the parts of a listed site are in the file.
+#[derive(Debug, Clone, Copy)]
+pub struct SitePlace {
+    /// The label, or what comes first where there is none.
+    pub label: Span,
+    /// The coordinates.
+    pub position: Span,
+    /// The occupancy, if one is given.
+    pub occupancy: Option<Span>,
+    /// The multiplicity, if one is given.
+    pub multiplicity: Option<Span>,
+}
+
+impl BlockReading {
+    /// A finding about a listed site, with the place in the file it had not been given so far.
+    #[must_use]
+    pub fn locate(&self, finding: Diagnostic) -> Diagnostic {
+        let Some(place) = finding.site.and_then(|site| self.site_places.get(site)) else { return finding };
+        let span = match finding.code {
+            Code::SiteShared | Code::SiteOverfull => place.occupancy.unwrap_or(place.label),
+            Code::SiteRounded | Code::SitesTooClose | Code::SiteListedTwice => place.position,
+            _ => place.label,
+        };
+        if finding.span.is_some() { finding } else { finding.at(span) }
+    }
 }
 
 impl Evidence<'_> {
@@ -264,7 +291,12 @@ impl Evidence<'_> {
                 multiplicities[first],
                 self.found.multiplicities[first].unwrap_or_default()
             );
-            noticed.push(Diagnostic::warning(Code::SiteMultiplicity, message).at(self.found.spans[first]));
+            let place = &self.found.places[first];
+            noticed.push(
+                Diagnostic::warning(Code::SiteMultiplicity, message)
+                    .at(place.multiplicity.unwrap_or(place.label))
+                    .hint(multiplicities[first].to_string()),
+            );
         }
         let made = self.composition(&multiplicities);
         let units = self.check_formula(block, &made, is_named, noticed)?;

@@ -31,30 +31,53 @@ impl Drawing {
         };
         let severity = self.paint(diagnostic.severity, &diagnostic.severity.to_string());
         let mut text = format!("{severity} {} in {place}\n", diagnostic.code);
-        text.push_str(&format!("  {}\n", diagnostic.message));
+        text.push_str(&self.wrap(&diagnostic.message));
         let window = diagnostic.span.and_then(|span| Window::new(source, span));
         if let Some(window) = window {
             text.push_str(&self.draw_window(&window, diagnostic.severity));
         }
         match &diagnostic.hint {
-            Some(hint) => text.push_str(&format!("  type: {hint}\n")),
-            None => text.push_str(&format!("  remedy: {}\n", diagnostic.code.remedy())),
+            Some(hint) => text.push_str(&self.wrap(&format!("hint: {hint}"))),
+            None => text.push_str(&self.wrap(&format!("remedy: {}", diagnostic.code.remedy()))),
         }
         text.push('\n');
         text
     }
 
+    /// Words in lines of the width, each set in by two columns. A word that is longer stays whole.
+    fn wrap(self, words: &str) -> String {
+        let width = self.columns();
+        let mut text = String::new();
+        let mut used = 0;
+        for word in words.split(' ') {
+            let length = word.chars().count();
+            if used == 0 || used + 1 + length > width {
+                text.push_str(if used == 0 { "  " } else { "\n  " });
+                used = 2 + length;
+            } else {
+                text.push(' ');
+                used += 1 + length;
+            }
+            text.push_str(word);
+        }
+        text.push('\n');
+        text
+    }
+
+    fn columns(self) -> usize {
+        self.width.map_or(DEFAULT_WIDTH, usize::from)
+    }
+
     fn draw_window(self, window: &Window, severity: Severity) -> String {
         let renderer = if self.is_coloured { Renderer::styled() } else { Renderer::plain() };
-        let renderer = renderer.term_width(self.width.map_or(DEFAULT_WIDTH, usize::from));
+        let renderer = renderer.term_width(self.columns());
         let level = match severity {
             Severity::Error => Level::ERROR,
             Severity::Warning => Level::WARNING,
             Severity::Note => Level::NOTE,
         };
         let annotation = AnnotationKind::Primary.span(window.start..window.end);
-        let snippet =
-            Snippet::source(window.text.as_str()).line_start(window.line).annotation(annotation);
+        let snippet = Snippet::source(window.text.as_str()).line_start(window.line).annotation(annotation);
         let drawn = renderer.render(&[annotate_snippets::Group::with_level(level).element(snippet)]);
         drawn.lines().map(|line| format!("  {}\n", line.trim_end())).collect()
     }

@@ -140,16 +140,16 @@ pub fn classify_bytes(file: &str, bytes: &[u8], settings: &Settings) -> Vec<Mate
             is_wanted(&block.name) && (settings.block.is_some() || block.is_structure || !any_structure)
         })
         .map(|block| {
-            let mut classification = match block.unit {
-                Ok(unit) => classify_unit(&unit, settings),
-                Err(refusal) => Classification::refused(refusal),
+            let mut classification = match &block.unit {
+                Ok(unit) => classify_unit(unit, settings),
+                Err(refusal) => Classification::refused(refusal.clone()),
             };
             let mut diagnostics = std::mem::take(&mut first_diagnostics);
-            diagnostics.extend(block.diagnostics);
-            let located = |found: Diagnostic| found.located(&block.site_spans);
-            diagnostics.extend(std::mem::take(&mut classification.diagnostics).into_iter().map(located));
+            diagnostics.extend(block.diagnostics.iter().cloned());
+            let found = std::mem::take(&mut classification.diagnostics);
+            diagnostics.extend(found.into_iter().map(|found| block.locate(found)));
             classification.diagnostics = diagnostics;
-            classification.outcome = classification.outcome.map_err(located);
+            classification.outcome = classification.outcome.map_err(|refusal| block.locate(refusal));
             material(&block.name, classification)
         })
         .collect()

@@ -83,7 +83,11 @@ fn read_parameter(block: &Block<'_>, tags: Spellings) -> Result<Measured, Diagno
     }
     parse_number(text).ok_or_else(|| {
         let message = format!("{} is '{}', which is not a number", tags[0], shown(text));
-        Diagnostic::error(Code::CellNotFinite, message).at(span).hint(format!("{} {}", tags[0], meant_number(text).as_deref().unwrap_or("4.000")))
+        Diagnostic::error(Code::CellNotFinite, message).at(span).hint(format!(
+            "{} {}",
+            tags[0],
+            meant_number(text).as_deref().unwrap_or("4.000")
+        ))
     })
 }
 
@@ -117,7 +121,8 @@ pub(super) fn check_metric(
     }
     let Some(mean) = (count > 0.0).then(|| sum / count) else { return };
     let length = |i: usize| mean[(i, i)].sqrt();
-    let angle = |i: usize, j: usize| (mean[(i, j)] / (length(i) * length(j))).clamp(-1.0, 1.0).acos().to_degrees();
+    let angle =
+        |i: usize, j: usize| (mean[(i, j)] / (length(i) * length(j))).clamp(-1.0, 1.0).acos().to_degrees();
     let asked = [length(0), length(1), length(2), angle(1, 2), angle(0, 2), angle(0, 1)];
     let parameters = lattice.parameters();
     let stated = parameters.lengths.into_iter().chain(parameters.angles);
@@ -128,7 +133,16 @@ pub(super) fn check_metric(
             (value - asked[*i]).abs() > uncertainty[*i].map_or(least, |u| least.max(3.0 * u))
         })
         .collect();
-    let Some(&(first, _)) = wrong.first() else { return };
+    // The value that is furthest off is the one to look at; the nearest of its kind tells what was meant.
+    let off = |(i, value): &(usize, f64)| (value - asked[*i]).abs();
+    let worst = wrong.iter().copied().reduce(|a, b| if off(&b) > off(&a) + 1e-9 { b } else { a });
+    let Some((worst, _)) = worst else { return };
+    let is_alike = |(i, _): &&(usize, f64)| *i != worst && (*i < 3) == (worst < 3);
+    let meant = wrong
+        .iter()
+        .filter(is_alike)
+        .min_by(|a, b| off(a).total_cmp(&off(b)))
+        .map_or(asked[worst], |(_, value)| *value);
     let differences: Vec<String> = wrong
         .iter()
         .map(|(i, value)| {
@@ -142,12 +156,12 @@ pub(super) fn check_metric(
         operations.len(),
         differences.join(", ")
     );
-    let span = value_of(block, CELL[first]).map_or(block.span, |value| value.span);
-    noticed.push(
-        Diagnostic::warning(Code::CellMetric, message)
-            .at(span)
-            .hint(format!("{} {}", CELL[first][0], plain(asked[first]))),
-    );
+    let span = value_of(block, CELL[worst]).map_or(block.span, |value| value.span);
+    noticed.push(Diagnostic::warning(Code::CellMetric, message).at(span).hint(format!(
+        "{} {}",
+        CELL[worst][0],
+        plain(meant)
+    )));
 }
 
 /// A number to four places without the zeros at its end.

@@ -3,6 +3,7 @@
 use super::super::document::{Block, Table, Value};
 use super::super::number::{Measured, parse_number};
 use super::super::parse::shown;
+use super::SitePlace;
 use super::cell::{meant_number, value_of};
 use super::composition::Composition;
 use super::species::{Guess, Species, guess_element, implied_hydrogen, parse_charge, parse_species};
@@ -25,7 +26,7 @@ pub(super) struct Sites {
     /// For each site, its stated multiplicity.
     pub(super) multiplicities: Vec<Option<f64>>,
     /// For each site, where it is in the file.
-    pub(super) spans: Vec<Span>,
+    pub(super) places: Vec<SitePlace>,
     /// For each site, the standard uncertainties of its fractional coordinates.
     pub(super) uncertainties: Vec<[Option<f64>; 3]>,
     /// The first site that is said to carry hydrogen atoms without coordinates, with the words for it.
@@ -86,7 +87,7 @@ pub(super) fn read_sites(
         found
             .multiplicities
             .push(row.stated(site::MULTIPLICITY).and_then(parse_number).map(|number| number.value));
-        found.spans.push(span);
+        found.places.push(row.place(span));
         found.uncertainties.push(row.uncertainties());
     }
     noticed.extend(dropped.report(Code::SiteDropped, "a dummy, or of zero occupancy, and dropped"));
@@ -112,7 +113,8 @@ fn both_full(first: &(&str, String), assembly: &str, second: (&str, &str)) -> Di
         shown(first.0),
         shown(second.0)
     );
-    Diagnostic::error(Code::SiteAlternatives, message).hint("_atom_site_occupancy 0.5 for both, or remove one group")
+    Diagnostic::error(Code::SiteAlternatives, message)
+        .hint("_atom_site_occupancy 0.5 for both, or remove one group")
 }
 
 /// Sites of which one thing is to be said.
@@ -166,6 +168,21 @@ impl<'d, 's> Row<'_, 'd, 's> {
             .filter_map(|column| self.value(column))
             .map(|value| value.span)
             .min_by_key(|s| s.start)
+    }
+
+    fn place(&self, label: Span) -> SitePlace {
+        let at = |column: usize| self.value(column).map(|value| value.span);
+        let first = [site::FRACTIONAL, site::CARTESIAN].into_iter().find(|first| at(*first).is_some());
+        let spans: Vec<Span> = first.map_or(0..0, |first| first..first + 3).filter_map(at).collect();
+        // The three numbers together where they follow each other on one line.
+        let position = match spans.as_slice() {
+            [x, y, z] if x.line == z.line && x.end <= y.start && y.end <= z.start => {
+                Span { end: z.end, ..*x }
+            }
+            [x, ..] => *x,
+            [] => label,
+        };
+        SitePlace { label, position, occupancy: at(site::OCCUPANCY), multiplicity: at(site::MULTIPLICITY) }
     }
 
     /// Standard uncertainties of the fractional coordinates.
