@@ -41,7 +41,37 @@ pub fn from_hm(symbol: &str, hint: &Hint<'_>) -> Candidates {
         return found;
     }
     let wider = best_of(&all);
+    if wider.settings.is_empty() {
+        return in_unusual_cell(&key, &stated);
+    }
     if wider.fits || found.settings.is_empty() { wider } else { found }
+}
+
+/// Settings of a symbol that is not in the list, but whose elements are there with a primitive lattice, such as
+/// `F 4/m m m`, `I 1 21 1` or `B 1 1 2/m`: the operations of the primitive symbol and the translations of the letter.
+///
+/// The elements of a symbol keep the places they have without the centring. A test compares the rule with all centred
+/// symbols of the list that have such a partner.
+fn in_unusual_cell(key: &str, hint: &Hint<'_>) -> Candidates {
+    let centred = |entry: &'static Entry| -> Option<Setting> {
+        let setting = entry.setting()?;
+        let letter = key.get(..1).filter(|letter| matches!(*letter, "a" | "b" | "c" | "f" | "i"))?;
+        let hall = setting.hall.replacen('P', &letter.to_uppercase(), 1);
+        let found = from_hall(&hall)?;
+        let points = if letter == "f" { 4 } else { 2 };
+        let group = found.group();
+        let is_sound = group.translations() == points && group.order() == points * setting.group().order();
+        is_sound.then_some(found)
+    };
+    let rest = key.get(1..).unwrap_or_default();
+    let entries = table::by_symbol(&format!("p{rest}"));
+    let agreed: Vec<&Entry> = entries.iter().copied().filter(|entry| entry.agrees(hint)).collect();
+    let settings: Vec<Setting> =
+        if agreed.is_empty() { entries } else { agreed }.into_iter().filter_map(centred).collect();
+    let fits_lattice = |setting: &&Setting| hint.lattice.is_none_or(|lattice| setting.group().fits(lattice));
+    let fitting: Vec<Setting> = settings.iter().filter(fits_lattice).cloned().collect();
+    let fits = !fitting.is_empty();
+    Candidates { settings: if fits { fitting } else { settings }, fits }
 }
 
 /// The settings of a number of the International Tables, the standard one first: unique axis b, cell choice 1,
@@ -257,6 +287,53 @@ mod tests {
             let hint = Hint { lattice: Some(cell), ..Hint::default() };
             assert_eq!(hall_numbers(symbol, &hint)[0], expected, "{symbol}");
         }
+    }
+
+    #[test]
+    fn unusual_cells_have_the_operations_of_their_primitive_symbol() {
+        // Hall symbols by hand: the letter of the lattice before the elements of the primitive symbol.
+        for (symbol, hall) in [
+            ("F 4/m m m", "-F 4 2"),
+            ("C 4 2 2", "C 4 2"),
+            ("C -4 2 m", "C -4 2"),
+            ("I 1 21 1", "I 2yb"),
+            ("C 1 21 1", "C 2yb"),
+            ("C 1 1 21", "C 2c"),
+            ("F 1 2/m 1", "-F 2y"),
+            ("A b a m", "-A 2 2ab"),
+        ] {
+            let found = from_hm(symbol, &Hint::default());
+            let expected = from_hall(hall).expect("a Hall symbol");
+            assert_eq!(found.settings.len(), 1, "{symbol}");
+            assert!(found.settings[0].group().equals(expected.group()), "{symbol}");
+        }
+        assert!(from_hm("F 41/d d m q", &Hint::default()).settings.is_empty());
+    }
+
+    #[test]
+    fn the_rule_for_unusual_cells_holds_for_the_usual_ones() {
+        let mut compared = 0;
+        let mut wrong = Vec::new();
+        for entry in (1..=230).flat_map(table::by_number) {
+            let Some(listed) = entry.setting() else { continue };
+            let symbol = listed.hm.split(':').next().unwrap_or_default();
+            let key = compact(symbol);
+            if !key.starts_with(['a', 'b', 'c', 'f', 'i']) {
+                continue;
+            }
+            let hint = Hint::default();
+            let derived = in_unusual_cell(&key, &hint).settings;
+            if derived.is_empty() {
+                continue;
+            }
+            compared += 1;
+            let is_same = |own: &Setting| own.group().equals_up_to_origin(listed.group());
+            if !derived.iter().all(is_same) {
+                wrong.push(format!("{} {}", listed.hm, derived[0].hall));
+            }
+        }
+        assert!(compared > 100, "{compared}");
+        assert!(wrong.is_empty(), "{} of {compared}: {wrong:?}", wrong.len());
     }
 
     #[test]
