@@ -34,7 +34,7 @@ pub(super) struct Arguments {
     /// Form of the answer
     #[arg(long, value_enum, default_value_t = Format::Text, help_heading = "Output")]
     format: Format,
-    /// Colours: on a terminal, always, or never; NO_COLOR in the environment turns `auto` off
+    /// Colours: on a terminal, always, or never; `NO_COLOR` in the environment turns `auto` off
     #[arg(long, value_enum, value_name = "WHEN", default_value_t = Colour::Auto, help_heading = "Output")]
     color: Colour,
     /// Write to this file in place of stdout

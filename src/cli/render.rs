@@ -79,7 +79,11 @@ impl Drawing {
         let annotation = AnnotationKind::Primary.span(window.start..window.end);
         let snippet = Snippet::source(window.text.as_str()).line_start(window.line).annotation(annotation);
         let drawn = renderer.render(&[annotate_snippets::Group::with_level(level).element(snippet)]);
-        drawn.lines().map(|line| format!("  {}\n", line.trim_end())).collect()
+        let mut text = String::with_capacity(drawn.len() + 16);
+        for line in drawn.lines() {
+            text.extend(["  ", line.trim_end(), "\n"]);
+        }
+        text
     }
 
     fn paint(self, severity: Severity, text: &str) -> String {

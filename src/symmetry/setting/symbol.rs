@@ -1,7 +1,9 @@
 //! Hermann-Mauguin symbols and numbers, in the spellings of files.
 
+use super::affine::{UNIT, parse_affine};
 use super::table::{self, Entry};
 use super::{Candidates, Hint, Setting, from_hall};
+use nalgebra::{Matrix3, Vector3};
 
 /// The settings a Hermann-Mauguin symbol may mean.
 ///
@@ -20,7 +22,7 @@ use super::{Candidates, Hint, Setting, from_hall};
 /// ```
 #[must_use]
 pub fn from_hm(symbol: &str, hint: &Hint<'_>) -> Candidates {
-    let Some((key, code)) = split_code(symbol) else { return Candidates::default() };
+    let Some((key, code)) = split_code(symbol) else { return with_change(symbol, hint) };
     if let Some(setting) = centred_triclinic(&key) {
         return Candidates { settings: vec![setting], fits: true };
     }
@@ -45,6 +47,40 @@ pub fn from_hm(symbol: &str, hint: &Hint<'_>) -> Candidates {
         return in_unusual_cell(&key, &stated);
     }
     if wider.fits || found.settings.is_empty() { wider } else { found }
+}
+
+/// Settings of a symbol with a change of basis and origin after it, such as `P 42/m m c (a,b+1/2,c)`: the new basis vectors
+/// in terms of the old ones, with the new origin. Programs differ in the sign of the origin, so a symbol is known only
+/// if both signs give the same operations.
+fn with_change(symbol: &str, hint: &Hint<'_>) -> Candidates {
+    let changed = |front: &str, words: &str| -> Option<Candidates> {
+        let text = words.trim().strip_suffix(')')?.to_lowercase();
+        if !text.contains('a') || text.contains(['x', 'y', 'z']) {
+            return None;
+        }
+        let change = parse_affine(&text.replace('a', "x").replace('b', "y").replace('c', "z")).ok()?;
+        let unit = f64::from(UNIT);
+        let basis = Matrix3::from_fn(|i, j| f64::from(change.linear[j][i]) / unit);
+        let inverse = basis.try_inverse()?;
+        let origin = inverse * Vector3::from_fn(|i, _| f64::from(change.shift[i]) / unit);
+        let as_text = |sign: f64| {
+            let row = |i: usize| {
+                let [x, y, z] = [0, 1, 2].map(|j| inverse[(i, j)]);
+                format!("{x:+.6}*x{y:+.6}*y{z:+.6}*z{:+.6}", sign * origin[i])
+            };
+            [row(0), row(1), row(2)].join(",")
+        };
+        let known = from_hm(front, &Hint { lattice: None, ..*hint }).settings;
+        let settings = known.iter().filter(|setting| !setting.hall.contains('(')).filter_map(|setting| {
+            let made = |sign| from_hall(&format!("{} ({})", setting.hall, as_text(sign)));
+            let (one, other) = (made(-1.0)?, made(1.0)?);
+            one.group().equals(other.group()).then_some(one)
+        });
+        let settings: Vec<Setting> = settings.collect();
+        let fits = hint.lattice.is_none_or(|lattice| settings.iter().any(|s| s.group().fits(lattice)));
+        Some(Candidates { settings, fits })
+    };
+    symbol.split_once('(').and_then(|(front, words)| changed(front, words)).unwrap_or_default()
 }
 
 /// Settings of a symbol that is not in the list, but whose elements are there with a primitive lattice, such as
@@ -261,7 +297,9 @@ mod tests {
 
     #[test]
     fn unknown_symbols_have_no_settings() {
-        for symbol in ["", "P", "Q 1", "P 42/m m c (a,b+1/2,c)", "P 7", "H", ":2", "P a -3 m 1"] {
+        for symbol in
+            ["", "P", "Q 1", "P 42/m m c (a,b+1/4,c)", "P 42/m m c (a,b+q,c)", "P 7", "H", ":2", "P a -3 m 1"]
+        {
             assert!(from_hm(symbol, &Hint::default()).settings.is_empty(), "{symbol}");
         }
     }
@@ -308,6 +346,23 @@ mod tests {
             assert!(found.settings[0].group().equals(expected.group()), "{symbol}");
         }
         assert!(from_hm("F 41/d d m q", &Hint::default()).settings.is_empty());
+    }
+
+    #[test]
+    fn a_change_of_basis_is_carried_out() {
+        for (symbol, hall) in [
+            ("P 42/m m c (a,b+1/2,c)", "-P 4c 2 (x,y+1/2,z)"),
+            // A cell of twice the volume; by hand: International Tables, volume A, group 139, extended symbols.
+            ("I 4/m m m (a-b,a+b,c)", "-F 4 2"),
+            // The glide by c/2 becomes one by (a + c)/2, and one by a/2, of the new axes. By hand.
+            ("P 1 21/c 1 (-a-c,b,a)", "-P 2yn"),
+            ("P 1 21/c 1 (c,b,-a-c)", "-P 2yab"),
+        ] {
+            let found = from_hm(symbol, &Hint::default()).settings;
+            assert_eq!(found.len(), 1, "{symbol}");
+            let expected = from_hall(hall).expect("a Hall symbol");
+            assert!(found[0].group().equals(expected.group()), "{symbol}");
+        }
     }
 
     #[test]
