@@ -349,6 +349,19 @@ mod tests {
     }
 
     #[test]
+    fn split_sites_are_kept_apart() {
+        // 0.02 of an axis of 3.25 Å is 0.065 Å: a full atom is on the axis, a third of an atom is beside it.
+        for (occupancy, expected) in [(1.0, 1), (0.3333, 3)] {
+            let mut zinc = site("Zn1", "Zn", [0.0, 0.01, 0.0]);
+            zinc.occupancy = occupancy;
+            let unit = AsymmetricUnit { lattice: hexagonal(), sites: vec![zinc], operations: threefold() };
+            let (crystal, noticed) = unit.expand(&ExpandTolerance::default()).expect("no clash");
+            assert_eq!(crystal.sites.len(), expected);
+            assert_eq!(noticed.iter().any(|found| found.code == Code::SiteRounded), expected == 1);
+        }
+    }
+
+    #[test]
     fn general_position_gives_three() {
         let unit = AsymmetricUnit {
             lattice: hexagonal(),
