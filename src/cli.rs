@@ -1,11 +1,13 @@
 //! The command line: what may be typed, and what is done with it.
 
+mod check;
 mod classify;
 mod common;
 mod enumerate;
 mod exit;
 mod facets;
 mod output;
+mod render;
 
 pub use exit::Exit;
 
@@ -30,6 +32,8 @@ enum Task {
     Enumerate(enumerate::Arguments),
     /// Survey planes: layers, terminations, bound charge, and what cures it
     Facets(facets::Arguments),
+    /// Say what is wrong or suspicious in files, with line, column and what to type
+    Check(check::Arguments),
 }
 
 /// The definition of the command line, from which the manual pages are made.
@@ -54,6 +58,7 @@ pub fn run() -> Exit {
         Task::Classify(arguments) => classify::run(arguments),
         Task::Enumerate(arguments) => enumerate::run(arguments),
         Task::Facets(arguments) => facets::run(arguments),
+        Task::Check(arguments) => check::run(arguments),
     };
     outcome.unwrap_or_else(|error| {
         if output::is_broken_pipe(&error) {

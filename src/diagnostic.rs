@@ -62,12 +62,16 @@ pub struct Diagnostic {
     /// Something that can be typed to get further.
     #[serde(skip_serializing_if = "Option::is_none")]
     pub hint: Option<String>,
+    /// The listed site it is about, counted from zero, as long as nobody has said where that is in the file.
+    #[serde(skip)]
+    #[schemars(skip)]
+    pub site: Option<usize>,
 }
 
 impl Diagnostic {
     /// A finding of the given severity.
     pub fn new(severity: Severity, code: Code, message: impl Into<String>) -> Self {
-        Self { code, severity, span: None, message: message.into(), hint: None }
+        Self { code, severity, span: None, message: message.into(), hint: None, site: None }
     }
 
     /// A finding that stops the work on this material.
@@ -89,6 +93,13 @@ impl Diagnostic {
     #[must_use]
     pub fn at(mut self, span: Span) -> Self {
         self.span = Some(span);
+        self
+    }
+
+    /// The same finding about a listed site.
+    #[must_use]
+    pub fn about(mut self, site: usize) -> Self {
+        self.site = Some(site);
         self
     }
 

@@ -14,7 +14,7 @@ use super::parse::parse;
 use crate::cell::Lattice;
 use crate::crystal::{AsymmetricUnit, Element, ExpandTolerance, Operation, Site};
 use crate::diagnostic::{Code, Diagnostic, Span};
-use cell::{has_cell, optional_number, read_cell, value_of};
+use cell::{check_metric, has_cell, optional_number, read_cell, value_of};
 use composition::Composition;
 use sites::{Sites, has_sites, read_sites};
 use symmetry::read_symmetry;
@@ -23,8 +23,6 @@ use tags::{
     OPERATIONS, SUPERSPACE, Spellings,
 };
 
-/// Images of a site nearer than this, in Å, are on one special position when multiplicities are counted.
-const SAME_POSITION: f64 = 0.1;
 /// Formula units per cell may differ from the stated number by this fraction.
 const UNITS_TOLERANCE: f64 = 0.02;
 
@@ -48,6 +46,10 @@ pub struct BlockReading {
     pub formula_units: Option<f64>,
     /// Standard uncertainties of a, b, c, alpha, beta, gamma.
     pub cell_uncertainty: [Option<f64>; 6],
+    /// Where each listed site is in the file, in the order of the sites of `unit`.
+    pub site_places: Vec<SitePlace>,
+    /// Standard uncertainties of the fractional coordinates of each listed site, in the order of the sites of `unit`.
+    pub site_uncertainty: Vec<[Option<f64>; 3]>,
     /// Everything noticed but the refusal.
     pub diagnostics: Vec<Diagnostic>,
 }
@@ -101,6 +103,8 @@ fn read_block(document: &Document<'_>, block: &Block<'_>) -> BlockReading {
         formula_sum: value_of(block, FORMULA_SUM).and_then(Value::stated).map(str::to_owned),
         formula_units: optional_number(block, FORMULA_UNITS, &mut diagnostics).filter(|units| *units > 0.0),
         cell_uncertainty: [None; 6],
+        site_places: Vec::new(),
+        site_uncertainty: Vec::new(),
         diagnostics: Vec::new(),
     };
     if reading.is_structure {
@@ -122,6 +126,8 @@ fn read_unit(
     reading.cell_uncertainty = uncertainty;
     let formula = reading.formula_sum.as_deref().and_then(Composition::parse);
     let found = read_sites(block, &lattice, formula.as_ref(), noticed)?;
+    reading.site_places.clone_from(&found.places);
+    reading.site_uncertainty.clone_from(&found.uncertainties);
     let evidence = Evidence {
         lattice: &lattice,
         found: &found,
@@ -132,7 +138,12 @@ fn read_unit(
         read_symmetry(block, document.source, &lattice, |operations| evidence.misfit(operations), noticed);
     reading.stated = stated;
     let operations = operations?;
-    evidence.check(block, &operations, noticed)?;
+    check_metric(block, &lattice, &uncertainty, &operations, noticed);
+    let is_named = matches!(
+        reading.stated.source,
+        SymmetrySource::Hall | SymmetrySource::HermannMauguin | SymmetrySource::Number
+    );
+    evidence.check(block, &operations, is_named, noticed)?;
     Ok(AsymmetricUnit { lattice, sites: found.list, operations })
 }
 
@@ -167,6 +178,33 @@ struct Evidence<'a> {
     found: &'a Sites,
     formula: Option<&'a Composition>,
     units: Option<f64>,
+}
+
+/// Where the parts of a listed site are in the file.
+#[derive(Debug, Clone, Copy)]
+pub struct SitePlace {
+    /// The label, or what comes first where there is none.
+    pub label: Span,
+    /// The coordinates.
+    pub position: Span,
+    /// The occupancy, if one is given.
+    pub occupancy: Option<Span>,
+    /// The multiplicity, if one is given.
+    pub multiplicity: Option<Span>,
+}
+
+impl BlockReading {
+    /// A finding about a listed site, with the place in the file it had not been given so far.
+    #[must_use]
+    pub fn locate(&self, finding: Diagnostic) -> Diagnostic {
+        let Some(place) = finding.site.and_then(|site| self.site_places.get(site)) else { return finding };
+        let span = match finding.code {
+            Code::SiteShared | Code::SiteOverfull => place.occupancy.unwrap_or(place.label),
+            Code::SiteRounded | Code::SitesTooClose | Code::SiteListedTwice => place.position,
+            _ => place.label,
+        };
+        if finding.span.is_some() { finding } else { finding.at(span) }
+    }
 }
 
 impl Evidence<'_> {
@@ -237,6 +275,7 @@ impl Evidence<'_> {
         &self,
         block: &Block<'_>,
         operations: &[Operation],
+        is_named: bool,
         noticed: &mut Vec<Diagnostic>,
     ) -> Result<(), Diagnostic> {
         let multiplicities = self.multiplicities(operations);
@@ -252,10 +291,15 @@ impl Evidence<'_> {
                 multiplicities[first],
                 self.found.multiplicities[first].unwrap_or_default()
             );
-            noticed.push(Diagnostic::warning(Code::SiteMultiplicity, message).at(self.found.spans[first]));
+            let place = &self.found.places[first];
+            noticed.push(
+                Diagnostic::warning(Code::SiteMultiplicity, message)
+                    .at(place.multiplicity.unwrap_or(place.label))
+                    .hint(multiplicities[first].to_string()),
+            );
         }
         let made = self.composition(&multiplicities);
-        let units = self.check_formula(block, &made, noticed)?;
+        let units = self.check_formula(block, &made, is_named, noticed)?;
         let has_hydrogen = made.amount(Element::HYDROGEN) > 0.0;
         if let Some(attached) = &self.found.attached {
             let is_complete = units.is_some() || has_hydrogen && self.formula.is_none();
@@ -271,6 +315,7 @@ impl Evidence<'_> {
         &self,
         block: &Block<'_>,
         made: &Composition,
+        is_named: bool,
         noticed: &mut Vec<Diagnostic>,
     ) -> Result<Option<f64>, Diagnostic> {
         let Some(formula) = self.formula else { return Ok(None) };
@@ -283,6 +328,15 @@ impl Evidence<'_> {
             return Err(Diagnostic::error(Code::SiteHydrogenMissing, message).at(span));
         }
         match (units, self.units) {
+            (None, _) if is_named => {
+                let message = format!(
+                    "the sites make up {made} in the cell, no multiple of the formula {formula}; the operations come from a \
+                     name alone, which may mean another setting than the sites are in"
+                );
+                return Err(Diagnostic::error(Code::SymmetryDoubtful, message)
+                    .at(span)
+                    .hint("_space_group_symop_operation_xyz with one operation per line"));
+            }
             (None, _) => {
                 let message =
                     format!("the sites make up {made} in the cell, no multiple of the formula {formula}");
@@ -304,13 +358,14 @@ impl Evidence<'_> {
 
 #[allow(clippy::cast_precision_loss, reason = "group orders are small")]
 fn multiplicity(lattice: &Lattice, operations: &[Operation], site: &Site) -> f64 {
-    let limits = lattice.face_distances().map(|distance| SAME_POSITION / distance);
+    let same_position = ExpandTolerance::default().merge_of(site);
+    let limits = lattice.face_distances().map(|distance| same_position / distance);
     let fixing = operations
         .iter()
         .filter(|operation| {
             let offset = (operation.apply(&site.position) - site.position).map(|x| x - x.round());
             (0..3).all(|i| offset[i].abs() <= limits[i])
-                && lattice.to_cartesian(&offset).norm() <= SAME_POSITION
+                && lattice.to_cartesian(&offset).norm() <= same_position
         })
         .count();
     operations.len().max(1) as f64 / fixing.max(1) as f64

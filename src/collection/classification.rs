@@ -164,14 +164,16 @@ pub fn classify_bytes(file: &str, bytes: &[u8], settings: &Settings) -> Vec<Mate
             is_wanted(&block.name) && (settings.block.is_some() || block.is_structure || !any_structure)
         })
         .map(|block| {
-            let mut classification = match block.unit {
-                Ok(unit) => classify_unit(&unit, settings),
-                Err(refusal) => Classification::refused(refusal),
+            let mut classification = match &block.unit {
+                Ok(unit) => classify_unit(unit, settings),
+                Err(refusal) => Classification::refused(refusal.clone()),
             };
             let mut diagnostics = std::mem::take(&mut first_diagnostics);
-            diagnostics.extend(block.diagnostics);
-            diagnostics.append(&mut classification.diagnostics);
+            diagnostics.extend(block.diagnostics.iter().cloned());
+            let found = std::mem::take(&mut classification.diagnostics);
+            diagnostics.extend(found.into_iter().map(|found| block.locate(found)));
             classification.diagnostics = diagnostics;
+            classification.outcome = classification.outcome.map_err(|refusal| block.locate(refusal));
             material(&block.name, classification)
         })
         .collect()
@@ -304,6 +306,7 @@ fn refuse_shared(crystal: &Crystal) -> Result<(), Diagnostic> {
     if crystal.is_ordered() {
         return Ok(());
     }
+    let first = crystal.sites.iter().position(|site| !site.is_full()).unwrap_or(0);
     let mut seen = BTreeSet::new();
     let mut names: Vec<String> = crystal
         .sites
@@ -322,5 +325,6 @@ fn refuse_shared(crystal: &Crystal) -> Result<(), Diagnostic> {
              {}{more}",
             names.join(", ")
         ),
-    ))
+    )
+    .about(crystal.origins[first]))
 }

@@ -68,6 +68,7 @@ codes! {
     CellNotFinite = "cell-002", "a cell length or angle is not a finite number", "correct the value";
     CellDegenerate = "cell-003", "the cell has no volume, or lengths or angles out of range", "correct the cell parameters";
     CellVolume = "cell-004", "the stated volume is not that of the cell parameters", "correct the value that was mistyped";
+    CellMetric = "cell-005", "the cell parameters differ from what the symmetry asks for by more than their uncertainty", "correct the cell parameter, or the symmetry";
     // Sites.
     SitesMissing = "site-001", "there are no atom sites", "add an _atom_site_ loop with fractional coordinates";
     SitePositionInvalid = "site-002", "a coordinate is missing or is not a finite number", "correct the coordinate";
@@ -86,6 +87,8 @@ codes! {
     SiteDisorder = "site-015", "a site of a disorder group is fully occupied", "state its occupancy";
     SiteOxidation = "site-016", "the oxidation numbers of the file contradict each other, or cannot be read", "keep the one that is right";
     SiteCartesian = "site-017", "positions were read from Cartesian coordinates", "add _atom_site_fract_x, _y and _z";
+    SiteRounded = "site-018", "a site near a special position was set to it", "write the coordinates of the special position with more digits";
+    SiteAlternatives = "site-019", "sites of alternative groups of one disorder assembly are all fully occupied", "keep the sites of one group, or state their occupancies";
     // Symmetry.
     SymmetryMissing = "symmetry-001", "the file states no symmetry", "add the operations, or a space-group symbol";
     SymmetryUnknown = "symmetry-002", "a space-group symbol or number is not known", "give the operations as _space_group_symop_operation_xyz";
@@ -101,6 +104,7 @@ codes! {
     SymmetryModulated = "symmetry-011", "the structure is modulated", "use the average structure or an approximant";
     SymmetryMagnetic = "symmetry-012", "the symmetry is stated for the magnetic structure alone", "give the operations of the crystal structure";
     SymmetryMetric = "symmetry-013", "the symmetry does not fit the cell parameters", "correct the cell or the symmetry";
+    SymmetryDoubtful = "symmetry-014", "the operations of a space-group name do not make the stated formula of the sites", "give the operations as _space_group_symop_operation_xyz";
     // Charges.
     ChargeSyntax = "charge-001", "a charge given on the command line cannot be read", "write --charges 'Ta=5,K=1,O=-2'";
     ChargeUnknownSite = "charge-002", "a charge was given for an element or label that the structure does not have", "use one of the labels the message lists";

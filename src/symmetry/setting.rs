@@ -16,6 +16,7 @@
 //! and say so.
 
 mod affine;
+mod derived;
 mod group;
 mod hall;
 mod symbol;

@@ -98,9 +98,21 @@ fn bad_files_show_their_codes() {
         let reading = read_bytes(&bytes);
         let blocks = reading.blocks.iter();
         blocks.clone().for_each(|block| assert_sound(block, bytes.len()));
+        let expanded: Vec<Diagnostic> = blocks
+            .clone()
+            .filter_map(|block| Some((block, block.unit.as_ref().ok()?)))
+            .flat_map(|(block, unit)| {
+                let noticed = match unit.expand(&ExpandTolerance::default()) {
+                    Ok((_, noticed)) => noticed,
+                    Err(refusal) => vec![refusal],
+                };
+                noticed.into_iter().map(|finding| block.locate(finding))
+            })
+            .collect();
         let findings: Vec<&Diagnostic> = reading
             .diagnostics
             .iter()
+            .chain(&expanded)
             .chain(blocks.flat_map(|block| block.diagnostics.iter().chain(block.unit.as_ref().err())))
             .collect();
         let own: Vec<_> = findings.iter().filter(|finding| finding.code.as_str() == code).collect();
@@ -113,7 +125,6 @@ fn bad_files_show_their_codes() {
     }
     // The codes that other parts of the program give out.
     let of_others = [
-        Code::SitesTooClose,
         Code::SiteShared,
         Code::SiteOverfull,
         Code::SiteTooMany,

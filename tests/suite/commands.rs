@@ -7,7 +7,7 @@ use std::path::{Path, PathBuf};
 const ROOT: &str = env!("CARGO_MANIFEST_DIR");
 
 /// Exit status, stdout and stderr of one run in the root of the repository.
-fn run(arguments: &[&str], stdin: &str) -> (i32, String, String) {
+pub(crate) fn run(arguments: &[&str], stdin: &str) -> (i32, String, String) {
     let output = cargo_bin_cmd!("cosetta")
         .current_dir(ROOT)
         .args(arguments)

@@ -5,10 +5,14 @@ use super::super::number::{Measured, parse_number};
 use super::super::parse::shown;
 use super::tags::{CELL, CELL_VOLUME, Spellings};
 use crate::cell::{CellParameters, Lattice, LatticeError};
+use crate::crystal::Operation;
 use crate::diagnostic::{Code, Diagnostic, Span};
+use nalgebra::Matrix3;
 
 /// The stated volume may differ from that of the cell by this fraction.
 const VOLUME_TOLERANCE: f64 = 0.01;
+/// Lengths in Å and angles in degrees may differ from those of the lattice system by this.
+const METRIC_TOLERANCE: [f64; 2] = [1e-3, 0.02];
 
 /// Names of the parameters, in the order of [`CELL`].
 const NAMES: [&str; 6] = ["a", "b", "c", "alpha", "beta", "gamma"];
@@ -79,7 +83,11 @@ fn read_parameter(block: &Block<'_>, tags: Spellings) -> Result<Measured, Diagno
     }
     parse_number(text).ok_or_else(|| {
         let message = format!("{} is '{}', which is not a number", tags[0], shown(text));
-        Diagnostic::error(Code::CellNotFinite, message).at(span).hint(format!("{} 4.000", tags[0]))
+        Diagnostic::error(Code::CellNotFinite, message).at(span).hint(format!(
+            "{} {}",
+            tags[0],
+            meant_number(text).as_deref().unwrap_or("4.000")
+        ))
     })
 }
 
@@ -92,6 +100,82 @@ fn refusal(block: &Block<'_>, error: &LatticeError) -> Diagnostic {
     };
     let span = value_of(block, CELL[index]).map_or(block.span, |value| value.span);
     Diagnostic::error(code, error.to_string()).at(span)
+}
+
+/// Reports parameters that differ from the ones the operations ask for: the mean of the metric over all of them.
+/// Lengths may differ by 0.001 Å and angles by 0.02°, or by three standard uncertainties, which covers rounding.
+pub(super) fn check_metric(
+    block: &Block<'_>,
+    lattice: &Lattice,
+    uncertainty: &[Option<f64>; 6],
+    operations: &[Operation],
+    noticed: &mut Vec<Diagnostic>,
+) {
+    let metric = lattice.basis().transpose() * lattice.basis();
+    let mut sum = Matrix3::zeros();
+    let mut count = 0.0;
+    for operation in operations {
+        let rotation = operation.rotation.cast::<f64>();
+        sum += rotation.transpose() * metric * rotation;
+        count += 1.0;
+    }
+    let Some(mean) = (count > 0.0).then(|| sum / count) else { return };
+    let length = |i: usize| mean[(i, i)].sqrt();
+    let angle =
+        |i: usize, j: usize| (mean[(i, j)] / (length(i) * length(j))).clamp(-1.0, 1.0).acos().to_degrees();
+    let asked = [length(0), length(1), length(2), angle(1, 2), angle(0, 2), angle(0, 1)];
+    let parameters = lattice.parameters();
+    let stated = parameters.lengths.into_iter().chain(parameters.angles);
+    let wrong: Vec<(usize, f64)> = stated
+        .enumerate()
+        .filter(|(i, value)| {
+            let least = if *i < 3 { METRIC_TOLERANCE[0] } else { METRIC_TOLERANCE[1] };
+            (value - asked[*i]).abs() > uncertainty[*i].map_or(least, |u| least.max(3.0 * u))
+        })
+        .collect();
+    // The value that is furthest off is the one to look at; the nearest of its kind tells what was meant.
+    let off = |(i, value): &(usize, f64)| (value - asked[*i]).abs();
+    let worst = wrong.iter().copied().reduce(|a, b| if off(&b) > off(&a) + 1e-9 { b } else { a });
+    let Some((worst, _)) = worst else { return };
+    let is_alike = |(i, _): &&(usize, f64)| *i != worst && (*i < 3) == (worst < 3);
+    let meant = wrong
+        .iter()
+        .filter(is_alike)
+        .min_by(|a, b| off(a).total_cmp(&off(b)))
+        .map_or(asked[worst], |(_, value)| *value);
+    let differences: Vec<String> = wrong
+        .iter()
+        .map(|(i, value)| {
+            let unit = if *i < 3 { "Å" } else { "°" };
+            let (value, asked) = (plain(*value), plain(asked[*i]));
+            format!("{} is {value} {unit} and should be near {asked} {unit}", NAMES[*i])
+        })
+        .collect();
+    let message = format!(
+        "the cell does not have the shape that the {} symmetry operations ask for: {}; it was used as it is",
+        operations.len(),
+        differences.join(", ")
+    );
+    let span = value_of(block, CELL[worst]).map_or(block.span, |value| value.span);
+    noticed.push(Diagnostic::warning(Code::CellMetric, message).at(span).hint(format!(
+        "{} {}",
+        CELL[worst][0],
+        plain(meant)
+    )));
+}
+
+/// A number to four places without the zeros at its end.
+fn plain(number: f64) -> String {
+    let text = format!("{number:.4}");
+    text.trim_end_matches('0').trim_end_matches('.').to_owned()
+}
+
+/// The number somebody probably meant: a comma for the point, a unit after the number, letters for digits.
+pub(super) fn meant_number(text: &str) -> Option<String> {
+    let text = text.trim().replace(',', ".").replace(['O', 'o'], "0").replace(['l', 'I'], "1");
+    let end = text.rfind(|c: char| c.is_ascii_digit() || matches!(c, '.' | ')')).map_or(0, |at| at + 1);
+    let text = text[..end].trim();
+    parse_number(text).map(|_| text.to_owned())
 }
 
 fn place(name: &str) -> usize {
@@ -114,7 +198,8 @@ fn check_volume(block: &Block<'_>, lattice: &Lattice, noticed: &mut Vec<Diagnost
                     VOLUME_TOLERANCE * 100.0
                 ),
             )
-            .at(span),
+            .at(span)
+            .hint(format!("{} {found:.3}", CELL_VOLUME[0])),
         );
     }
 }

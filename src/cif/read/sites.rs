@@ -3,7 +3,8 @@
 use super::super::document::{Block, Table, Value};
 use super::super::number::{Measured, parse_number};
 use super::super::parse::shown;
-use super::cell::value_of;
+use super::SitePlace;
+use super::cell::{meant_number, value_of};
 use super::composition::Composition;
 use super::species::{Guess, Species, guess_element, implied_hydrogen, parse_charge, parse_species};
 use super::tags::{ATOM_TYPE, CARTESIAN_MATRIX, CARTESIAN_VECTOR, SITE, site};
@@ -25,7 +26,9 @@ pub(super) struct Sites {
     /// For each site, its stated multiplicity.
     pub(super) multiplicities: Vec<Option<f64>>,
     /// For each site, where it is in the file.
-    pub(super) spans: Vec<Span>,
+    pub(super) places: Vec<SitePlace>,
+    /// For each site, the standard uncertainties of its fractional coordinates.
+    pub(super) uncertainties: Vec<[Option<f64>; 3]>,
     /// The first site that is said to carry hydrogen atoms without coordinates, with the words for it.
     pub(super) attached: Option<Diagnostic>,
 }
@@ -55,6 +58,8 @@ pub(super) fn read_sites(
     let mut found = Sites::default();
     let mut dropped = Gathered::default();
     let mut disordered = Gathered::default();
+    // For each disorder assembly, the group and the label of its first fully occupied site.
+    let mut alternatives: HashMap<&str, (&str, String)> = HashMap::new();
     for row in 0..table.rows() {
         let row = Row { table: &table, row };
         let span = row.span().unwrap_or(block.span);
@@ -66,8 +71,13 @@ pub(super) fn read_sites(
             continue;
         }
         let (species, oxidation) = row.species(&label, &types, formula.as_ref())?;
-        if row.stated(site::DISORDER_GROUP).is_some() && occupancy >= 1.0 {
+        if let Some(group) = row.stated(site::DISORDER_GROUP).filter(|_| occupancy >= Site::FULL_OCCUPANCY) {
             disordered.add(&label, span);
+            let assembly = row.stated(site::DISORDER_ASSEMBLY).unwrap_or(".");
+            let first = alternatives.entry(assembly).or_insert_with(|| (group, label.clone()));
+            if first.0 != group {
+                return Err(both_full(first, assembly, (group, &label)).at(span));
+            }
         }
         if found.attached.is_none() {
             found.attached = row.attached_hydrogens(&label, formula.as_ref());
@@ -77,7 +87,8 @@ pub(super) fn read_sites(
         found
             .multiplicities
             .push(row.stated(site::MULTIPLICITY).and_then(parse_number).map(|number| number.value));
-        found.spans.push(span);
+        found.places.push(row.place(span));
+        found.uncertainties.push(row.uncertainties());
     }
     noticed.extend(dropped.report(Code::SiteDropped, "a dummy, or of zero occupancy, and dropped"));
     noticed.extend(
@@ -89,6 +100,21 @@ pub(super) fn read_sites(
         return Err(Diagnostic::error(Code::SitesMissing, message).at(table.span().unwrap_or(block.span)));
     }
     Ok(found)
+}
+
+/// The refusal of an assembly two of whose alternatives are said to be there in every cell.
+fn both_full(first: &(&str, String), assembly: &str, second: (&str, &str)) -> Diagnostic {
+    let of = if assembly == "." { String::new() } else { format!(" of assembly {}", shown(assembly)) };
+    let message = format!(
+        "sites {} and {} are in disorder groups {} and {}{of}, of which a crystal has one at a time, but both are fully \
+         occupied",
+        shown(&first.1),
+        shown(second.1),
+        shown(first.0),
+        shown(second.0)
+    );
+    Diagnostic::error(Code::SiteAlternatives, message)
+        .hint("_atom_site_occupancy 0.5 for both, or remove one group")
 }
 
 /// Sites of which one thing is to be said.
@@ -142,6 +168,26 @@ impl<'d, 's> Row<'_, 'd, 's> {
             .filter_map(|column| self.value(column))
             .map(|value| value.span)
             .min_by_key(|s| s.start)
+    }
+
+    fn place(&self, label: Span) -> SitePlace {
+        let at = |column: usize| self.value(column).map(|value| value.span);
+        let first = [site::FRACTIONAL, site::CARTESIAN].into_iter().find(|first| at(*first).is_some());
+        let spans: Vec<Span> = first.map_or(0..0, |first| first..first + 3).filter_map(at).collect();
+        // The three numbers together where they follow each other on one line.
+        let position = match spans.as_slice() {
+            [x, y, z] if x.line == z.line && x.end <= y.start && y.end <= z.start => {
+                Span { end: z.end, ..*x }
+            }
+            [x, ..] => *x,
+            [] => label,
+        };
+        SitePlace { label, position, occupancy: at(site::OCCUPANCY), multiplicity: at(site::MULTIPLICITY) }
+    }
+
+    /// Standard uncertainties of the fractional coordinates.
+    fn uncertainties(&self) -> [Option<f64>; 3] {
+        [0, 1, 2].map(|axis| self.stated(site::FRACTIONAL + axis).and_then(parse_number)?.uncertainty)
     }
 
     fn occupancy(&self, label: &str) -> Result<f64, Diagnostic> {
@@ -309,7 +355,11 @@ fn coordinates(row: &Row<'_, '_, '_>, label: &str, first: usize) -> Result<[Meas
         };
         *number = parse_number(text).ok_or_else(|| {
             let message = format!("{tag} of site {label} is '{}', which is not a number", shown(text));
-            refuse_position(row, column, message)
+            let refusal = refuse_position(row, column, message);
+            match meant_number(text) {
+                Some(meant) => refusal.hint(meant),
+                None => refusal,
+            }
         })?;
     }
     Ok(numbers)

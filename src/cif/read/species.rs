@@ -18,6 +18,8 @@ pub(super) struct Species {
 /// The dictionary lets a file choose its symbols freely as long as they begin with the element, so a symbol whose
 /// leading letters are not an element, such as `OH`, is not guessed at.
 pub(super) fn parse_species(symbol: &str) -> Option<Species> {
+    // A mass number before the element, as in `2H` and `13C`, changes nothing here.
+    let symbol = symbol.trim_start_matches(|c: char| c.is_ascii_digit());
     let letters = leading_letters(symbol);
     let element = Element::from_symbol(letters)?;
     Some(Species { element, charge: parse_charge(&symbol[letters.len()..]) })
@@ -131,6 +133,9 @@ mod tests {
             ("CL1-", "Cl", Some(-1.0)),
             ("Si0+", "Si", Some(0.0)),
             ("D", "H", None),
+            ("2H", "H", None),
+            ("13C", "C", None),
+            ("18O2-", "O", Some(-2.0)),
             ("Fe", "Fe", None),
             ("Fe2", "Fe", None),
             ("H(SDS)", "H", None),

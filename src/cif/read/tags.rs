@@ -49,7 +49,7 @@ pub(super) const COORDINATE_SYSTEM: Spellings =
     &["_space_group_IT_coordinate_system_code", "_space_group.IT_coordinate_system_code"];
 
 /// Columns of the atom sites, by the constants in [`site`].
-pub(super) const SITE: [Spellings; 13] = [
+pub(super) const SITE: [Spellings; 14] = [
     &["_atom_site_fract_x", "_atom_site.fract_x"],
     &["_atom_site_fract_y", "_atom_site.fract_y"],
     &["_atom_site_fract_z", "_atom_site.fract_z"],
@@ -68,6 +68,7 @@ pub(super) const SITE: [Spellings; 13] = [
         "_atom_site.site_symmetry_multiplicity",
         "_atom_site.symmetry_multiplicity",
     ],
+    &["_atom_site_disorder_assembly", "_atom_site.disorder_assembly"],
 ];
 
 /// Numbers of the columns of [`SITE`].
@@ -81,6 +82,7 @@ pub(super) mod site {
     pub(in super::super) const ATTACHED_HYDROGENS: usize = 10;
     pub(in super::super) const DISORDER_GROUP: usize = 11;
     pub(in super::super) const MULTIPLICITY: usize = 12;
+    pub(in super::super) const DISORDER_ASSEMBLY: usize = 13;
 }
 
 pub(super) const ATOM_TYPE: [Spellings; 2] = [

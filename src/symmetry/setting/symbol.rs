@@ -1,7 +1,8 @@
 //! Hermann-Mauguin symbols and numbers, in the spellings of files.
 
+use super::derived::{centred_triclinic, in_unusual_cell, with_change};
 use super::table::{self, Entry};
-use super::{Candidates, Hint, Setting, from_hall};
+use super::{Candidates, Hint, Setting};
 
 /// The settings a Hermann-Mauguin symbol may mean.
 ///
@@ -20,7 +21,7 @@ use super::{Candidates, Hint, Setting, from_hall};
 /// ```
 #[must_use]
 pub fn from_hm(symbol: &str, hint: &Hint<'_>) -> Candidates {
-    let Some((key, code)) = split_code(symbol) else { return Candidates::default() };
+    let Some((key, code)) = split_code(symbol) else { return with_change(symbol, hint) };
     if let Some(setting) = centred_triclinic(&key) {
         return Candidates { settings: vec![setting], fits: true };
     }
@@ -41,6 +42,9 @@ pub fn from_hm(symbol: &str, hint: &Hint<'_>) -> Candidates {
         return found;
     }
     let wider = best_of(&all);
+    if wider.settings.is_empty() {
+        return in_unusual_cell(&key, &stated);
+    }
     if wider.fits || found.settings.is_empty() { wider } else { found }
 }
 
@@ -103,19 +107,6 @@ fn without_axes(key: &str) -> String {
         });
     }
     short
-}
-
-/// `A 1`, `I -1` and the like, which are not in the list of settings.
-fn centred_triclinic(key: &str) -> Option<Setting> {
-    let (letter, rest) = key.split_at_checked(1)?;
-    if !matches!(letter, "a" | "b" | "c" | "f" | "i" | "r") {
-        return None;
-    }
-    match rest {
-        "1" => from_hall(&format!("{letter} 1")),
-        "-1" => from_hall(&format!("-{letter} 1")),
-        _ => None,
-    }
 }
 
 /// The symbol without blanks, and the code of axes or origin stated with it. `None` when something follows that is
@@ -231,7 +222,9 @@ mod tests {
 
     #[test]
     fn unknown_symbols_have_no_settings() {
-        for symbol in ["", "P", "Q 1", "P 42/m m c (a,b+1/2,c)", "P 7", "H", ":2", "P a -3 m 1"] {
+        for symbol in
+            ["", "P", "Q 1", "P 42/m m c (a,b+1/4,c)", "P 42/m m c (a,b+q,c)", "P 7", "H", ":2", "P a -3 m 1"]
+        {
             assert!(from_hm(symbol, &Hint::default()).settings.is_empty(), "{symbol}");
         }
     }
