@@ -40,7 +40,7 @@ impl Default for Settings {
     }
 }
 
-/// Oxygen atoms of strongly tilted perovskites lie up to 0.75 Å from their places in the cubic parent (DyScO3 0.72 Å),
+/// Oxygen atoms of strongly tilted perovskites lie up to 0.75 Å from their places in the cubic parent (0.72 Å in `DyScO3`),
 /// those of rutiles 0.82 to 0.88 Å from a body-centred arrangement that nobody calls their parent.
 pub const PARENT_TOLERANCE: f64 = 0.8;
 
