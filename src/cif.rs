@@ -10,13 +10,16 @@
 //! unreadable or open to two readings.
 
 mod document;
+mod findings;
 mod lex;
 mod number;
 mod operation;
 mod parse;
 mod read;
+mod source;
+mod text;
 
-pub use document::{Block, Document, Item, Loop, Pair, Table, Tag, Value, ValueKind};
+pub use document::{Block, Document, Element, Item, Pair, Row, Table, Tag, Value, ValueKind};
 pub use lex::{Dialect, Lexer, Token, TokenKind};
 pub use number::{Measured, parse_number};
 pub use operation::{OperationError, parse_operation};

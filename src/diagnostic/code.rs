@@ -63,6 +63,16 @@ codes! {
     CifNumber = "cif-017", "a number cannot be read", "write it as 4.1163 or 4.1163(2)";
     CifNoStructure = "cif-018", "a data block holds no crystal structure", "name another block";
     CifMacromolecule = "cif-019", "a data block describes a macromolecule", "this program answers for crystals of ions";
+    CifLineLong = "cif-020", "a line is longer than the 2,048 characters the standard allows", "break the line";
+    CifNameLong = "cif-021", "a tag or the name of a block is longer than the standard allows", "use a name of at most 75 characters, or declare CIF 2.0";
+    CifCharacter = "cif-022", "the file holds a character that is not in the set of its edition of CIF", "begin the file with #\\#CIF_2.0, which allows most of Unicode, or remove the character";
+    CifListOpen = "cif-023", "a list or table is not closed", "end a list with ] and a table with }";
+    CifTableEntry = "cif-024", "an entry of a table is not a key in quotes, a colon and a value", "write it as {'key': value}";
+    CifNoBlank = "cif-025", "there is no blank between a value and what follows", "put a blank between them";
+    CifBracket = "cif-026", "a value begins with a reserved character, or a bracket closes nothing", "put the value in quotes, or remove the bracket";
+    CifProtocol = "cif-027", "a text field announces a prefix that not all of its lines have", "begin every line of the text with the prefix";
+    CifEdition = "cif-028", "the first line declares an edition of CIF that is not known", "write #\\#CIF_1.1 or #\\#CIF_2.0";
+    CifKeyRepeated = "cif-029", "a key is given twice in one table", "remove one of the two";
     // The unit cell.
     CellMissing = "cell-001", "a cell length or angle is missing", "add the six _cell_ items";
     CellNotFinite = "cell-002", "a cell length or angle is not a finite number", "correct the value";
