@@ -10,6 +10,7 @@
 //! unreadable or open to two readings.
 
 mod document;
+mod edit;
 mod findings;
 mod lex;
 mod number;
@@ -20,6 +21,7 @@ mod source;
 mod text;
 
 pub use document::{Block, Document, Element, Item, Pair, Row, Table, Tag, Value, ValueKind};
+pub use edit::{EditError, Edits};
 pub use lex::{Dialect, Lexer, Token, TokenKind};
 pub use number::{Measured, parse_number};
 pub use operation::{OperationError, parse_operation};

@@ -412,14 +412,10 @@ impl Iterator for Lexer<'_> {
             }
             match first {
                 b']' | b'}' => self.skip_stray_bracket(first),
-                b'[' | b'{' => {
-                    let token = self.compound(&mut |_| {});
-                    self.expect_blank("the bracket", false);
-                    return Some(token);
-                }
+                b'[' | b'{' => return Some(self.compound(&mut |_| {})),
                 _ => {
                     let token = self.simple(first);
-                    self.expect_blank("this value", false);
+                    self.expect_blank("this value", true);
                     return Some(token);
                 }
             }

@@ -5,6 +5,7 @@
 mod check;
 mod cif;
 mod commands;
+mod conformance;
 mod demo;
 #[cfg(feature = "spglib")]
 mod engines;

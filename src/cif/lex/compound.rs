@@ -85,11 +85,9 @@ impl<'s> Lexer<'s> {
     fn open(&mut self, first: u8, levels: &mut Vec<Level<'s>>, sink: &mut dyn FnMut(Part)) {
         let place = self.here();
         self.at += 1;
-        if let Some(level) = levels.last_mut() {
-            if level.state == State::Key {
-                let span = self.span_from(place);
-                self.report_entry(span, "a list or table in a table has no key");
-            }
+        if levels.last().is_some_and(|level| level.state == State::Key) {
+            let span = self.span_from(place);
+            self.report_entry(span, "a list or table in a table has no key");
         }
         let (kind, state) =
             if first == b'[' { (TokenKind::List, State::Element) } else { (TokenKind::Table, State::Key) };
@@ -115,8 +113,12 @@ impl<'s> Lexer<'s> {
         self.at += 1;
         let token = self.whole(&level, self.at - 1);
         sink(Part::Close(token));
+        if levels.is_empty() {
+            self.expect_blank("the bracket", true);
+            return Some(token);
+        }
         self.after_value(levels);
-        levels.is_empty().then_some(token)
+        None
     }
 
     fn whole(&self, level: &Level<'_>, end: usize) -> Token {
