@@ -200,11 +200,10 @@ def peer_once(options):
     import gemmi
 
     path = options.paths[0]
-    before = peak_memory()
     start = time.perf_counter()
     document = gemmi.cif.read_file(path)
     seconds = time.perf_counter() - start
-    print(json.dumps({"bytes": os.path.getsize(path), "seconds": seconds, "count": len(document), "before": before, "peak": peak_memory()}))
+    print(json.dumps({"bytes": os.path.getsize(path), "seconds": seconds, "count": len(document), "peak": peak_memory()}))
 
 
 def peak_memory():
