@@ -124,13 +124,12 @@ fn is_cif(path: &Path) -> bool {
 
 /// Seconds and memory (in bytes; `None` where the system does not tell) to load and handle one file.
 fn time_once(path: &Path, step: Step) -> std::io::Result<serde_json::Value> {
-    let before = peak_memory();
     let start = Instant::now();
     let bytes = std::fs::read(path)?;
     let count = step.run(&bytes);
     let seconds = start.elapsed().as_secs_f64();
     Ok(json!({
-        "bytes": bytes.len(), "seconds": seconds, "count": count, "before": before, "peak": peak_memory(),
+        "bytes": bytes.len(), "seconds": seconds, "count": count, "peak": peak_memory(),
     }))
 }
 
