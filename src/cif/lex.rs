@@ -335,9 +335,8 @@ impl<'s> Lexer<'s> {
     fn word(&mut self) -> Token {
         let place = self.here();
         let rest = &self.bytes[self.at..];
-        let is_name = rest[0] == b'_' || has_prefix(rest, b"data_") || has_prefix(rest, b"save_");
         let stop = match self.dialect {
-            Dialect::Two if !is_name => BLANK | LINE_END | BRACKET,
+            Dialect::Two if !begins_name(rest) => BLANK | LINE_END | BRACKET,
             _ => BLANK | LINE_END,
         };
         let length = self.bytes[self.at..].iter().position(|&byte| is(byte, stop));
@@ -354,9 +353,10 @@ impl<'s> Lexer<'s> {
             b'g' | b'G' if word.eq_ignore_ascii_case(b"global_") => (TokenKind::Global, 0),
             _ => (TokenKind::Bare, 0),
         };
+        let is_reserved = is(word[0], RESERVED);
         let token = Token { kind, span: self.span_from(place), start: place.start + lead, end: self.at };
-        if kind == TokenKind::Bare && is(word[0], RESERVED) {
-            self.report_reserved(&token, char::from(word[0]));
+        if kind == TokenKind::Bare && is_reserved {
+            self.report_reserved(&token, char::from(self.bytes[place.start]));
         }
         token
     }
@@ -462,6 +462,11 @@ pub(super) fn ends_name(byte: u8) -> bool {
 
 fn is(byte: u8, class: u8) -> bool {
     CLASS[usize::from(byte)] & class != 0
+}
+
+/// Whether a tag or a heading begins here; brackets are part of them.
+fn begins_name(rest: &[u8]) -> bool {
+    rest[0] == b'_' || has_prefix(rest, b"data_") || has_prefix(rest, b"save_")
 }
 
 fn has_prefix(word: &[u8], prefix: &[u8]) -> bool {

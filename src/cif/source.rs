@@ -63,12 +63,11 @@ impl Lines {
         let mark = (offset / STEP).min(self.marks.len().saturating_sub(1));
         let Some(&(line, start)) = self.marks.get(mark) else { return LineStart { line: 1, start: 0 } };
         let mut found = LineStart { line: line as usize, start: start as usize };
-        let mut at = (mark * STEP).max(found.start);
-        while at < offset {
-            let length = line_end_length(bytes, at);
-            at += length.max(1);
-            if length > 0 && at <= offset {
-                found = LineStart { line: found.line + 1, start: at };
+        let from = mark * STEP;
+        for end in memchr::memchr2_iter(b'\n', b'\r', bytes.get(from..offset).unwrap_or_default()) {
+            let end = from + end;
+            if bytes[end] == b'\n' || bytes.get(end + 1) != Some(&b'\n') {
+                found = LineStart { line: found.line + 1, start: end + 1 };
             }
         }
         found

@@ -43,7 +43,8 @@ fn cases(text: &str) -> Vec<Case> {
 }
 
 fn case(lines: &[&str], line: usize) -> Case {
-    let mut case = Case { name: lines[0][4..].trim().to_owned(), line, mode: "parse".into(), ..Case::default() };
+    let mut case =
+        Case { name: lines[0][4..].trim().to_owned(), line, mode: "parse".into(), ..Case::default() };
     let (mut line_end, mut has_escapes, mut has_end) = ("\n", false, true);
     let mut body = 1;
     while let Some(attribute) = lines.get(body).and_then(|line| line.strip_prefix("@ ")) {
@@ -56,12 +57,17 @@ fn case(lines: &[&str], line: usize) -> Case {
             ("mode", mode) => mode.clone_into(&mut case.mode),
             ("charges", charges) => case.charges = Some(charges.to_owned()),
             ("block", block) => case.block = Some(block.to_owned()),
-            ("symmetry-tolerance", length) => case.symmetry_tolerance = Some(length.parse().expect("a length")),
+            ("symmetry-tolerance", length) => {
+                case.symmetry_tolerance = Some(length.parse().expect("a length"))
+            }
             other => panic!("case '{}': unknown attribute {other:?}", case.name),
         }
         body += 1;
     }
-    let divide = lines.iter().position(|line| *line == "---").unwrap_or_else(|| panic!("case '{}': no ---", case.name));
+    let divide = lines
+        .iter()
+        .position(|line| *line == "---")
+        .unwrap_or_else(|| panic!("case '{}': no ---", case.name));
     let mut input = lines[body..divide].join(line_end);
     if has_end && divide > body {
         input.push_str(line_end);
@@ -76,7 +82,8 @@ fn case(lines: &[&str], line: usize) -> Case {
 fn unescape(text: &str) -> Vec<u8> {
     let (bytes, mut result, mut at) = (text.as_bytes(), Vec::new(), 0);
     while at < bytes.len() {
-        let digits = bytes.get(at + 1..at + 3).filter(|_| bytes[at] == b'<' && bytes.get(at + 3) == Some(&b'>'));
+        let digits =
+            bytes.get(at + 1..at + 3).filter(|_| bytes[at] == b'<' && bytes.get(at + 3) == Some(&b'>'));
         let byte = digits
             .and_then(|digits| std::str::from_utf8(digits).ok())
             .and_then(|digits| u8::from_str_radix(digits, 16).ok());
@@ -137,8 +144,10 @@ fn looped(document: &Document<'_>, table: &Table<'_, '_>) -> Vec<String> {
     let tags: Vec<String> = table.tags().flatten().map(|tag| tag.name.into_owned()).collect();
     let mut lines = vec![format!("loop {}", tags.join(" "))];
     for row in table.iter() {
-        let values: Vec<String> =
-            (0..tags.len()).filter_map(|column| row.value(column)).map(|value| shown(document, value)).collect();
+        let values: Vec<String> = (0..tags.len())
+            .filter_map(|column| row.value(column))
+            .map(|value| shown(document, value))
+            .collect();
         lines.push(format!("row {}", values.join(" | ")));
     }
     lines
@@ -157,9 +166,11 @@ fn shown(document: &Document<'_>, value: &Value<'_>) -> String {
             format!("list [{}]", members.join(", "))
         }
         ValueKind::Table => {
-            let member = |key: &str, value: &Value<'_>| format!("{}: {}", quoted(key), shown(document, value));
-            let members: Vec<String> =
-                members().map(|found| member(found.key.as_deref().unwrap_or_default(), &found.value)).collect();
+            let member =
+                |key: &str, value: &Value<'_>| format!("{}: {}", quoted(key), shown(document, value));
+            let members: Vec<String> = members()
+                .map(|found| member(found.key.as_deref().unwrap_or_default(), &found.value))
+                .collect();
             format!("table {{{}}}", members.join(", "))
         }
         _ => format!("bare {}", quoted(&value.text)),
@@ -237,14 +248,15 @@ fn classified(case: &Case) -> Vec<String> {
         match &material.classification.outcome {
             Err(refusal) => lines.push(format!("refused {}{}", refusal.code, place(refusal))),
             Ok(formal) => {
-                let offset: Vec<String> =
-                    formal.electron().offset.iter().map(ToString::to_string).collect();
+                let offset: Vec<String> = formal.electron().offset.iter().map(ToString::to_string).collect();
                 lines.push(format!("label {}", formal.label));
                 lines.push(format!("offset {}", offset.join(" ")));
             }
         }
     }
-    lines.extend(in_order(materials.iter().flat_map(|material| &material.classification.diagnostics).collect()));
+    lines.extend(in_order(
+        materials.iter().flat_map(|material| &material.classification.diagnostics).collect(),
+    ));
     lines
 }
 
@@ -262,7 +274,9 @@ fn conformance_cases() {
             assert!(case.has_source, "{file}: '{}' names no source", case.name);
             let found = found(&case);
             if found != case.expected {
-                let list = |lines: &[String]| lines.iter().fold(String::new(), |text, line| text + "    " + line + "\n");
+                let list = |lines: &[String]| {
+                    lines.iter().fold(String::new(), |text, line| text + "    " + line + "\n")
+                };
                 write!(
                     faults,
                     "tests/conformance/{file}:{}: {}\n  expected\n{}  found\n{}",
@@ -289,7 +303,9 @@ fn conformance_cases_show_every_code_of_the_reader() {
         text += &std::fs::read_to_string(&path).expect("UTF-8");
     }
     let of_reader = |code: &&Code| {
-        ["file-004", "cif-", "cell-", "site-", "symmetry-"].iter().any(|family| code.as_str().starts_with(family))
+        ["file-004", "cif-", "cell-", "site-", "symmetry-"]
+            .iter()
+            .any(|family| code.as_str().starts_with(family))
     };
     let missing: Vec<&Code> = Code::ALL
         .iter()
