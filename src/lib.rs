@@ -10,6 +10,7 @@
 //! | [`crystal`] | which atoms sit where? |
 //! | [`symmetry`] | which operations map the crystal onto itself, and where are its centres of inversion? |
 //! | [`cif`] | what does the file say? |
+//! | [`poscar`] | the same, for files of vectors and positions |
 //! | [`charge`] | which formal charge does each ion carry? |
 //! | [`polarization`] | which values are allowed, and is zero among them? |
 //! | [`facet`] | what does that mean on a plane that is cut? |
@@ -29,5 +30,6 @@ pub mod diagnostic;
 pub mod exact;
 pub mod facet;
 pub mod polarization;
+pub mod poscar;
 pub mod report;
 pub mod symmetry;

@@ -63,6 +63,15 @@ codes! {
     CifNumber = "cif-017", "a number cannot be read", "write it as 4.1163 or 4.1163(2)";
     CifNoStructure = "cif-018", "a data block holds no crystal structure", "name another block";
     CifMacromolecule = "cif-019", "a data block describes a macromolecule", "this program answers for crystals of ions";
+    // The POSCAR format.
+    PoscarShort = "poscar-001", "a POSCAR file ends before all of its lines", "complete the file: title, scale, three vectors, species, counts, Direct or Cartesian, positions";
+    PoscarNumber = "poscar-002", "a number of a POSCAR file cannot be read", "write it as 0.25 or 2.5E-1";
+    PoscarScale = "poscar-003", "the scale factor is zero, or one of three is not positive", "write 1.0, or minus the volume of the cell";
+    PoscarCounts = "poscar-004", "the line of atom counts is missing, or holds something else", "write one whole number for each species";
+    PoscarSpecies = "poscar-005", "the species line does not fit the line of counts", "write one element symbol for each count";
+    PoscarMode = "poscar-006", "the line before the positions says neither Direct nor Cartesian", "write Direct or Cartesian before the positions";
+    PoscarAnonymous = "poscar-007", "the elements of the atoms cannot be told", "write a line of element symbols before the counts";
+    PoscarLabel = "poscar-008", "the label behind a position contradicts the species line", "correct the species line or the label";
     // The unit cell.
     CellMissing = "cell-001", "a cell length or angle is missing", "add the six _cell_ items";
     CellNotFinite = "cell-002", "a cell length or angle is not a finite number", "correct the value";
