@@ -4,7 +4,7 @@ use std::fs;
 use std::path::{Path, PathBuf};
 
 /// From the ground up. A room may import from rooms before it, never from one after it.
-const ROOMS: [&str; 13] = [
+const ROOMS: [&str; 14] = [
     "diagnostic",
     "exact",
     "cell",
@@ -12,6 +12,7 @@ const ROOMS: [&str; 13] = [
     "symmetry",
     "cif",
     "poscar",
+    "optimade",
     "charge",
     "polarization",
     "facet",

@@ -6,6 +6,7 @@ mod check;
 mod cif;
 mod commands;
 mod demo;
+mod doors;
 #[cfg(feature = "spglib")]
 mod engines;
 mod enumeration;

@@ -1,0 +1,284 @@
+//! The members of an archive, one after the other, without unpacking it as a whole.
+//!
+//! Everything that is unpacked counts towards one limit per archive, so that a small file cannot fill the memory. What
+//! is wrong with one member costs that member; the rest of an archive is lost only where its own frame is damaged.
+
+use super::door::{Format, Packing, is_gzip};
+use super::input::{MAX_FILE_BYTES, Member, refuse_blank, too_large};
+use crate::diagnostic::{Code, Diagnostic};
+use flate2::read::MultiGzDecoder;
+use std::cell::Cell;
+use std::io::{self, BufReader, Read, Seek};
+use zip::result::ZipError;
+
+/// What the error says that ends a reader at the limit.
+const OVER: &str = "over the limit of bytes to unpack";
+
+/// Takes a member; an error of its own ends the walk.
+pub(super) type Take<'t, E> = dyn FnMut(Member) -> Result<(), E> + 't;
+
+/// How much may be unpacked, and how much has been.
+pub(super) struct Budget {
+    limit: u64,
+    spent: Cell<u64>,
+}
+
+/// A reader whose bytes count towards a limit.
+struct Counted<'b, R> {
+    inner: R,
+    budget: &'b Budget,
+}
+
+impl<R: Read> Read for Counted<'_, R> {
+    fn read(&mut self, buffer: &mut [u8]) -> io::Result<usize> {
+        if self.budget.is_over() {
+            return Err(io::Error::other(OVER));
+        }
+        let count = self.inner.read(buffer)?;
+        self.budget.spent.set(self.budget.spent.get().saturating_add(count as u64));
+        if self.budget.is_over() { Err(io::Error::other(OVER)) } else { Ok(count) }
+    }
+}
+
+impl Budget {
+    pub(super) fn new(limit: u64) -> Self {
+        Self { limit, spent: Cell::new(0) }
+    }
+
+    fn is_over(&self) -> bool {
+        self.spent.get() > self.limit
+    }
+
+    fn refusal(&self) -> Diagnostic {
+        let message = format!("more than {} bytes come out of it, the limit of --max-unpacked", self.limit);
+        Diagnostic::error(Code::ArchiveTooLarge, message)
+            .hint(format!("--max-unpacked {}", self.limit.saturating_mul(4)))
+    }
+
+    fn read_all(&self, reader: impl Read) -> Result<Vec<u8>, Diagnostic> {
+        let mut bytes = Vec::new();
+        let counted = Counted { inner: reader, budget: self };
+        let outcome = counted.take(MAX_FILE_BYTES + 1).read_to_end(&mut bytes);
+        // The limit may also be that of the stream below.
+        if self.is_over() || outcome.as_ref().is_err_and(is_over) {
+            return Err(self.refusal());
+        }
+        outcome.map_err(|error| damaged(&error.to_string()))?;
+        if bytes.len() as u64 > MAX_FILE_BYTES { Err(too_large(bytes.len() as u64)) } else { Ok(bytes) }
+    }
+
+    /// The content itself: without a compression with gzip, refused where it is an archive or blank.
+    pub(super) fn unwrap(&self, bytes: Vec<u8>) -> Result<Vec<u8>, Diagnostic> {
+        let bytes =
+            if is_gzip(&bytes) { self.read_all(MultiGzDecoder::new(bytes.as_slice()))? } else { bytes };
+        if is_gzip(&bytes) || Packing::of_content(&bytes).is_some() {
+            return Err(nested());
+        }
+        refuse_blank(bytes)
+    }
+}
+
+fn damaged(why: &str) -> Diagnostic {
+    Diagnostic::error(Code::ArchiveDamaged, format!("the archive is damaged: {why}"))
+}
+
+fn nested() -> Diagnostic {
+    Diagnostic::error(
+        Code::ArchiveNested,
+        "an archive inside an archive, or under the name of a structure, is not opened",
+    )
+}
+
+/// The first bytes of what a gzip stream holds.
+pub(super) fn head_of_gzip(packed: &[u8]) -> Vec<u8> {
+    let mut head = Vec::new();
+    // A stream that ends too early, or is damaged, gives what it has.
+    let _ = MultiGzDecoder::new(packed).take(512).read_to_end(&mut head);
+    head
+}
+
+/// Visits the members of an archive that may hold structures, in the order of the archive.
+///
+/// # Errors
+/// Only those of `take`.
+pub(super) fn visit<E>(
+    name: &str,
+    packing: Packing,
+    source: impl Read + Seek,
+    limit: u64,
+    take: &mut Take<'_, E>,
+) -> Result<(), E> {
+    let budget = Budget::new(limit);
+    let mut walk = Walk { name, budget: &budget, found: 0, take };
+    match packing {
+        Packing::Zip => walk.zip(source)?,
+        Packing::Tar => walk.tar(BufReader::new(source))?,
+        Packing::TarGz => {
+            let unpacked = Budget::new(limit);
+            let stream = MultiGzDecoder::new(BufReader::new(source));
+            walk.tar(Counted { inner: stream, budget: &unpacked })?;
+        }
+    }
+    if walk.found == 0 {
+        let message = format!("the archive holds nothing that is read: {}", super::door::KNOWN_NAMES);
+        walk.give("", Err(Diagnostic::error(Code::FileNoInput, message)))?;
+    }
+    Ok(())
+}
+
+struct Walk<'w, 't, E> {
+    name: &'w str,
+    budget: &'w Budget,
+    found: usize,
+    take: &'w mut Take<'t, E>,
+}
+
+/// What is done with a member, going by its name.
+enum Plan {
+    Skip,
+    Refuse(Diagnostic),
+    Read,
+}
+
+impl<E> Walk<'_, '_, E> {
+    /// Hands on a member; the archive itself has an empty path.
+    fn give(&mut self, path: &str, content: Result<Vec<u8>, Diagnostic>) -> Result<(), E> {
+        self.found += 1;
+        let path = path.trim_start_matches("./");
+        let shown: String = path.chars().map(|c| if c.is_control() { '\u{fffd}' } else { c }).collect();
+        let name = if shown.is_empty() { self.name.to_owned() } else { format!("{}/{shown}", self.name) };
+        (self.take)(Member::unpacked(name, content))
+    }
+
+    fn zip(&mut self, source: impl Read + Seek) -> Result<(), E> {
+        let mut archive = match zip::ZipArchive::new(BufReader::new(source)) {
+            Ok(archive) => archive,
+            Err(error) => return self.give("", Err(damaged(&error.to_string()))),
+        };
+        for index in 0..archive.len() {
+            let described = archive.by_index_raw(index).map(|file| {
+                let path = match file.name() {
+                    Ok(path) => path.into_owned(),
+                    Err(_) => String::from_utf8_lossy(file.name_raw()).into_owned(),
+                };
+                let plan = plan(&path, !file.is_dir(), file.is_symlink(), file.encrypted());
+                (path, plan)
+            });
+            let (path, plan) = match described {
+                Ok(described) => described,
+                Err(error) => {
+                    self.give("", Err(damaged(&format!("member {}: {error}", index + 1))))?;
+                    continue;
+                }
+            };
+            let content = match plan {
+                Plan::Skip => continue,
+                Plan::Refuse(refusal) => Err(refusal),
+                Plan::Read => match archive.by_index(index) {
+                    Ok(file) => self.budget.read_all(file).and_then(|bytes| self.budget.unwrap(bytes)),
+                    Err(error) => Err(zip_refusal(&error)),
+                },
+            };
+            self.give(&path, content)?;
+            if self.budget.is_over() {
+                break;
+            }
+        }
+        Ok(())
+    }
+
+    fn tar(&mut self, source: impl Read) -> Result<(), E> {
+        let mut archive = tar::Archive::new(source);
+        let entries = match archive.entries() {
+            Ok(entries) => entries,
+            Err(error) => return self.give("", Err(damaged(&error.to_string()))),
+        };
+        for entry in entries {
+            let mut entry = match entry {
+                Ok(entry) => entry,
+                Err(error) => {
+                    let refusal =
+                        if is_over(&error) { self.budget.refusal() } else { damaged(&error.to_string()) };
+                    return self.give("", Err(refusal));
+                }
+            };
+            let path = String::from_utf8_lossy(&entry.path_bytes()).into_owned();
+            let kind = entry.header().entry_type();
+            let is_link = kind.is_symlink() || kind.is_hard_link();
+            let is_file = kind.is_file() || kind.is_contiguous() || kind.is_gnu_sparse() || is_link;
+            match plan(&path, is_file, is_link, false) {
+                Plan::Skip => {}
+                Plan::Refuse(refusal) => self.give(&path, Err(refusal))?,
+                Plan::Read => {
+                    let size = entry.size();
+                    let content = self.budget.read_all(&mut entry);
+                    let is_cut = content.as_ref().is_ok_and(|bytes| bytes.len() as u64 != size);
+                    let content = if is_cut {
+                        Err(damaged(&format!("it ends within a member of {size} bytes")))
+                    } else {
+                        content
+                    };
+                    // Without a sound end of this member the next cannot be found.
+                    let is_last = content.as_ref().is_err_and(|refusal| refusal.code != Code::FileTooLarge);
+                    let content = content.and_then(|bytes| self.budget.unwrap(bytes));
+                    self.give(&path, content)?;
+                    if is_last || self.budget.is_over() {
+                        return Ok(());
+                    }
+                }
+            }
+        }
+        Ok(())
+    }
+}
+
+/// Whether an error of the tar reader comes from a limit on the stream below it.
+fn is_over(error: &io::Error) -> bool {
+    let mut cause: Option<&dyn std::error::Error> = Some(error);
+    while let Some(error) = cause {
+        if error.to_string() == OVER {
+            return true;
+        }
+        cause = error.source();
+    }
+    false
+}
+
+fn plan(path: &str, is_file: bool, is_link: bool, is_encrypted: bool) -> Plan {
+    let is_archive = Packing::of_name(path).is_some();
+    if !is_file || !is_archive && Format::of_name(path).is_none() {
+        Plan::Skip
+    } else if !is_safe(path) {
+        let message = "the path of the member is absolute, leads upwards, or holds control characters";
+        Plan::Refuse(Diagnostic::error(Code::ArchivePath, message))
+    } else if is_link {
+        Plan::Refuse(Diagnostic::error(Code::ArchivePath, "the member is a link, and links are not followed"))
+    } else if is_archive {
+        Plan::Refuse(nested())
+    } else if is_encrypted {
+        Plan::Refuse(Diagnostic::error(Code::ArchiveEncrypted, "the member is encrypted"))
+    } else {
+        Plan::Read
+    }
+}
+
+/// Nothing is ever written under the name of a member; a name that would be dangerous shows that something is wrong.
+fn is_safe(path: &str) -> bool {
+    let is_absolute = path.starts_with(['/', '\\']) || path.as_bytes().get(1) == Some(&b':');
+    let leads_upwards = path.split(['/', '\\']).any(|part| part == "..");
+    !is_absolute && !leads_upwards && !path.contains(char::is_control)
+}
+
+fn zip_refusal(error: &ZipError) -> Diagnostic {
+    match error {
+        ZipError::UnsupportedArchive(why) => Diagnostic::error(
+            Code::ArchiveMethod,
+            format!("the member is packed in a way that is not read: {why}"),
+        ),
+        ZipError::CompressionMethodNotSupported(method) => Diagnostic::error(
+            Code::ArchiveMethod,
+            format!("the member is packed by method {method}, and only stored and deflated members are read"),
+        ),
+        other => damaged(&other.to_string()),
+    }
+}
