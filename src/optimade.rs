@@ -18,7 +18,7 @@ use document::{Piece, split};
 /// What was read from one entry.
 #[derive(Debug, Clone)]
 pub struct Entry {
-    /// Its `id`, or `entry N` counted from one where it has none.
+    /// Its `id`, or `#N` counted from one where it has none.
     pub id: String,
     /// Where it begins.
     pub span: Span,
@@ -26,6 +26,8 @@ pub struct Entry {
     pub is_structure: bool,
     /// The structure, or the refusal.
     pub unit: Result<AsymmetricUnit, Diagnostic>,
+    /// Where the position of each site is, in the order of the sites of `unit`.
+    pub site_places: Vec<Span>,
     /// Everything noticed but the refusal.
     pub diagnostics: Vec<Diagnostic>,
 }
@@ -52,7 +54,7 @@ pub fn read_bytes(bytes: &[u8]) -> Result<Vec<Entry>, Diagnostic> {
         .into_iter()
         .enumerate()
         .filter_map(|(index, piece)| {
-            let fallback = format!("entry {}", index + 1);
+            let fallback = format!("#{}", index + 1);
             match piece {
                 Ok(piece) => entry::read(piece, fallback, &lines),
                 Err(fault) => Some(Entry {
@@ -60,6 +62,7 @@ pub fn read_bytes(bytes: &[u8]) -> Result<Vec<Entry>, Diagnostic> {
                     span: fault.span.unwrap_or_default(),
                     is_structure: true,
                     unit: Err(fault),
+                    site_places: Vec::new(),
                     diagnostics: Vec::new(),
                 }),
             }
@@ -113,7 +116,7 @@ mod tests {
         let flat = entry("a", &[(r#""attributes": {"#, ""), ("[]}}", "[]}")]);
         assert_eq!(codes(&flat), [("a".into(), None)]);
         let unnamed = flat.replace(r#""id": "a""#, r#""_id": {"$oid": "a"}"#);
-        assert_eq!(codes(&format!("[{flat},{unnamed}]")), [("a".into(), None), ("entry 2".into(), None)]);
+        assert_eq!(codes(&format!("[{flat},{unnamed}]")), [("a".into(), None), ("#2".into(), None)]);
     }
 
     #[test]
@@ -123,6 +126,8 @@ mod tests {
         // By hand: half the sum of the vectors is (2.1, 2.1, 2.1).
         assert!((unit.sites[1].position.add_scalar(-0.5)).norm() < 1e-12);
         assert_eq!(unit.sites[0].label, "Mg1");
+        let text = entry("a", &[]);
+        assert_eq!(&text[entries[0].site_places[1].start..entries[0].site_places[1].end], "[2.1, 2.1, 2.1]");
     }
 
     #[test]
@@ -211,7 +216,7 @@ mod tests {
         // A broken line of JSON lines costs that line.
         let lines = format!("{good}\n{{\"id\": \n{good}\n{good}");
         let found = codes(&lines);
-        assert_eq!(found[1], ("entry 2".into(), Some(Code::OptimadeSyntax)));
+        assert_eq!(found[1], ("#2".into(), Some(Code::OptimadeSyntax)));
         assert_eq!(found.iter().filter(|(_, code)| code.is_none()).count(), 3);
         let latin = [good.as_bytes(), b"\n{\"id\": \"\xe9\"}\n", good.as_bytes()].concat();
         let entries = read_bytes(&latin).expect("entries");

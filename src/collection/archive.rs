@@ -50,7 +50,8 @@ impl Budget {
     }
 
     fn refusal(&self) -> Diagnostic {
-        let message = format!("more than {} bytes come out of it, the limit of --max-unpacked", self.limit);
+        let message =
+            format!("more than {} bytes would be unpacked, the limit of --max-unpacked", self.limit);
         Diagnostic::error(Code::ArchiveTooLarge, message)
             .hint(format!("--max-unpacked {}", self.limit.saturating_mul(4)))
     }
@@ -280,5 +281,196 @@ fn zip_refusal(error: &ZipError) -> Diagnostic {
             format!("the member is packed by method {method}, and only stored and deflated members are read"),
         ),
         other => damaged(&other.to_string()),
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use flate2::Compression;
+    use flate2::write::GzEncoder;
+    use proptest::prelude::*;
+    use std::convert::Infallible;
+    use std::io::{Cursor, Write};
+    use zip::write::SimpleFileOptions;
+    use zip::{CompressionMethod, ZipWriter};
+
+    type Files<'a> = &'a [(&'a str, &'a [u8])];
+
+    fn zipped(files: Files<'_>) -> Vec<u8> {
+        let mut writer = ZipWriter::new(Cursor::new(Vec::new()));
+        for (name, content) in files {
+            let options = SimpleFileOptions::default().compression_method(CompressionMethod::Deflated);
+            writer.start_file(*name, options).expect("a member");
+            writer.write_all(content).expect("content");
+        }
+        writer.finish().expect("an archive").into_inner()
+    }
+
+    fn tarred(files: Files<'_>) -> Vec<u8> {
+        let mut builder = tar::Builder::new(Vec::new());
+        for (name, content) in files {
+            let mut header = tar::Header::new_ustar();
+            // Written by hand: the library refuses the hostile names.
+            let field = &mut header.as_old_mut().name;
+            field[..name.len()].copy_from_slice(name.as_bytes());
+            header.set_size(content.len() as u64);
+            header.set_mode(0o644);
+            header.set_cksum();
+            builder.append(&header, *content).expect("a member");
+        }
+        builder.into_inner().expect("an archive")
+    }
+
+    fn gzipped(content: &[u8]) -> Vec<u8> {
+        let mut writer = GzEncoder::new(Vec::new(), Compression::default());
+        writer.write_all(content).expect("content");
+        writer.finish().expect("a stream")
+    }
+
+    /// Names of the members, and the code of each refusal.
+    fn members(packing: Packing, bytes: &[u8], limit: u64) -> Vec<(String, Option<Code>)> {
+        let mut found = Vec::new();
+        let Ok(()) = visit::<Infallible>("a", packing, Cursor::new(bytes), limit, &mut |member| {
+            let name = member.name.clone();
+            found.push((name, member.read().err().map(|refusal| refusal.code)));
+            Ok(())
+        });
+        found
+    }
+
+    fn row(name: &str, code: Option<Code>) -> (String, Option<Code>) {
+        (name.to_owned(), code)
+    }
+
+    const FILES: Files<'static> = &[
+        ("./b/x.cif", b"data_x"),
+        ("notes.txt", b"no structure"),
+        ("POSCAR", b"title"),
+        ("._x.cif", b"companion"),
+        ("empty.cif", b" "),
+    ];
+
+    #[test]
+    fn members_have_the_order_of_the_archive() {
+        let expected =
+            [row("a/b/x.cif", None), row("a/POSCAR", None), row("a/empty.cif", Some(Code::FileEmpty))];
+        assert_eq!(members(Packing::Zip, &zipped(FILES), 1 << 20), expected);
+        assert_eq!(members(Packing::Tar, &tarred(FILES), 1 << 20), expected);
+        assert_eq!(members(Packing::TarGz, &gzipped(&tarred(FILES)), 1 << 20), expected);
+        let none = [row("a", Some(Code::FileNoInput))];
+        assert_eq!(members(Packing::Zip, &zipped(&[("notes.txt", b"x")]), 1 << 20), none);
+        assert_eq!(members(Packing::Tar, &tarred(&[]), 1 << 20), none);
+    }
+
+    #[test]
+    fn nothing_is_unpacked_beyond_the_limit() {
+        let zeros = vec![b' '; 1 << 20];
+        let files: Files<'_> = &[("a.cif", b"data_x"), ("b.cif", &zeros), ("c.cif", b"data_x")];
+        let expected = [row("a/a.cif", None), row("a/b.cif", Some(Code::ArchiveTooLarge))];
+        assert_eq!(members(Packing::Zip, &zipped(files), 10_000), expected);
+        assert_eq!(members(Packing::Tar, &tarred(files), 10_000), expected);
+        assert_eq!(members(Packing::TarGz, &gzipped(&tarred(files)), 10_000), expected);
+        // A member that is itself compressed, and one that is only skipped.
+        let packed = gzipped(&zeros);
+        let inner: Files<'_> = &[("a.cif.gz", &packed)];
+        assert_eq!(
+            members(Packing::Zip, &zipped(inner), 10_000),
+            [row("a/a.cif.gz", Some(Code::ArchiveTooLarge))]
+        );
+        let skipped: Files<'_> = &[("notes.txt", &zeros), ("c.cif", b"data_x")];
+        let found = members(Packing::TarGz, &gzipped(&tarred(skipped)), 10_000);
+        assert_eq!(found, [row("a", Some(Code::ArchiveTooLarge))]);
+        assert_eq!(Budget::new(10_000).unwrap(packed).expect_err("too much").code, Code::ArchiveTooLarge);
+        // The total counts, not each member.
+        let many: Files<'_> = &[("a.cif", &zeros[..6_000]), ("b.cif", &zeros[..6_000])];
+        assert_eq!(members(Packing::Zip, &zipped(many), 10_000)[1].1, Some(Code::ArchiveTooLarge));
+    }
+
+    #[test]
+    fn hostile_members_cost_one_row() {
+        let archive = zipped(&[("x.cif", b"data_x")]);
+        let files: Files<'_> = &[
+            ("../up.cif", b"data_x"),
+            ("/etc/x.cif", b"data_x"),
+            ("C:x.cif", b"data_x"),
+            ("a\\..\\x.cif", b"data_x"),
+            ("bell\x07.cif", b"data_x"),
+            ("inner.zip", &archive),
+            ("inner.cif", &archive),
+            ("good.cif", b"data_x"),
+        ];
+        for found in
+            [members(Packing::Zip, &zipped(files), 1 << 20), members(Packing::Tar, &tarred(files), 1 << 20)]
+        {
+            let codes: Vec<Option<Code>> = found.iter().map(|(_, code)| *code).collect();
+            let (path, nested) = (Some(Code::ArchivePath), Some(Code::ArchiveNested));
+            assert_eq!(codes, [path, path, path, path, path, nested, nested, None], "{found:?}");
+            assert_eq!(found[4].0, "a/bell\u{fffd}.cif");
+        }
+        let mut builder = tar::Builder::new(Vec::new());
+        let mut header = tar::Header::new_gnu();
+        header.set_entry_type(tar::EntryType::Symlink);
+        header.set_size(0);
+        builder.append_link(&mut header, "x.cif", "/etc/passwd").expect("a link");
+        let linked = builder.into_inner().expect("an archive");
+        assert_eq!(members(Packing::Tar, &linked, 1 << 20), [row("a/x.cif", Some(Code::ArchivePath))]);
+    }
+
+    /// Sets bytes at an offset from each header of a kind (offsets from the description of the zip format, from memory:
+    /// flags at 6 and 8, method at 8 and 10, of the local and the central header).
+    fn patched(mut bytes: Vec<u8>, local: usize, central: usize, value: u8) -> Vec<u8> {
+        for at in 0..bytes.len() - 4 {
+            match &bytes[at..at + 4] {
+                b"PK\x03\x04" => bytes[at + local] = value,
+                b"PK\x01\x02" => bytes[at + central] = value,
+                _ => {}
+            }
+        }
+        bytes
+    }
+
+    #[test]
+    fn what_cannot_be_unpacked_is_said() {
+        let good = zipped(&[("a.cif", b"data_x"), ("b.cif", b"data_y")]);
+        let codes = |bytes: &[u8]| {
+            members(Packing::Zip, bytes, 1 << 20).into_iter().map(|(_, code)| code).collect::<Vec<_>>()
+        };
+        assert_eq!(codes(&patched(good.clone(), 6, 8, 1)), [Some(Code::ArchiveEncrypted); 2]);
+        assert_eq!(codes(&patched(good.clone(), 8, 10, 12)), [Some(Code::ArchiveMethod); 2]);
+        assert_eq!(codes(&good[..good.len() - 30]), [Some(Code::ArchiveDamaged)]);
+        assert_eq!(codes(b"PK\x03\x04"), [Some(Code::ArchiveDamaged)]);
+        // One wrong byte in the first member costs that one.
+        let mut wrong = good;
+        wrong[30 + "a.cif".len() + 1] ^= 0x55;
+        assert_eq!(codes(&wrong), [Some(Code::ArchiveDamaged), None]);
+        let tar = tarred(&[("a.cif", b"data_x"), ("b.cif", &[b'x'; 2_000])]);
+        let damaged = [row("a/a.cif", None), row("a/b.cif", Some(Code::ArchiveDamaged))];
+        assert_eq!(members(Packing::Tar, &tar[..2_000], 1 << 20), damaged);
+        let packed = gzipped(&tar);
+        let found = members(Packing::TarGz, &packed[..packed.len() / 2], 1 << 20);
+        assert_eq!(found.last().map(|(_, code)| *code), Some(Some(Code::ArchiveDamaged)), "{found:?}");
+        assert_eq!(members(Packing::Tar, &[b'x'; 600], 1 << 20), [row("a", Some(Code::ArchiveDamaged))]);
+        assert_eq!(members(Packing::TarGz, b"\x1f\x8bxx", 1 << 20), [row("a", Some(Code::ArchiveDamaged))]);
+        let cut = gzipped(&[b'x'; 5_000]);
+        assert_eq!(
+            Budget::new(1 << 20).unwrap(cut[..20].to_vec()).expect_err("cut").code,
+            Code::ArchiveDamaged
+        );
+    }
+
+    proptest! {
+        #[test]
+        fn any_archive_is_taken(at in 0_usize..3_000, value: u8, cut in 0_usize..3_000) {
+            for (packing, mut bytes) in
+                [(Packing::Zip, zipped(FILES)), (Packing::Tar, tarred(FILES)), (Packing::TarGz, gzipped(&tarred(FILES)))]
+            {
+                let length = bytes.len();
+                bytes[at % length] = value;
+                prop_assert!(!members(packing, &bytes, 1 << 20).is_empty());
+                bytes.truncate(cut % length);
+                prop_assert!(!members(packing, &bytes, 1 << 20).is_empty());
+            }
+        }
     }
 }

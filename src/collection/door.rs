@@ -141,8 +141,6 @@ enum Places {
     Cif(Box<BlockReading>),
     /// One for each site.
     Sites(Vec<Span>),
-    /// One for all.
-    Whole(Span),
 }
 
 impl Structure {
@@ -151,7 +149,6 @@ impl Structure {
         let span = match &self.places {
             Places::Cif(block) => return block.locate(finding),
             Places::Sites(spans) => finding.site.and_then(|site| spans.get(site)).copied(),
-            Places::Whole(span) => finding.site.map(|_| *span),
         };
         match span {
             Some(span) if finding.span.is_none() => finding.at(span),
@@ -185,7 +182,7 @@ pub(super) fn read(path: &str, bytes: &[u8]) -> Result<(Vec<Structure>, Vec<Diag
                 is_structure: entry.is_structure,
                 unit: entry.unit,
                 diagnostics: entry.diagnostics,
-                places: Places::Whole(entry.span),
+                places: Places::Sites(entry.site_places),
             });
             Ok((structures.collect(), Vec::new()))
         }

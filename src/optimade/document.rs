@@ -28,9 +28,14 @@ struct Top<'a> {
 
 impl<'a> Piece<'a> {
     /// A value inside this one.
-    pub(super) fn inner(self, value: &'a RawValue) -> Self {
+    pub(super) fn inner<'b>(self, value: &'b RawValue) -> Piece<'b> {
         let offset = (value.get().as_ptr() as usize).saturating_sub(self.json.as_ptr() as usize);
-        Self { json: value.get(), start: self.start + offset }
+        Piece { json: value.get(), start: self.start + offset }
+    }
+
+    /// Where all of this value is.
+    pub(super) fn place(self, lines: &Lines) -> Span {
+        lines.span(self.start, self.start + self.json.len())
     }
 
     /// Where the name of a property stands in this value, or where the value begins.

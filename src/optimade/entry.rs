@@ -5,7 +5,7 @@ use super::species::{Assembly, Occupant, Species, occupants};
 use super::{Entry, refusal};
 use crate::cell::Lattice;
 use crate::crystal::{AsymmetricUnit, Site, lattice_refusal};
-use crate::diagnostic::{Code, Diagnostic, Lines};
+use crate::diagnostic::{Code, Diagnostic, Lines, Span};
 use nalgebra::{Matrix3, Vector3};
 use serde::Deserialize;
 use serde::de::IgnoredAny;
@@ -28,11 +28,12 @@ struct Wrapper<'a> {
 
 /// The properties of a structure that are used here.
 #[derive(Deserialize)]
-struct Attributes {
+struct Attributes<'a> {
     lattice_vectors: Option<Vec<[Option<f64>; 3]>>,
     dimension_types: Option<Vec<u64>>,
     nperiodic_dimensions: Option<u64>,
-    cartesian_site_positions: Option<Vec<[f64; 3]>>,
+    #[serde(borrow)]
+    cartesian_site_positions: Option<Vec<&'a RawValue>>,
     species_at_sites: Option<Vec<String>>,
     species: Option<Vec<Species>>,
     structure_features: Option<Vec<String>>,
@@ -54,17 +55,18 @@ pub(super) fn read(piece: Piece<'_>, fallback: String, lines: &Lines) -> Option<
         span: piece.place_of("", lines),
         is_structure: true,
         unit: Err(Diagnostic::error(Code::OptimadeProperty, "nothing was read")),
+        site_places: Vec::new(),
         diagnostics: Vec::new(),
     };
     if !piece.json.starts_with('{') {
-        let message = format!("{} is not a JSON object", entry.id);
+        let message = format!("entry {} is not a JSON object", entry.id);
         entry.unit = Err(refusal(Code::OptimadeProperty, message, piece, "", lines));
         return Some(entry);
     }
     let wrapper: Wrapper = match serde_json::from_str(piece.json) {
         Ok(wrapper) => wrapper,
         Err(error) => {
-            let what = format!("{} cannot be read", entry.id);
+            let what = format!("entry {} cannot be read", entry.id);
             entry.unit = Err(piece.fault(Code::OptimadeProperty, &what, &error, lines));
             return Some(entry);
         }
@@ -78,7 +80,7 @@ pub(super) fn read(piece: Piece<'_>, fallback: String, lines: &Lines) -> Option<
         _ => {}
     }
     let id = entry.id.clone();
-    let reader = Reader { id: &id, piece, lines };
+    let mut reader = Reader { id: &id, piece, lines };
     if let Some(kind) = wrapper.kind.filter(|kind| kind != "structures" && !kind.is_null()) {
         entry.is_structure = false;
         let message = format!("the entry is of the type {}, not structures", printable(&kind.to_string()));
@@ -91,8 +93,9 @@ pub(super) fn read(piece: Piece<'_>, fallback: String, lines: &Lines) -> Option<
         entry.unit = Err(reader.refuse(Code::OptimadeProperty, "attributes", message));
         return Some(entry);
     }
+    reader.piece = inner;
     entry.unit = match serde_json::from_str::<Attributes>(inner.json) {
-        Ok(attributes) => reader.unit(&attributes, &mut entry.diagnostics),
+        Ok(attributes) => reader.unit(&attributes, &mut entry.site_places, &mut entry.diagnostics),
         Err(error) => {
             let what = format!("entry {id} has a property of another shape than the standard asks for");
             Err(inner.fault(Code::OptimadeProperty, &what, &error, lines))
@@ -114,7 +117,12 @@ impl Reader<'_> {
         })
     }
 
-    fn unit(&self, given: &Attributes, noticed: &mut Vec<Diagnostic>) -> Result<AsymmetricUnit, Diagnostic> {
+    fn unit(
+        &self,
+        given: &Attributes<'_>,
+        places: &mut Vec<Span>,
+        noticed: &mut Vec<Diagnostic>,
+    ) -> Result<AsymmetricUnit, Diagnostic> {
         self.check_features(given, noticed)?;
         let lattice = self.lattice(given)?;
         let positions = self.needed(given.cartesian_site_positions.as_ref(), "cartesian_site_positions")?;
@@ -138,7 +146,8 @@ impl Reader<'_> {
                     .map_err(|(code, message)| self.refuse(code, "species", &printable(&message)))?;
                 read.insert(name.as_str(), found);
             }
-            let position = lattice.to_fractional(&Vector3::from(*position));
+            let (position, place) = self.position(position)?;
+            let position = lattice.to_fractional(&position);
             for occupant in read.get(name.as_str()).into_iter().flatten() {
                 let symbol = occupant.element.symbol();
                 let number = numbers.entry(symbol).or_default();
@@ -147,14 +156,31 @@ impl Reader<'_> {
                 site.occupancy = occupant.concentration * weight;
                 if site.occupancy > 0.0 {
                     sites.push(site);
+                    places.push(place);
                 }
             }
         }
         Ok(AsymmetricUnit { lattice, sites, operations: Vec::new() })
     }
 
+    /// A Cartesian position in Å, and where it is.
+    fn position(&self, json: &RawValue) -> Result<(Vector3<f64>, Span), Diagnostic> {
+        let piece = self.piece.inner(json);
+        match serde_json::from_str::<[f64; 3]>(piece.json) {
+            Ok(position) => Ok((Vector3::from(position), piece.place(self.lines))),
+            Err(error) => {
+                let what = format!("entry {}: a position is not three numbers", self.id);
+                Err(piece.fault(Code::OptimadeProperty, &what, &error, self.lines))
+            }
+        }
+    }
+
     /// Refuses what says that the listed sites are not the whole structure.
-    fn check_features(&self, given: &Attributes, noticed: &mut Vec<Diagnostic>) -> Result<(), Diagnostic> {
+    fn check_features(
+        &self,
+        given: &Attributes<'_>,
+        noticed: &mut Vec<Diagnostic>,
+    ) -> Result<(), Diagnostic> {
         for feature in given.structure_features.iter().flatten() {
             match feature.as_str() {
                 // Told from the species and assemblies themselves.
@@ -177,7 +203,7 @@ impl Reader<'_> {
         Ok(())
     }
 
-    fn lattice(&self, given: &Attributes) -> Result<Lattice, Diagnostic> {
+    fn lattice(&self, given: &Attributes<'_>) -> Result<Lattice, Diagnostic> {
         let periodic: Option<u64> = given.dimension_types.as_ref().map(|types| types.iter().sum());
         for (count, property) in
             [(periodic, "dimension_types"), (given.nperiodic_dimensions, "nperiodic_dimensions")]
@@ -215,7 +241,7 @@ impl Reader<'_> {
     }
 
     /// The probability of each site: below one for sites of alternative groups of an assembly.
-    fn weights(&self, given: &Attributes, sites: usize) -> Result<Vec<f64>, Diagnostic> {
+    fn weights(&self, given: &Attributes<'_>, sites: usize) -> Result<Vec<f64>, Diagnostic> {
         let mut weights = vec![1.0; sites];
         for assembly in given.assemblies.iter().flatten() {
             for (group, probability) in assembly.groups() {
