@@ -9,7 +9,7 @@ use crate::diagnostic::{Code, Diagnostic};
 use flate2::read::MultiGzDecoder;
 use std::cell::Cell;
 use std::io::{self, BufReader, Read, Seek};
-use zip::result::ZipError;
+use zip::CompressionMethod;
 
 /// What the error says that ends a reader at the limit.
 const OVER: &str = "over the limit of bytes to unpack";
@@ -162,7 +162,10 @@ impl<E> Walk<'_, '_, E> {
                     Ok(path) => path.into_owned(),
                     Err(_) => String::from_utf8_lossy(file.name_raw()).into_owned(),
                 };
-                let plan = plan(&path, !file.is_dir(), file.is_symlink(), file.encrypted());
+                let plan = match plan(&path, !file.is_dir(), file.is_symlink(), file.encrypted()) {
+                    Plan::Read => plan_for_method(file.compression()),
+                    plan => plan,
+                };
                 (path, plan)
             });
             let (path, plan) = match described {
@@ -177,7 +180,7 @@ impl<E> Walk<'_, '_, E> {
                 Plan::Refuse(refusal) => Err(refusal),
                 Plan::Read => match archive.by_index(index) {
                     Ok(file) => self.budget.read_all(file).and_then(|bytes| self.budget.unwrap(bytes)),
-                    Err(error) => Err(zip_refusal(&error)),
+                    Err(error) => Err(damaged(&error.to_string())),
                 },
             };
             self.give(&path, content)?;
@@ -270,18 +273,13 @@ fn is_safe(path: &str) -> bool {
     !is_absolute && !leads_upwards && !path.contains(char::is_control)
 }
 
-fn zip_refusal(error: &ZipError) -> Diagnostic {
-    match error {
-        ZipError::UnsupportedArchive(why) => Diagnostic::error(
-            Code::ArchiveMethod,
-            format!("the member is packed in a way that is not read: {why}"),
-        ),
-        ZipError::CompressionMethodNotSupported(method) => Diagnostic::error(
-            Code::ArchiveMethod,
-            format!("the member is packed by method {method}, and only stored and deflated members are read"),
-        ),
-        other => damaged(&other.to_string()),
+fn plan_for_method(method: CompressionMethod) -> Plan {
+    if matches!(method, CompressionMethod::Stored | CompressionMethod::Deflated) {
+        return Plan::Read;
     }
+    let message =
+        format!("the member is packed by the method {method}; only stored and deflated members are read");
+    Plan::Refuse(Diagnostic::error(Code::ArchiveMethod, message))
 }
 
 #[cfg(test)]
@@ -292,8 +290,8 @@ mod tests {
     use proptest::prelude::*;
     use std::convert::Infallible;
     use std::io::{Cursor, Write};
+    use zip::ZipWriter;
     use zip::write::SimpleFileOptions;
-    use zip::{CompressionMethod, ZipWriter};
 
     type Files<'a> = &'a [(&'a str, &'a [u8])];
 

@@ -195,9 +195,9 @@ fn the_example_files_are_read() {
             " contains-zero -",
             " contains-zero -",
             "mgo contains-zero -",
-            "mgo-mixed undefined site-006",
+            "mgo-mixed - site-006",
             "mgo contains-zero -",
-            "mgo-mixed undefined site-006",
+            "mgo-mixed - site-006",
         ]
     );
 }
