@@ -1,9 +1,12 @@
-//! Many inputs: which files a list of paths names, and their structures, classified in a stable order.
+//! Many inputs: which files a list of paths names, what they hold, and their structures, classified in a stable order.
 
+mod archive;
 mod classification;
+mod door;
 mod input;
 
 pub use classification::{
-    Classification, Material, PARENT_TOLERANCE, ParentLevel, Settings, classify_bytes, classify_unit,
+    Classification, Material, PARENT_TOLERANCE, ParentLevel, Settings, classify_bytes, classify_input,
+    classify_member, classify_unit,
 };
-pub use input::{Input, find_inputs};
+pub use input::{Input, Member, find_inputs};

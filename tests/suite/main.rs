@@ -7,6 +7,7 @@ mod cif;
 mod commands;
 mod conformance;
 mod demo;
+mod doors;
 #[cfg(feature = "spglib")]
 mod engines;
 mod enumeration;
