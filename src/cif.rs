@@ -15,6 +15,7 @@ mod number;
 mod operation;
 mod parse;
 mod read;
+mod write;
 
 pub use document::{Block, Document, Item, Loop, Pair, Table, Tag, Value, ValueKind};
 pub use lex::{Dialect, Lexer, Token, TokenKind};
@@ -22,3 +23,4 @@ pub use number::{Measured, parse_number};
 pub use operation::{OperationError, parse_operation};
 pub use parse::parse;
 pub use read::{BlockReading, Reading, SitePlace, StatedSymmetry, SymmetrySource, read_bytes, read_document};
+pub use write::{CifText, Datum, WriteError};
