@@ -29,8 +29,9 @@ enum Work {
 /// The same crystal with its origin on a centre of inversion, in the axes you choose.
 ///
 /// Cell, symmetry operations, sites with charges, what the source says about its origin, and the label and offset under
-/// the prefix _cosetta_. The origin of the file stays where it is a centre of inversion; otherwise it moves to the centre of
-/// the highest site symmetry, the nearest among equals. A crystal without centres keeps its origin. Where the atoms have
+/// the prefix `_cosetta_`. The origin of the file stays where it is a centre of inversion; otherwise it moves to a centre that
+/// makes a setting of the International Tables, the one of the highest site symmetry and the nearest among equals. A crystal
+/// without centres keeps its origin. Where the atoms have
 /// more symmetry than the file states, they are averaged over it. What was written is read back and classified again, and
 /// refused if anything differs.
 #[derive(Debug, Args)]

@@ -1,9 +1,11 @@
 //! One structure in another setting: axes, an origin on an inversion centre, and exact operations.
 //!
 //! # The rule for the origin
-//! The origin of the file stays where it is a centre of inversion. Otherwise it moves to the centre of the highest site
-//! symmetry, the nearest one among equals ([`Centres`]). The standard axes take the origin of the standard setting, which is a
-//! centre too (origin choice 2). A crystal without centres keeps the origin of its file, or of the standard setting.
+//! The origin of the file stays where it is a centre of inversion. Otherwise it moves to a centre from which the operations
+//! in the file's axes are those of a setting of the International Tables: the one of the highest site symmetry, the nearest
+//! among equals. Where no centre gives such a setting, it moves to the one of the highest site symmetry. The standard axes
+//! take the origin of the standard setting, which is a centre too (origin choice 2). A crystal without centres keeps the
+//! origin of its file, or of the standard setting.
 //!
 //! # What becomes of the atoms
 //! Where the operations of the file are all that the search finds, the sites it lists are moved and nothing else is done to
@@ -200,9 +202,9 @@ impl Source<'_> {
         axes: Axes,
         noticed: &mut Vec<Diagnostic>,
     ) -> Result<Moved, Diagnostic> {
-        let (vectors, origin) = frame.target(axes)?;
+        let (vectors, own_origin) = frame.target(axes)?;
         if frame.centres.is_none() {
-            let kept = if axes == Axes::Standard {
+            let kept = if own_origin.is_some() {
                 "that of the standard setting is used"
             } else {
                 "that of the file is kept"
@@ -211,6 +213,11 @@ impl Source<'_> {
             noticed.push(Diagnostic::note(Code::BuildNoCentre, message));
         }
         let is_whole = frame.is_stated_in_full(self.unit, axes);
+        let (vectors, origin) = match own_origin {
+            Some(_) if is_whole && self.is_standard(frame) => (frame.target(Axes::File)?.0, Vector3::zeros()),
+            Some(origin) => (vectors, origin),
+            None => (vectors, self.best_origin(frame)?),
+        };
         if is_whole && let Ok(moved) = self.as_stated(frame, &vectors, &origin) {
             return Ok(moved);
         }
@@ -238,6 +245,35 @@ impl Source<'_> {
         let (moved, _) =
             self.averaged(frame, &vectors, &origin, |rotation| *rotation == Matrix3::identity())?;
         Ok(moved)
+    }
+
+    /// The first of the possible origins that gives a usual setting in the axes of the file, or the first.
+    fn best_origin(&self, frame: &Frame<'_>) -> Result<Vector3<f64>, Diagnostic> {
+        let origins = frame.origins();
+        let first = origins.first().copied().unwrap_or_else(Vector3::zeros);
+        if origins.len() < 2 {
+            return Ok(first);
+        }
+        let (vectors, _) = frame.target(Axes::File)?;
+        let is_whole = frame.is_stated_in_full(self.unit, Axes::File);
+        let is_usual = |origin: &&Vector3<f64>| {
+            let moved = if is_whole {
+                self.as_stated(frame, &vectors, origin)
+            } else {
+                self.averaged(frame, &vectors, origin, |_| true).map(|(moved, _)| moved)
+            };
+            moved.is_ok_and(|moved| file_group(&moved.unit).as_ref().and_then(from_group).is_some())
+        };
+        Ok(origins.iter().find(is_usual).copied().unwrap_or(first))
+    }
+
+    /// Whether the file is in the standard setting as it is; engines may choose other axes that are as good.
+    fn is_standard(&self, frame: &Frame<'_>) -> bool {
+        let setting = file_group(self.unit).as_ref().and_then(from_group);
+        setting.is_some_and(|setting| {
+            from_hall(&frame.symmetry.hall)
+                .is_some_and(|standard| standard.hall_number == setting.hall_number)
+        })
     }
 
     /// The sites and operations of the file, moved exactly.

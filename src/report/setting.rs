@@ -93,14 +93,14 @@ fn write_contents(text: &mut CifText, sheet: &Sheet<'_>) -> Result<(), WriteErro
         *amounts.entry(site.element).or_default() += site.occupancy * float(*count);
     }
     let stated = sheet.formula_units.map(|units| units * sheet.recast.axes.determinant());
-    let units = formula_units(&amounts, stated);
+    let units = formula_units(&amounts, &sheet.recast.multiplicities, stated);
     text.pair("_chemical_formula_sum", &Datum::text(hill(&amounts, float(units))))?;
     text.pair("_cell_formula_units_Z", &Datum::count(units))
 }
 
 /// The stated number of formula units, if it divides the content of the cell; else the greatest common divisor of whole
-/// amounts, else one.
-fn formula_units(amounts: &BTreeMap<Element, f64>, stated: Option<f64>) -> usize {
+/// amounts, or of the multiplicities where amounts are not whole.
+fn formula_units(amounts: &BTreeMap<Element, f64>, multiplicities: &[usize], stated: Option<f64>) -> usize {
     let whole = |amount: f64| {
         let rounded = amount.round();
         #[allow(
@@ -117,7 +117,8 @@ fn formula_units(amounts: &BTreeMap<Element, f64>, stated: Option<f64>) -> usize
         // Shared sites have any amounts.
         (Some(units), 0) => units,
         (Some(units), divisor) if divisor % units == 0 => units,
-        (_, divisor) => divisor.max(1),
+        (_, 0) => multiplicities.iter().fold(0, |divisor, count| count.gcd(&divisor)).max(1),
+        (_, divisor) => divisor,
     }
 }
 
@@ -322,13 +323,16 @@ mod tests {
     fn formulas_follow_the_dictionary() {
         // By hand; the order is that of _chemical_formula_sum in the core dictionary (from memory).
         let spinel = amounts(&[("Mg", 8.0), ("Al", 16.0), ("O", 32.0)]);
-        assert_eq!((formula_units(&spinel, None), formula_units(&spinel, Some(4.0))), (8, 4));
-        assert_eq!(formula_units(&spinel, Some(3.0)), 8);
+        assert_eq!((formula_units(&spinel, &[], None), formula_units(&spinel, &[], Some(4.0))), (8, 4));
+        assert_eq!(formula_units(&spinel, &[], Some(3.0)), 8);
         assert_eq!(hill(&spinel, 8.0), "Al2 Mg O4");
         let calcite = amounts(&[("Ca", 6.0), ("C", 6.0), ("O", 18.0), ("H", 6.0)]);
         assert_eq!(hill(&calcite, 6.0), "C H Ca O3");
         let shared = amounts(&[("Fe", 3.7), ("Mg", 4.3), ("O", 8.0)]);
-        assert_eq!((formula_units(&shared, Some(4.0)), formula_units(&shared, None)), (4, 1));
+        assert_eq!(
+            (formula_units(&shared, &[4, 4, 8], Some(2.0)), formula_units(&shared, &[4, 4, 8], None)),
+            (2, 4)
+        );
         assert_eq!(hill(&shared, 4.0), "Fe0.925 Mg1.075 O2");
     }
 }

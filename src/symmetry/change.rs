@@ -5,9 +5,10 @@
 //! chapter 1.5).
 
 use super::setting::{Group, Motion, UNIT};
-use crate::crystal::{AsymmetricUnit, Site};
+use crate::crystal::{AsymmetricUnit, Operation, Site};
 use nalgebra::{Matrix3, Vector3};
 use num_integer::Integer;
+use std::collections::HashSet;
 use thiserror::Error;
 
 /// A coordinate this near below 1 is 0.
@@ -185,6 +186,14 @@ impl Change {
         if rest == 0 && made.order() == expected { Ok(made) } else { Err(ChangeError::NotGroup) }
     }
 
+    /// The operations of a changed group, those that come from the old ones first and in their order.
+    fn in_order(&self, old: &[Motion], changed: &Group) -> Vec<Operation> {
+        let moved = old.iter().filter_map(|motion| self.motion(motion).ok());
+        let mut seen = HashSet::new();
+        let all = moved.chain(changed.motions().iter().copied());
+        all.filter(|motion| seen.insert(*motion)).map(|motion| motion.to_operation()).collect()
+    }
+
     /// A structure in the new setting: lattice, listed sites in [0, 1), and the operations of the new cell. Where
     /// nothing changes, sites stay as they are.
     ///
@@ -207,7 +216,7 @@ impl Change {
         Ok(AsymmetricUnit {
             lattice: unit.lattice.transformed(&self.axes()).map_err(|_| ChangeError::Handedness)?,
             sites: unit.sites.iter().map(place).collect(),
-            operations: changed.operations(),
+            operations: self.in_order(&motions, &changed),
         })
     }
 }

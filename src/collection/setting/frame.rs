@@ -1,7 +1,7 @@
 //! What is needed to move a structure: its symmetry, primitive cell and centres, searched with shared sites as one kind.
 
 use super::{Axes, point_group_order, scaled};
-use crate::cell::contacts_within;
+use crate::cell::{Reduced, contacts_within};
 use crate::collection::classification::{Classification, Settings};
 use crate::crystal::{AsymmetricUnit, Crystal, ExpandTolerance};
 use crate::diagnostic::{Code, Diagnostic};
@@ -56,23 +56,50 @@ impl<'a> Frame<'a> {
         })
     }
 
-    /// The new vectors in primitive axes, one a column, and the new origin in the axes of the file.
-    pub(super) fn target(&self, axes: Axes) -> Result<(Matrix3<i64>, Vector3<f64>), Diagnostic> {
-        let origin = || match self.centres.as_ref() {
-            Some(centres) => self.primitive.to_cell(&centres.origin().position).map(|x| x - x.round()),
-            None => Vector3::zeros(),
-        };
+    /// The new vectors in primitive axes, one a column, and their own origin, if they have one, in the axes of the file.
+    pub(super) fn target(&self, axes: Axes) -> Result<(Matrix3<i64>, Option<Vector3<f64>>), Diagnostic> {
         match axes {
-            Axes::Primitive => Ok((Matrix3::identity(), origin())),
-            Axes::File => Ok((self.in_primitive_axes(&Matrix3::identity())?, origin())),
+            Axes::Primitive => Ok((Matrix3::identity(), None)),
+            Axes::File => Ok((self.in_primitive_axes(&Matrix3::identity())?, None)),
             Axes::Standard => {
                 let standard = self.symmetry.standard.as_ref().ok_or_else(|| {
                     let message = "this engine gives no standardised cell";
                     Diagnostic::error(Code::BuildStandard, message).hint("--engine moyo")
                 })?;
-                Ok((self.in_primitive_axes(&standard.axes)?, standard.origin))
+                Ok((self.in_primitive_axes(&standard.axes)?, Some(standard.origin)))
             }
         }
+    }
+
+    /// Possible origins in the axes of the file: its own origin where that is a centre, or where there are no centres; else
+    /// all centres, the ones of the highest site symmetry first, and the nearest of these.
+    pub(super) fn origins(&self) -> Vec<Vector3<f64>> {
+        let Some(centres) = self.centres.as_ref() else { return vec![Vector3::zeros()] };
+        let distance = |origin: &Vector3<f64>| {
+            self.primitive.lattice.to_cartesian(&self.primitive.from_cell(origin)).norm()
+        };
+        let chosen = self.nearest_image(&centres.origin().position);
+        if distance(&chosen) <= self.primitive.tolerance {
+            return vec![chosen];
+        }
+        let mut found: Vec<_> = centres
+            .classes
+            .iter()
+            .map(|centre| (centre.order, self.nearest_image(&centre.position)))
+            .collect();
+        // Distances that differ by rounding only are equal; the order of the classes is kept then.
+        let rounded = |origin: &Vector3<f64>| (distance(origin) * 1e3).round();
+        found.sort_by(|a, b| b.0.cmp(&a.0).then(rounded(&a.1).total_cmp(&rounded(&b.1))));
+        found.into_iter().map(|(_, origin)| origin).collect()
+    }
+
+    /// Of a position in primitive axes and its lattice translations the one nearest to the origin, in the axes of the file.
+    fn nearest_image(&self, position: &Vector3<f64>) -> Vector3<f64> {
+        let lattice = &self.primitive.lattice;
+        let nearest = Reduced::new(lattice)
+            .map(|reduced| reduced.shortest_image(&lattice.to_cartesian(position)))
+            .map_or_else(|_| position.map(|x| x - x.round()), |vector| lattice.to_fractional(&vector));
+        self.primitive.to_cell(&nearest)
     }
 
     /// Lattice vectors in primitive axes, which are whole numbers.
