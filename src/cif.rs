@@ -19,6 +19,7 @@ mod parse;
 mod read;
 mod source;
 mod text;
+mod write;
 
 pub use document::{Block, Document, Element, Item, Pair, Row, Table, Tag, Value, ValueKind};
 pub use edit::{EditError, Edits};
@@ -27,3 +28,4 @@ pub use number::{Measured, parse_number};
 pub use operation::{OperationError, parse_operation};
 pub use parse::parse;
 pub use read::{BlockReading, Reading, SitePlace, StatedSymmetry, SymmetrySource, read_bytes, read_document};
+pub use write::{CifText, Datum, WriteError};

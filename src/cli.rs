@@ -1,5 +1,6 @@
 //! The command line: what may be typed, and what is done with it.
 
+mod build;
 mod check;
 mod classify;
 mod common;
@@ -34,6 +35,8 @@ enum Task {
     Facets(facets::Arguments),
     /// Say what is wrong or suspicious in files, with line, column and what to type
     Check(check::Arguments),
+    /// Write structures as CIF
+    Build(build::Arguments),
 }
 
 /// The definition of the command line, from which the manual pages are made.
@@ -59,6 +62,7 @@ pub fn run() -> Exit {
         Task::Enumerate(arguments) => enumerate::run(arguments),
         Task::Facets(arguments) => facets::run(arguments),
         Task::Check(arguments) => check::run(arguments),
+        Task::Build(arguments) => build::run(arguments),
     };
     outcome.unwrap_or_else(|error| {
         if output::is_broken_pipe(&error) {

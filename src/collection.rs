@@ -4,9 +4,11 @@ mod archive;
 mod classification;
 mod door;
 mod input;
+mod setting;
 
 pub use classification::{
     Classification, Material, PARENT_TOLERANCE, ParentLevel, Settings, classify_bytes, classify_input,
     classify_member, classify_unit,
 };
 pub use input::{Input, Member, find_inputs};
+pub use setting::{Axes, Recast, difference, recast};

@@ -4,5 +4,6 @@ pub mod facets;
 pub mod ladder;
 pub mod materials;
 pub mod record;
+pub mod setting;
 pub mod table;
 pub mod words;

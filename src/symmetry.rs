@@ -1,17 +1,21 @@
 //! Which operations map a crystal onto itself: the symmetry search, the primitive cell, and the centres of inversion.
 
 mod centre;
+mod change;
 pub mod engine;
 mod mapping;
 mod parent;
 mod primitive;
 pub mod setting;
+mod symmetrise;
 
 pub use centre::{Centre, Centres};
-pub use engine::{Engine, Symmetry, find_symmetry};
+pub use change::{Change, ChangeError, transform_text};
+pub use engine::{Engine, StandardCell, Symmetry, find_symmetry};
 pub use mapping::Mapping;
 pub use parent::Parent;
 pub use primitive::{Centring, Primitive};
+pub use symmetrise::{Symmetrised, symmetrise};
 
 use crate::crystal::Crystal;
 use crate::diagnostic::Diagnostic;

@@ -161,6 +161,15 @@ codes! {
     PolarizationWindow = "polarization-004", "the number of basis choices asked for is over the limit", "use a smaller --window";
     // Facets.
     FacetIndices = "facet-001", "the indices do not name a plane", "write a plane as --plane 0,0,1";
+    // Writing a structure.
+    BuildNoCentre = "build-001", "the crystal has no centre of inversion, so its origin was not moved to one", "nothing is wrong; the origin is stated in the file written";
+    BuildUncertainty = "build-002", "standard uncertainties do not hold in the setting written and were left out", "use --axes file to keep the axes";
+    BuildStandard = "build-003", "the engine gives no standardised cell", "use --engine moyo, or --axes primitive";
+    BuildSymmetryFound = "build-004", "the atoms have more symmetry than the file states, and were averaged over it", "lower --symmetry-tolerance to keep them apart";
+    BuildSymmetryKept = "build-005", "the symmetry found was not written", "raise --symmetry-tolerance, or use --axes primitive";
+    BuildWithoutResult = "build-006", "the structure was refused, so it is written without results", "see the reason in the message";
+    BuildItemDropped = "build-007", "an item of the source cannot be written and was left out", "copy it by hand";
+    BuildNotFaithful = "build-008", "what was written is not read back as the same crystal", "report this file as a fault of the program";
 }
 
 impl fmt::Display for Code {

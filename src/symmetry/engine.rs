@@ -11,6 +11,7 @@ mod spglib;
 use crate::crystal::{Crystal, Operation};
 use crate::diagnostic::{Code, Diagnostic};
 use ::moyo::data::{Setting, hall_symbol_entry};
+use nalgebra::{Matrix3, Vector3};
 use std::cell::Cell;
 use std::fmt;
 use std::panic::{self, AssertUnwindSafe};
@@ -77,6 +78,17 @@ pub struct Symmetry {
     pub orbits: Vec<usize>,
     /// The distance tolerance in Å that was actually used.
     pub tolerance: f64,
+    /// The standardised conventional cell, if the engine gives one.
+    pub standard: Option<StandardCell>,
+}
+
+/// Axes and origin of the standard setting (`symbol` and `hall` of [`Symmetry`]) in the axes of the crystal.
+#[derive(Debug, Clone, PartialEq)]
+pub struct StandardCell {
+    /// The vectors, one a column.
+    pub axes: Matrix3<f64>,
+    /// The origin.
+    pub origin: Vector3<f64>,
 }
 
 /// Order of the point group of a space-group number (International Tables for Crystallography, volume A, the ranges of

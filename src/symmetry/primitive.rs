@@ -228,7 +228,7 @@ impl Primitive {
 
 /// Engines accept images somewhat outside their tolerance; sites are at least half an Å apart, so that a search
 /// this much wider stays unique.
-fn match_limit(tolerance: f64) -> f64 {
+pub(super) fn match_limit(tolerance: f64) -> f64 {
     (4.0 * tolerance).clamp(0.02, 0.24)
 }
 

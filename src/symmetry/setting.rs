@@ -124,6 +124,18 @@ pub fn from_hall(symbol: &str) -> Option<Setting> {
     Some(Setting { hall_number: None, number, hm: String::new(), hall, group })
 }
 
+/// The setting whose operations these are, if it is one of the 530 usual ones.
+///
+/// ```
+/// use cosetta::symmetry::setting::{from_group, from_hall};
+/// let spinel = from_hall("-F4vw2vw3").unwrap();
+/// assert_eq!(from_group(spinel.group()).map(|setting| setting.hm), Some("F d -3 m :2".to_owned()));
+/// ```
+#[must_use]
+pub fn from_group(group: &Group) -> Option<Setting> {
+    table::by_group(group).and_then(table::Entry::setting)
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;

@@ -2,6 +2,7 @@
 
 #![allow(clippy::print_stdout, reason = "figures of a run are shown with --nocapture")]
 
+mod build;
 mod check;
 mod cif;
 mod commands;

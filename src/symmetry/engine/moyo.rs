@@ -1,6 +1,6 @@
 //! The engine moyo.
 
-use super::{Symmetry, standard_symbols};
+use super::{StandardCell, Symmetry, standard_symbols};
 use crate::crystal::{Crystal, Operation};
 use moyo::MoyoDataset;
 use moyo::base::{AngleTolerance, Cell, Lattice};
@@ -29,5 +29,6 @@ pub(super) fn find(crystal: &Crystal, kinds: &[i32], tolerance: f64) -> Result<S
         operations,
         orbits: dataset.orbits,
         tolerance: dataset.symprec,
+        standard: Some(StandardCell { axes: dataset.std_linear, origin: dataset.std_origin_shift }),
     })
 }

@@ -56,6 +56,7 @@ pub(super) fn find(crystal: &Crystal, kinds: &[i32], tolerance: f64) -> Result<S
         operations: found.operations()?,
         orbits: first_of_orbit(found.orbits()?)?,
         tolerance,
+        standard: None,
     })
 }
 
