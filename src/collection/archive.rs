@@ -3,92 +3,20 @@
 //! Everything that is unpacked counts towards one limit per archive, so that a small file cannot fill the memory. What
 //! is wrong with one member costs that member; the rest of an archive is lost only where its own frame is damaged.
 
-use super::door::{Format, Packing, is_gzip};
-use super::input::{MAX_FILE_BYTES, Member, refuse_blank, too_large};
-use crate::diagnostic::{Code, Diagnostic};
-use flate2::read::MultiGzDecoder;
-use std::cell::Cell;
-use std::io::{self, BufReader, Read, Seek};
-use zip::CompressionMethod;
+mod budget;
 
-/// What the error says that ends a reader at the limit.
-const OVER: &str = "over the limit of bytes to unpack";
+pub(super) use budget::Budget;
+
+use super::door::{Format, KNOWN_NAMES, Packing};
+use super::input::Member;
+use crate::diagnostic::{Code, Diagnostic};
+use budget::{damaged, is_over, nested};
+use flate2::read::MultiGzDecoder;
+use std::io::{BufReader, Read, Seek};
+use zip::CompressionMethod;
 
 /// Takes a member; an error of its own ends the walk.
 pub(super) type Take<'t, E> = dyn FnMut(Member) -> Result<(), E> + 't;
-
-/// How much may be unpacked, and how much has been.
-pub(super) struct Budget {
-    limit: u64,
-    spent: Cell<u64>,
-}
-
-/// A reader whose bytes count towards a limit.
-struct Counted<'b, R> {
-    inner: R,
-    budget: &'b Budget,
-}
-
-impl<R: Read> Read for Counted<'_, R> {
-    fn read(&mut self, buffer: &mut [u8]) -> io::Result<usize> {
-        if self.budget.is_over() {
-            return Err(io::Error::other(OVER));
-        }
-        let count = self.inner.read(buffer)?;
-        self.budget.spent.set(self.budget.spent.get().saturating_add(count as u64));
-        if self.budget.is_over() { Err(io::Error::other(OVER)) } else { Ok(count) }
-    }
-}
-
-impl Budget {
-    pub(super) fn new(limit: u64) -> Self {
-        Self { limit, spent: Cell::new(0) }
-    }
-
-    fn is_over(&self) -> bool {
-        self.spent.get() > self.limit
-    }
-
-    fn refusal(&self) -> Diagnostic {
-        let message =
-            format!("more than {} bytes would be unpacked, the limit of --max-unpacked", self.limit);
-        Diagnostic::error(Code::ArchiveTooLarge, message)
-            .hint(format!("--max-unpacked {}", self.limit.saturating_mul(4)))
-    }
-
-    fn read_all(&self, reader: impl Read) -> Result<Vec<u8>, Diagnostic> {
-        let mut bytes = Vec::new();
-        let counted = Counted { inner: reader, budget: self };
-        let outcome = counted.take(MAX_FILE_BYTES + 1).read_to_end(&mut bytes);
-        // The limit may also be that of the stream below.
-        if self.is_over() || outcome.as_ref().is_err_and(is_over) {
-            return Err(self.refusal());
-        }
-        outcome.map_err(|error| damaged(&error.to_string()))?;
-        if bytes.len() as u64 > MAX_FILE_BYTES { Err(too_large(bytes.len() as u64)) } else { Ok(bytes) }
-    }
-
-    /// The content itself: without a compression with gzip, refused where it is an archive or blank.
-    pub(super) fn unwrap(&self, bytes: Vec<u8>) -> Result<Vec<u8>, Diagnostic> {
-        let bytes =
-            if is_gzip(&bytes) { self.read_all(MultiGzDecoder::new(bytes.as_slice()))? } else { bytes };
-        if is_gzip(&bytes) || Packing::of_content(&bytes).is_some() {
-            return Err(nested());
-        }
-        refuse_blank(bytes)
-    }
-}
-
-fn damaged(why: &str) -> Diagnostic {
-    Diagnostic::error(Code::ArchiveDamaged, format!("the archive is damaged: {why}"))
-}
-
-fn nested() -> Diagnostic {
-    Diagnostic::error(
-        Code::ArchiveNested,
-        "an archive inside an archive, or under the name of a structure, is not opened",
-    )
-}
 
 /// The first bytes of what a gzip stream holds.
 pub(super) fn head_of_gzip(packed: &[u8]) -> Vec<u8> {
@@ -117,11 +45,11 @@ pub(super) fn visit<E>(
         Packing::TarGz => {
             let unpacked = Budget::new(limit);
             let stream = MultiGzDecoder::new(BufReader::new(source));
-            walk.tar(Counted { inner: stream, budget: &unpacked })?;
+            walk.tar(unpacked.counted(stream))?;
         }
     }
     if walk.found == 0 {
-        let message = format!("the archive holds nothing that is read: {}", super::door::KNOWN_NAMES);
+        let message = format!("the archive holds nothing that is read: {KNOWN_NAMES}");
         walk.give("", Err(Diagnostic::error(Code::FileNoInput, message)))?;
     }
     Ok(())
@@ -179,7 +107,7 @@ impl<E> Walk<'_, '_, E> {
                 Plan::Skip => continue,
                 Plan::Refuse(refusal) => Err(refusal),
                 Plan::Read => match archive.by_index(index) {
-                    Ok(file) => self.budget.read_all(file).and_then(|bytes| self.budget.unwrap(bytes)),
+                    Ok(file) => self.budget.read_all(file).and_then(|bytes| self.budget.content(bytes)),
                     Err(error) => Err(damaged(&error.to_string())),
                 },
             };
@@ -224,7 +152,7 @@ impl<E> Walk<'_, '_, E> {
                     };
                     // Without a sound end of this member the next cannot be found.
                     let is_last = content.as_ref().is_err_and(|refusal| refusal.code != Code::FileTooLarge);
-                    let content = content.and_then(|bytes| self.budget.unwrap(bytes));
+                    let content = content.and_then(|bytes| self.budget.content(bytes));
                     self.give(&path, content)?;
                     if is_last || self.budget.is_over() {
                         return Ok(());
@@ -234,18 +162,6 @@ impl<E> Walk<'_, '_, E> {
         }
         Ok(())
     }
-}
-
-/// Whether an error of the tar reader comes from a limit on the stream below it.
-fn is_over(error: &io::Error) -> bool {
-    let mut cause: Option<&dyn std::error::Error> = Some(error);
-    while let Some(error) = cause {
-        if error.to_string() == OVER {
-            return true;
-        }
-        cause = error.source();
-    }
-    false
 }
 
 fn plan(path: &str, is_file: bool, is_link: bool, is_encrypted: bool) -> Plan {
@@ -379,7 +295,7 @@ mod tests {
         let skipped: Files<'_> = &[("notes.txt", &zeros), ("c.cif", b"data_x")];
         let found = members(Packing::TarGz, &gzipped(&tarred(skipped)), 10_000);
         assert_eq!(found, [row("a", Some(Code::ArchiveTooLarge))]);
-        assert_eq!(Budget::new(10_000).unwrap(packed).expect_err("too much").code, Code::ArchiveTooLarge);
+        assert_eq!(Budget::new(10_000).content(packed).expect_err("too much").code, Code::ArchiveTooLarge);
         // The total counts, not each member.
         let many: Files<'_> = &[("a.cif", &zeros[..6_000]), ("b.cif", &zeros[..6_000])];
         assert_eq!(members(Packing::Zip, &zipped(many), 10_000)[1].1, Some(Code::ArchiveTooLarge));
@@ -452,7 +368,7 @@ mod tests {
         assert_eq!(members(Packing::TarGz, b"\x1f\x8bxx", 1 << 20), [row("a", Some(Code::ArchiveDamaged))]);
         let cut = gzipped(&[b'x'; 5_000]);
         assert_eq!(
-            Budget::new(1 << 20).unwrap(cut[..20].to_vec()).expect_err("cut").code,
+            Budget::new(1 << 20).content(cut[..20].to_vec()).expect_err("cut").code,
             Code::ArchiveDamaged
         );
     }

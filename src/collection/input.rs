@@ -59,7 +59,7 @@ impl Member {
     pub fn read(self) -> Result<Vec<u8>, Diagnostic> {
         match self.content {
             Content::Read(content) => content,
-            Content::File(path, limit) => Budget::new(limit).unwrap(read_file(&path)?),
+            Content::File(path, limit) => Budget::new(limit).content(read_file(&path)?),
         }
     }
 }
@@ -87,8 +87,8 @@ impl Input {
     pub fn read(&self) -> Result<Vec<u8>, Diagnostic> {
         let budget = Budget::new(MAX_FILE_BYTES);
         match self {
-            Self::File(path) => budget.unwrap(read_file(path)?),
-            Self::Stdin => budget.unwrap(read_stdin()?),
+            Self::File(path) => budget.content(read_file(path)?),
+            Self::Stdin => budget.content(read_stdin()?),
             Self::Fault(_, diagnostic) => Err(diagnostic.clone()),
         }
     }
@@ -110,7 +110,7 @@ impl Input {
             Self::Stdin => match read_stdin() {
                 Ok(bytes) => match packing_of(&name, &bytes) {
                     Some(packing) => archive::visit(&name, packing, Cursor::new(bytes), max_unpacked, take),
-                    None => take(Member::unpacked(name, Budget::new(max_unpacked).unwrap(bytes))),
+                    None => take(Member::unpacked(name, Budget::new(max_unpacked).content(bytes))),
                 },
                 Err(refusal) => take(Member::unpacked(name, Err(refusal))),
             },

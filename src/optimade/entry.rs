@@ -204,12 +204,13 @@ impl Reader<'_> {
     }
 
     fn lattice(&self, given: &Attributes<'_>) -> Result<Lattice, Diagnostic> {
-        let periodic: Option<u64> = given.dimension_types.as_ref().map(|types| types.iter().sum());
-        for (count, property) in
-            [(periodic, "dimension_types"), (given.nperiodic_dimensions, "nperiodic_dimensions")]
-        {
-            if let Some(count) = count.filter(|count| *count != 3) {
-                let message = format!("the structure is periodic in {count} dimensions, not in three");
+        let types = given.dimension_types.as_ref().filter(|types| **types != [1, 1, 1]);
+        let flat = types.map(|types| types.iter().filter(|kind| **kind == 1).count() as u64);
+        let count = given.nperiodic_dimensions.filter(|count| *count != 3);
+        for (count, property) in [(flat, "dimension_types"), (count, "nperiodic_dimensions")] {
+            if let Some(count) = count {
+                let message =
+                    format!("'{property}' says periodic in {count} dimensions, not in three of three");
                 return Err(self.refuse(Code::OptimadeDimensions, property, &message));
             }
         }
