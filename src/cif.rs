@@ -27,5 +27,8 @@ pub use lex::{Dialect, Lexer, Token, TokenKind};
 pub use number::{Measured, parse_number};
 pub use operation::{OperationError, parse_operation};
 pub use parse::parse;
-pub use read::{BlockReading, Reading, SitePlace, StatedSymmetry, SymmetrySource, read_bytes, read_document};
+pub use read::{
+    BlockReading, Reading, SitePlace, StatedSymmetry, SymmetrySource, is_structure, read_block, read_bytes,
+    read_document,
+};
 pub use write::{CifText, Datum, WriteError};

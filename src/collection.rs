@@ -2,6 +2,7 @@
 
 mod archive;
 mod classification;
+mod contents;
 mod door;
 mod input;
 mod setting;
@@ -10,5 +11,6 @@ pub use classification::{
     Classification, Material, PARENT_TOLERANCE, ParentLevel, Settings, classify_bytes, classify_input,
     classify_member, classify_unit,
 };
+pub use contents::Contents;
 pub use input::{Input, Member, find_inputs};
 pub use setting::{Axes, Recast, difference, recast};

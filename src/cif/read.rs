@@ -88,15 +88,23 @@ pub fn read_bytes(bytes: &[u8]) -> Reading {
 /// Reads every block of a document.
 #[must_use]
 pub fn read_document(document: &Document<'_>) -> Vec<BlockReading> {
-    document.blocks().map(|block| read_block(document, &block)).collect()
+    document.blocks().map(|block| read_block(&block)).collect()
 }
 
-fn read_block(document: &Document<'_>, block: &Block<'_, '_>) -> BlockReading {
+/// Whether a block has any item of a cell or of atom sites.
+#[must_use]
+pub fn is_structure(block: &Block<'_, '_>) -> bool {
+    has_cell(block) || has_sites(block)
+}
+
+/// Reads one block of a document.
+#[must_use]
+pub fn read_block(block: &Block<'_, '_>) -> BlockReading {
     let mut diagnostics = Vec::new();
     let mut reading = BlockReading {
         name: block.name.clone().into_owned(),
         span: block.span,
-        is_structure: has_cell(block) || has_sites(block),
+        is_structure: is_structure(block),
         unit: Err(Diagnostic::error(Code::CifNoStructure, "the block holds no cell and no atom sites")
             .at(block.span)),
         stated: StatedSymmetry::default(),
@@ -108,7 +116,7 @@ fn read_block(document: &Document<'_>, block: &Block<'_, '_>) -> BlockReading {
         diagnostics: Vec::new(),
     };
     if reading.is_structure {
-        reading.unit = read_unit(document, block, &mut reading, &mut diagnostics);
+        reading.unit = read_unit(block, &mut reading, &mut diagnostics);
     }
     diagnostics.sort_by_key(|found| found.span.map_or(block.span.start, |span| span.start));
     reading.diagnostics = diagnostics;
@@ -116,7 +124,6 @@ fn read_block(document: &Document<'_>, block: &Block<'_, '_>) -> BlockReading {
 }
 
 fn read_unit(
-    document: &Document<'_>,
     block: &Block<'_, '_>,
     reading: &mut BlockReading,
     noticed: &mut Vec<Diagnostic>,
@@ -134,8 +141,13 @@ fn read_unit(
         formula: formula.as_ref(),
         units: reading.formula_units,
     };
-    let (stated, operations) =
-        read_symmetry(block, document.source(), &lattice, |operations| evidence.misfit(operations), noticed);
+    let (stated, operations) = read_symmetry(
+        block,
+        block.document().source(),
+        &lattice,
+        |operations| evidence.misfit(operations),
+        noticed,
+    );
     reading.stated = stated;
     let operations = operations?;
     check_metric(block, &lattice, &uncertainty, &operations, noticed);

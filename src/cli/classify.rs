@@ -3,7 +3,7 @@
 use super::common::{self, OutputOptions, StructureOptions};
 use super::exit::Exit;
 use super::output::{self, Output};
-use crate::collection::{Material, Member, Settings, classify_member, find_inputs};
+use crate::collection::{Contents, Material, Member, Settings, classify_member, find_inputs};
 use crate::diagnostic::Code;
 use crate::report::record::MaterialRecord;
 use crate::report::table::Table;
@@ -20,6 +20,8 @@ use std::path::PathBuf;
 const CHUNK: usize = 256;
 /// Unpacked members are worked on together up to this many bytes.
 const CHUNK_BYTES: usize = 64 << 20;
+/// The structures of a file from this many bytes up are worked on together and written as they come.
+const LARGE: u64 = 8 << 20;
 
 /// Label each material: its polarization lattice, and whether it contains zero.
 ///
@@ -123,6 +125,10 @@ struct Run<'a> {
 
 impl Run<'_> {
     fn take(&mut self, member: Member) -> anyhow::Result<()> {
+        if member.length() >= LARGE {
+            self.flush()?;
+            return self.take_large(member);
+        }
         self.held += member.held();
         self.chunk.push(member);
         if self.chunk.len() >= CHUNK || self.held >= CHUNK_BYTES { self.flush() } else { Ok(()) }
@@ -142,14 +148,40 @@ impl Run<'_> {
             Some(pool) if chunk.len() > 1 => pool.install(|| chunk.into_par_iter().map(one).collect()),
             _ => chunk.into_iter().map(one).collect(),
         };
-        for material in results.into_iter().flatten() {
-            self.tally.add(&material);
-            if self.is_verbose {
-                self.progress.suspend(|| talk_diagnostics(&material));
-            }
-            self.sink.take(material)?;
+        results.into_iter().flatten().try_for_each(|material| self.tell(material))
+    }
+
+    /// Classifies the structures of one file in parallel.
+    fn take_large(&mut self, member: Member) -> anyhow::Result<()> {
+        let name = member.name.clone();
+        let bytes = match member.read() {
+            Ok(bytes) => bytes,
+            Err(refusal) => return self.tell(Material::refused(&name, refusal)),
+        };
+        let settings = self.sink.settings;
+        let contents = match Contents::open(&name, &bytes, settings) {
+            Ok(contents) => contents,
+            Err(refused) => return self.tell(*refused),
+        };
+        for first in (0..contents.len()).step_by(CHUNK) {
+            let numbers = first..(first + CHUNK).min(contents.len());
+            let one = |number| contents.classify(number, settings);
+            let results: Vec<Material> = match &self.pool {
+                Some(pool) => pool.install(|| numbers.into_par_iter().map(one).collect()),
+                None => numbers.map(one).collect(),
+            };
+            results.into_iter().try_for_each(|material| self.tell(material))?;
         }
+        self.progress.inc(1);
         Ok(())
+    }
+
+    fn tell(&mut self, material: Material) -> anyhow::Result<()> {
+        self.tally.add(&material);
+        if self.is_verbose {
+            self.progress.suspend(|| talk_diagnostics(&material));
+        }
+        self.sink.take(material)
     }
 }
 

@@ -1,7 +1,6 @@
 //! From an input to a label: reads, expands, searches symmetry, assigns charges, sums the polarization.
 
-use super::door::{self, Structure};
-use super::{Input, Member};
+use super::{Contents, Input, Member};
 use crate::charge::{self, Assignment, Given, Known};
 use crate::crystal::{AsymmetricUnit, Crystal, ExpandTolerance, Formula};
 use crate::diagnostic::{Code, Diagnostic};
@@ -9,9 +8,6 @@ use crate::polarization::FormalPolarization;
 use crate::symmetry::{Centres, Engine, Parent, Primitive, Symmetry, analyse};
 use std::collections::BTreeSet;
 use std::convert::Infallible;
-
-/// So many names are listed when none of them is the one that was asked for.
-const BLOCKS_NAMED: usize = 20;
 
 /// What a classification is asked to use. Printed in every report.
 #[derive(Debug, Clone)]
@@ -170,68 +166,10 @@ pub fn classify_member(member: Member, settings: &Settings) -> Vec<Material> {
 /// (headers of a publication, entries of other types) are skipped when another part holds one. At least one material.
 #[must_use]
 pub fn classify_bytes(file: &str, bytes: &[u8], settings: &Settings) -> Vec<Material> {
-    let (structures, mut first_diagnostics) = match door::read(file, bytes) {
-        Ok(read) => read,
-        Err(refusal) => return vec![Material::refused(file, refusal)],
-    };
-    if structures.is_empty() {
-        let refusal = Diagnostic::error(Code::FileEmpty, "the file holds no data block")
-            .hint("a CIF starts with data_ and a name");
-        let mut material = Material::refused(file, refusal);
-        material.classification.diagnostics = first_diagnostics;
-        return vec![material];
+    match Contents::open(file, bytes, settings) {
+        Ok(contents) => (0..contents.len()).map(|number| contents.classify(number, settings)).collect(),
+        Err(refused) => vec![*refused],
     }
-    let is_wanted =
-        |name: &str| settings.block.as_ref().is_none_or(|wanted| name.eq_ignore_ascii_case(wanted));
-    if let Some(wanted) = &settings.block
-        && !structures.iter().any(|structure| is_wanted(&structure.name))
-    {
-        let refusal = unknown_block(wanted, &structures);
-        return vec![Material { block: wanted.clone(), ..Material::refused(file, refusal) }];
-    }
-    let any_structure = structures.iter().any(|structure| structure.is_structure);
-    structures
-        .into_iter()
-        .filter(|structure| {
-            is_wanted(&structure.name)
-                && (settings.block.is_some() || structure.is_structure || !any_structure)
-        })
-        .map(|structure| {
-            classify_structure(file, &structure, std::mem::take(&mut first_diagnostics), settings)
-        })
-        .collect()
-}
-
-fn classify_structure(
-    file: &str,
-    structure: &Structure,
-    mut diagnostics: Vec<Diagnostic>,
-    settings: &Settings,
-) -> Material {
-    let mut classification = match &structure.unit {
-        Ok(unit) => classify_unit(unit, settings),
-        Err(refusal) => Classification::refused(refusal.clone()),
-    };
-    diagnostics.extend(structure.diagnostics.iter().cloned());
-    let found = std::mem::take(&mut classification.diagnostics);
-    diagnostics.extend(found.into_iter().map(|found| structure.locate(found)));
-    classification.diagnostics = diagnostics;
-    classification.outcome = classification.outcome.map_err(|refusal| structure.locate(refusal));
-    Material { file: file.to_owned(), block: structure.name.clone(), classification }
-}
-
-fn unknown_block(wanted: &str, structures: &[Structure]) -> Diagnostic {
-    let names: Vec<_> =
-        structures.iter().map(|structure| structure.name.as_str()).filter(|name| !name.is_empty()).collect();
-    let Some(first) = names.first() else {
-        let message =
-            format!("the file has no data block '{wanted}': its format has no names for structures");
-        return Diagnostic::error(Code::FileUnknownBlock, message);
-    };
-    let more = if names.len() > BLOCKS_NAMED { ", ..." } else { "" };
-    let some = names.iter().take(BLOCKS_NAMED).copied().collect::<Vec<_>>().join(", ");
-    let message = format!("the file has no data block '{wanted}'; it has: {some}{more}");
-    Diagnostic::error(Code::FileUnknownBlock, message).hint(format!("--block {first}"))
 }
 
 /// Classifies one structure.

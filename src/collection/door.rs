@@ -1,11 +1,6 @@
-//! The one place that decides which format an input is in, and turns it into structures.
+//! The one place that decides which format an input is in.
 //!
 //! The name decides where it says something, else the content.
-
-use crate::cif::{self, BlockReading};
-use crate::crystal::AsymmetricUnit;
-use crate::diagnostic::{Code, Diagnostic, Span};
-use crate::{optimade, poscar};
 
 /// A format that structures are read from.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -123,85 +118,6 @@ impl Packing {
 /// Whether a content is compressed with gzip.
 pub(super) fn is_gzip(bytes: &[u8]) -> bool {
     bytes.starts_with(b"\x1f\x8b")
-}
-
-/// One structure of an input.
-pub(super) struct Structure {
-    /// Data block, or id of the entry; empty where the format has no names.
-    pub(super) name: String,
-    /// Whether it is meant to be a structure, and not something that stands beside them.
-    pub(super) is_structure: bool,
-    pub(super) unit: Result<AsymmetricUnit, Diagnostic>,
-    pub(super) diagnostics: Vec<Diagnostic>,
-    places: Places,
-}
-
-/// Where the sites of a structure are in the source.
-enum Places {
-    Cif(Box<BlockReading>),
-    /// One for each site.
-    Sites(Vec<Span>),
-}
-
-impl Structure {
-    /// A finding about a listed site, with its place in the source.
-    pub(super) fn locate(&self, finding: Diagnostic) -> Diagnostic {
-        let span = match &self.places {
-            Places::Cif(block) => return block.locate(finding),
-            Places::Sites(spans) => finding.site.and_then(|site| spans.get(site)).copied(),
-        };
-        match span {
-            Some(span) if finding.span.is_none() => finding.at(span),
-            _ => finding,
-        }
-    }
-}
-
-/// Reads all structures of an input. The second value holds what is to be said of the input as a whole.
-///
-/// # Errors
-/// What keeps the input from being read at all.
-pub(super) fn read(path: &str, bytes: &[u8]) -> Result<(Vec<Structure>, Vec<Diagnostic>), Diagnostic> {
-    match Format::of(path, bytes) {
-        Format::Cif => Ok(read_cif(bytes)),
-        Format::Poscar => {
-            let poscar = poscar::read_bytes(bytes)?;
-            let structure = Structure {
-                name: String::new(),
-                is_structure: true,
-                unit: poscar.unit(),
-                diagnostics: poscar.diagnostics,
-                places: Places::Sites(poscar.places),
-            };
-            Ok((vec![structure], Vec::new()))
-        }
-        Format::Optimade => {
-            let entries = optimade::read_bytes(bytes)?;
-            let structures = entries.into_iter().map(|entry| Structure {
-                name: entry.id,
-                is_structure: entry.is_structure,
-                unit: entry.unit,
-                diagnostics: entry.diagnostics,
-                places: Places::Sites(entry.site_places),
-            });
-            Ok((structures.collect(), Vec::new()))
-        }
-    }
-}
-
-fn read_cif(bytes: &[u8]) -> (Vec<Structure>, Vec<Diagnostic>) {
-    let reading = cif::read_bytes(bytes);
-    let structures = reading.blocks.into_iter().map(|mut block| Structure {
-        name: block.name.clone(),
-        is_structure: block.is_structure,
-        unit: std::mem::replace(
-            &mut block.unit,
-            Err(Diagnostic::error(Code::CifNoStructure, "the structure was taken out")),
-        ),
-        diagnostics: std::mem::take(&mut block.diagnostics),
-        places: Places::Cif(Box::new(block)),
-    });
-    (structures.collect(), reading.diagnostics)
 }
 
 #[cfg(test)]

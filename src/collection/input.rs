@@ -51,6 +51,15 @@ impl Member {
         }
     }
 
+    /// How many bytes the member has before it is unpacked; zero when that cannot be told.
+    #[must_use]
+    pub fn length(&self) -> u64 {
+        match &self.content {
+            Content::File(path, _) => fs::metadata(path).map_or(0, |found| found.len()),
+            Content::Read(content) => content.as_ref().map_or(0, |bytes| bytes.len() as u64),
+        }
+    }
+
     /// The content, without compression.
     ///
     /// # Errors

@@ -350,9 +350,11 @@ mod tests {
     #[test]
     fn a_crowd_of_sites_is_refused_at_once() {
         // With all pairs in memory this would take 16 bytes × 2e8.
-        let lattice = Lattice::from_parameters(&CellParameters { lengths: [4.0; 3], angles: [90.0; 3] }).expect("cubic");
+        let lattice = Lattice::from_parameters(&CellParameters { lengths: [4.0; 3], angles: [90.0; 3] })
+            .expect("cubic");
         let sites = vec![Site { occupancy: 1e-5, ..site("O1", "O", [0.1, 0.2, 0.3]) }; 20_000];
-        let refusal = Crystal::from_sites(lattice, sites, &ExpandTolerance::default()).expect_err("no crystal");
+        let refusal =
+            Crystal::from_sites(lattice, sites, &ExpandTolerance::default()).expect_err("no crystal");
         assert_eq!(refusal.code, Code::SitesTooClose);
     }
 

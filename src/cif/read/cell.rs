@@ -45,7 +45,7 @@ pub(super) fn optional_number(
 
 /// Whether the block has any item of the cell.
 pub(super) fn has_cell(block: &Block<'_, '_>) -> bool {
-    CELL.iter().any(|tags| value_of(block, tags).is_some())
+    CELL.iter().copied().flatten().any(|tag| block.has(tag))
 }
 
 /// The lattice, and the standard uncertainties of the six parameters.

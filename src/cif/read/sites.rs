@@ -37,7 +37,7 @@ pub(super) struct Sites {
 
 /// Whether the block has any item of the atom sites.
 pub(super) fn has_sites(block: &Block<'_, '_>) -> bool {
-    SITE.iter().any(|tags| value_of(block, tags).is_some())
+    SITE.iter().copied().flatten().any(|tag| block.has(tag))
 }
 
 /// Reads the atom sites.

@@ -47,7 +47,10 @@ fn what_a_text_field_cannot_hold_goes_to_the_second_edition() {
         assert!(written.starts_with("#\\#CIF_2.0\n"), "{written}");
         let (document, found) = parse(written.as_bytes());
         assert!(found.is_empty() && document.dialect == Dialect::Two);
-        assert_eq!(document.block(0).and_then(|block| block.value("_a")).map(|value| value.text), Some(text.into()));
+        assert_eq!(
+            document.block(0).and_then(|block| block.value("_a")).map(|value| value.text),
+            Some(text.into())
+        );
     }
     assert_eq!(one("a\n;'''\"\"\""), Err(WriteError::Delimiters));
     assert_eq!(one("\u{7}"), Err(WriteError::Character { code: 7 }));
@@ -68,8 +71,14 @@ fn long_lines_are_broken_between_values() {
     assert!(found.is_empty(), "{found:?}");
     let table = document.block(0).expect("a block").table(&[&["_b"], &["_c"], &["_d"]]).expect("a loop");
     assert_eq!(table.rows(), 3);
-    assert_eq!(table.row(1).and_then(|row| row.into_value(1)).map(|value| value.text), Some("two\nlines".into()));
-    assert_eq!(table.row(2).and_then(|row| row.into_value(2)).map(|value| value.text), Some(long.as_str().into()));
+    assert_eq!(
+        table.row(1).and_then(|row| row.into_value(1)).map(|value| value.text),
+        Some("two\nlines".into())
+    );
+    assert_eq!(
+        table.row(2).and_then(|row| row.into_value(2)).map(|value| value.text),
+        Some(long.as_str().into())
+    );
 }
 
 #[test]

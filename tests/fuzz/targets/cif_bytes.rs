@@ -3,7 +3,7 @@
 
 #![no_main]
 
-use cosetta::cif::{Block, Item, parse, read_bytes};
+use cosetta::cif::{Block, Document, Item, Value, parse, read_bytes};
 use cosetta::crystal::ExpandTolerance;
 use cosetta::diagnostic::{Diagnostic, Span};
 use libfuzzer_sys::fuzz_target;
@@ -11,10 +11,10 @@ use libfuzzer_sys::fuzz_target;
 fuzz_target!(|bytes: &[u8]| {
     let (document, found) = parse(bytes);
     found.iter().for_each(|finding| check_finding(bytes, finding));
-    document.blocks.iter().for_each(|block| check_block(bytes, block));
+    document.blocks().for_each(|block| check_block(bytes, &block));
 
     let reading = read_bytes(bytes);
-    assert_eq!(reading.blocks.len(), document.blocks.len(), "each block has its reading");
+    assert_eq!(reading.blocks.len(), document.blocks().len(), "each block has its reading");
     for block in &reading.blocks {
         block.diagnostics.iter().for_each(|finding| check_finding(bytes, finding));
         match &block.unit {
@@ -30,22 +30,37 @@ fuzz_target!(|bytes: &[u8]| {
     }
 });
 
-fn check_block(bytes: &[u8], block: &Block<'_>) {
+fn check_block(bytes: &[u8], block: &Block<'_, '_>) {
     check_span(bytes, block.span);
-    for item in &block.items {
+    for item in block.items() {
         match item {
             Item::Pair(pair) => {
                 check_span(bytes, pair.tag.span);
-                check_span(bytes, pair.value.span);
+                check_value(block.document(), &pair.value);
             }
             Item::Loop(table) => {
-                check_span(bytes, table.span);
-                table.values.iter().for_each(|value| check_span(bytes, value.span));
-                assert_eq!(table.values.len(), table.rows() * table.tags.len(), "whole rows");
+                table.span().into_iter().for_each(|span| check_span(bytes, span));
+                let columns = table.tags().flatten().count();
+                for row in table.iter() {
+                    let values: Vec<_> = (0..columns).filter_map(|column| row.value(column)).collect();
+                    assert_eq!(values.len(), columns, "whole rows");
+                    values.into_iter().for_each(|value| check_value(block.document(), value));
+                }
             }
         }
     }
-    block.frames.iter().for_each(|frame| check_block(bytes, frame));
+    block.frames().for_each(|frame| check_block(bytes, &frame));
+}
+
+/// A value and the first of its members, down to a depth that a loop reaches quickly.
+fn check_value(document: &Document<'_>, value: &Value<'_>) {
+    check_span(document.source(), value.span);
+    let mut value = value.clone();
+    for _ in 0..4 {
+        let Some(first) = document.elements(&value).into_iter().next() else { return };
+        check_span(document.source(), first.value.span);
+        value = first.value;
+    }
 }
 
 fn check_finding(bytes: &[u8], finding: &Diagnostic) {
