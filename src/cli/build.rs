@@ -15,6 +15,7 @@ use std::path::PathBuf;
 
 /// Write structures as CIF.
 #[derive(Debug, Args)]
+#[command(disable_help_subcommand = true)]
 pub(super) struct Arguments {
     #[command(subcommand)]
     work: Work,
@@ -110,7 +111,9 @@ fn setting(arguments: SettingArguments) -> anyhow::Result<Exit> {
             let least = if arguments.output.quiet { Severity::Error } else { Severity::Note };
             found.severity >= least
         });
-        for diagnostic in shown.chain(outcome.as_ref().err()) {
+        let of_source =
+            source.material.classification.diagnostics.iter().filter(|_| arguments.output.verbose);
+        for diagnostic in of_source.chain(shown).chain(outcome.as_ref().err()) {
             output::talk(&format!("{name} {}: {diagnostic}", source.material.block));
         }
         if outcome.is_err() {

@@ -1,6 +1,7 @@
 //! What is needed to move a structure: its symmetry, primitive cell and centres, searched with shared sites as one kind.
 
-use super::{Axes, point_group_order, scaled};
+use super::Axes;
+use super::source::scaled;
 use crate::cell::{Reduced, contacts_within};
 use crate::collection::classification::{Classification, Settings};
 use crate::crystal::{AsymmetricUnit, Crystal, ExpandTolerance};
@@ -217,4 +218,9 @@ fn kinds(crystal: &Crystal, members: &[Vec<usize>]) -> Vec<i32> {
             *known.entry(content).or_insert(next)
         })
         .collect()
+}
+
+/// How many rotations there are.
+fn point_group_order(group: &Group) -> usize {
+    group.order() / group.translations().max(1)
 }
