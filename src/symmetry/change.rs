@@ -222,7 +222,7 @@ impl Change {
 }
 
 /// Into [0, 1), with rounding noise below 1 taken for 0.
-pub(super) fn wrap(position: &Vector3<f64>) -> Vector3<f64> {
+pub(crate) fn wrap(position: &Vector3<f64>) -> Vector3<f64> {
     position.map(|x| {
         let wrapped = x - x.floor();
         if wrapped > 1.0 - WRAP || wrapped < WRAP { 0.0 } else { wrapped }

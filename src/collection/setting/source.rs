@@ -5,7 +5,7 @@ use super::frame::{Frame, file_group};
 use crate::crystal::{AsymmetricUnit, Crystal, Site};
 use crate::diagnostic::{Code, Diagnostic};
 use crate::symmetry::setting::{Motion, UNIT, from_group, from_hall};
-use crate::symmetry::{Change, ChangeError, symmetrise};
+use crate::symmetry::{Change, ChangeError, symmetrise, wrap};
 use nalgebra::{Matrix3, Vector3};
 
 /// Cells with more operations than this, supercells of small ones, are written with every atom in place of all operations.
@@ -60,8 +60,8 @@ impl Source<'_> {
             Ok((moved, largest_move)) => {
                 if !is_whole {
                     let message = format!(
-                        "the file states {} operations; {} were found and are written, and cell and atoms were averaged over them: \
-                         atoms moved by up to {largest_move:.1e} Å",
+                        "the file states {} of the {} operations found; cell and atoms were averaged over all of them, \
+                         which moved atoms by up to {largest_move:.4} Å",
                         self.unit.operations.len().max(1),
                         moved.unit.operations.len()
                     );
@@ -148,7 +148,7 @@ impl Source<'_> {
 
     /// Every atom of the file's cell from another origin, without operations.
     fn listed(&self, origin: &Vector3<f64>) -> Moved {
-        let position = |atom: usize| (self.crystal.sites[atom].position - origin).map(|x| x - x.floor());
+        let position = |atom: usize| wrap(&(self.crystal.sites[atom].position - origin));
         let sites: Vec<Site> =
             (0..self.crystal.sites.len()).map(|atom| self.charged(atom, position(atom))).collect();
         Moved {
