@@ -111,17 +111,17 @@ fn finish(
     number: Option<u16>,
     mut noticed: Vec<Diagnostic>,
 ) -> Result<Recast, Diagnostic> {
-    let (cell_uncertainty, mut site_uncertainty, mut has_lost) = uncertainties(reading, &moved);
+    let mut known = Uncertainties::of(reading, &moved);
     let mut made = moved;
     if is_expanded {
-        has_lost |= site_uncertainty.iter().flatten().any(Option::is_some);
+        known.has_lost |= known.sites.iter().flatten().any(Option::is_some);
         let (all, _) = made.unit.expand(&settings.expand)?;
         made.sources = all.origins.iter().map(|&origin| made.sources[origin]).collect();
         made.multiplicities = vec![1; all.sites.len()];
-        site_uncertainty = vec![[None; 3]; all.sites.len()];
+        known.sites = vec![[None; 3]; all.sites.len()];
         made.unit = AsymmetricUnit { lattice: all.lattice, sites: all.sites, operations: Vec::new() };
     }
-    if has_lost {
+    if known.has_lost {
         let message = "standard uncertainties were left out, since they do not hold for the cell and sites that are written";
         noticed.push(Diagnostic::note(Code::BuildUncertainty, message));
     }
@@ -131,35 +131,47 @@ fn finish(
     } else {
         file_group(&made.unit).as_ref().and_then(from_group)
     };
-    let known = setting.as_ref().and_then(|setting| setting.number);
+    let named = setting.as_ref().and_then(|setting| setting.number);
     Ok(Recast {
-        number: known.or(number.filter(|_| !is_expanded)),
+        number: named.or(number.filter(|_| !is_expanded)),
         setting,
         unit: made.unit,
         multiplicities: made.multiplicities,
         sources: made.sources,
-        cell_uncertainty,
-        site_uncertainty,
+        cell_uncertainty: known.cell,
+        site_uncertainty: known.sites,
         axes: made.axes,
         origin: made.origin,
         diagnostics: noticed,
     })
 }
 
-/// Uncertainties of cell and sites that hold in the new setting, and whether others were lost: they hold where axes only
-/// change their order or direction.
-fn uncertainties(reading: &BlockReading, moved: &Moved) -> ([Option<f64>; 6], Vec<[Option<f64>; 3]>, bool) {
-    let Some((order, _)) = moved.change.as_ref().and_then(Change::permutation) else {
-        let of_sites = reading.site_uncertainty.iter().flatten();
-        let has_any = reading.cell_uncertainty.iter().chain(of_sites).any(Option::is_some);
-        return ([None; 6], vec![[None; 3]; moved.unit.sites.len()], has_any);
-    };
-    let cell = [0, 1, 2, 3, 4, 5].map(|i: usize| reading.cell_uncertainty[order[i % 3] + i / 3 * 3]);
-    let of_site = |&source: &usize| {
-        let known = reading.site_uncertainty.get(source).copied().unwrap_or_default();
-        order.map(|axis| known[axis])
-    };
-    (cell, moved.sources.iter().map(of_site).collect(), false)
+/// What is known about uncertainties in the new setting.
+struct Uncertainties {
+    cell: [Option<f64>; 6],
+    sites: Vec<[Option<f64>; 3]>,
+    /// Whether some do not hold there.
+    has_lost: bool,
+}
+
+impl Uncertainties {
+    /// They hold where axes only change their order or direction.
+    fn of(reading: &BlockReading, moved: &Moved) -> Self {
+        let Some((order, _)) = moved.change.as_ref().and_then(Change::permutation) else {
+            let of_sites = reading.site_uncertainty.iter().flatten();
+            let has_lost = reading.cell_uncertainty.iter().chain(of_sites).any(Option::is_some);
+            return Self { cell: [None; 6], sites: vec![[None; 3]; moved.unit.sites.len()], has_lost };
+        };
+        let of_site = |&source: &usize| {
+            let known = reading.site_uncertainty.get(source).copied().unwrap_or_default();
+            order.map(|axis| known[axis])
+        };
+        Self {
+            cell: [0, 1, 2, 3, 4, 5].map(|i: usize| reading.cell_uncertainty[order[i % 3] + i / 3 * 3]),
+            sites: moved.sources.iter().map(of_site).collect(),
+            has_lost: false,
+        }
+    }
 }
 
 /// Gives sites of the same label different ones: `O1`, `O1_2`, `O1_3`.

@@ -179,11 +179,8 @@ fn write_symmetry(text: &mut CifText, recast: &Recast) -> Result<(), WriteError>
 /// An element with its oxidation number, such as `Fe3+`.
 fn type_symbol(site: &Site) -> String {
     let Some(number) = site.oxidation else { return site.element.to_string() };
-    let size = match Datum::number(number.abs(), 4) {
-        Datum::Number(size) => size,
-        _ => return site.element.to_string(),
-    };
-    format!("{}{size}{}", site.element, if number < 0.0 { '-' } else { '+' })
+    let Datum::Number(magnitude) = Datum::number(number.abs(), 4) else { return site.element.to_string() };
+    format!("{}{magnitude}{}", site.element, if number < 0.0 { '-' } else { '+' })
 }
 
 fn write_sites(text: &mut CifText, recast: &Recast) -> Result<(), WriteError> {
