@@ -34,7 +34,7 @@ enum Work {
 /// makes a setting of the International Tables, the one of the highest site symmetry and the nearest among equals. A crystal
 /// without centres keeps its origin. Where the atoms have
 /// more symmetry than the file states, they are averaged over it. What was written is read back and classified again, and
-/// refused if anything differs.
+/// refused if anything differs. Displacement parameters, magnetic moments and bonds are not carried over.
 #[derive(Debug, Args)]
 #[command(
     after_help = "Example:\n  cosetta build setting structures/mgal2o4-spinel.cif --axes primitive -o spinel.cif\n\n\

@@ -153,7 +153,7 @@ fn write_cell(text: &mut CifText, recast: &Recast) -> Result<(), WriteError> {
     for ((tag, value), uncertainty) in TAGS.iter().zip(values).zip(recast.cell_uncertainty) {
         text.pair(tag, &Datum::measured(*value, uncertainty))?;
     }
-    text.pair("_cell_volume", &Datum::number(recast.unit.lattice.volume(), 6))
+    text.pair("_cell_volume", &Datum::number(recast.unit.lattice.volume(), 4))
 }
 
 fn write_symmetry(text: &mut CifText, recast: &Recast) -> Result<(), WriteError> {

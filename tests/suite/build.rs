@@ -157,6 +157,32 @@ fn demo_structures_stay_the_same_crystals() {
     assert!(count >= 4 * 67, "{count} structures written");
 }
 
+#[test]
+fn a_file_that_was_written_is_written_alike() {
+    // But for what is said about the source, which is then the file that was written.
+    let bare = |text: &str| text.split("# P and p").next().map(str::to_owned);
+    for file in [
+        "mgal2o4-spinel",
+        "al2o3-corundum",
+        "dysco3-perovskite",
+        "zno-wurtzite",
+        "ga2o3-beta",
+        "zro2-baddeleyite",
+    ] {
+        for axes in ["file", "standard", "primitive"] {
+            let (_, once, _) = build(&format!("structures/{file}.cif"), &["--axes", axes]);
+            let again = if axes == "primitive" { "file" } else { axes };
+            let (status, twice, talk) = run(&["build", "setting", "-", "--axes", again], &once);
+            assert_eq!(status, 0, "{talk}");
+            assert_eq!(bare(&once), bare(&twice), "{file} {axes}");
+            assert!(
+                twice.contains("_cosetta_transform_Pp_abc         a,b,c;0,0,0\n"),
+                "{file} {axes}\n{twice}"
+            );
+        }
+    }
+}
+
 /// Spinel in origin choice 1, with an uncertainty, an author and a shared site if asked for.
 fn spinel(aluminium: &str) -> String {
     format!(
@@ -339,4 +365,14 @@ fn files_of_the_data_sets_stay_the_same_crystals() {
         println!("{count:>6} {key}");
     }
     assert!(faults.is_empty(), "{} exceptions:\n{}", faults.len(), faults.join("\n"));
+}
+
+#[test]
+#[cfg(feature = "spglib")]
+fn an_engine_without_standard_cell_is_refused_by_name() {
+    let (status, text, talk) =
+        build("structures/mgal2o4-spinel.cif", &["--engine", "spglib", "--axes", "standard"]);
+    assert_eq!((status, text.as_str()), (1, ""));
+    assert!(talk.contains("build-003") && talk.contains("--engine moyo"), "{talk}");
+    assert_eq!(build("structures/mgal2o4-spinel.cif", &["--engine", "spglib"]).0, 0);
 }

@@ -146,7 +146,7 @@ impl<'a> Frame<'a> {
             let miss = (scaled - scaled.map(f64::round)).abs().max() / 24.0;
             return (miss < FRACTION).then(|| whole(scaled.map(f64::round) * (unit / 24.0)));
         }
-        let limit = (4.0 * self.primitive.tolerance).clamp(0.02, 0.24);
+        let limit = self.wide_reach();
         let inversions = group.motions().iter().filter(|motion| motion.to_operation().is_inversion());
         let candidates = inversions.filter_map(|motion| {
             let translation = Vector3::from(motion.translation().map(f64::from)) / unit;
@@ -158,6 +158,17 @@ impl<'a> Frame<'a> {
             (distance <= limit && is_exact).then(|| (distance, doubled.map(|units| units / 2)))
         });
         candidates.min_by(|a, b| a.0.total_cmp(&b.0)).map(|(_, shift)| shift)
+    }
+
+    /// Translations within this of a fraction, in Å, are taken for one: a thousandth is what four digits of a coordinate
+    /// leave open, and the tolerance of the search what the user does.
+    pub(super) fn reach(&self) -> f64 {
+        self.primitive.tolerance.max(1e-3)
+    }
+
+    /// The same where a fraction is known to be meant.
+    pub(super) fn wide_reach(&self) -> f64 {
+        (4.0 * self.primitive.tolerance).clamp(0.02, 0.24)
     }
 
     /// The number of the space group, if the operations of a structure in new axes are all of those found.

@@ -48,6 +48,8 @@ impl Source<'_> {
             noticed.push(Diagnostic::note(Code::BuildNoCentre, message));
         }
         let is_whole = frame.is_stated_in_full(self.unit, axes);
+        // The origin of the standard setting is known to give fractions, up to the noise of the positions.
+        let reach = if own_origin.is_some() { frame.wide_reach() } else { frame.reach() };
         let (vectors, origin) = match own_origin {
             Some(_) if is_whole && self.is_standard(frame) => (frame.target(Axes::File)?.0, Vector3::zeros()),
             Some(origin) => (vectors, origin),
@@ -56,7 +58,7 @@ impl Source<'_> {
         if is_whole && let Ok(moved) = self.as_stated(frame, &vectors, &origin) {
             return Ok(moved);
         }
-        let why = match self.averaged(frame, &vectors, &origin, |_| true) {
+        let why = match self.averaged(frame, &vectors, &origin, reach, |_| true) {
             Ok((moved, largest_move)) => {
                 if !is_whole {
                     let message = format!(
@@ -83,7 +85,7 @@ impl Source<'_> {
         }
         noticed.push(Diagnostic::warning(Code::BuildSymmetryKept, message("every atom is listed")));
         let (moved, _) =
-            self.averaged(frame, &vectors, &origin, |rotation| *rotation == Matrix3::identity())?;
+            self.averaged(frame, &vectors, &origin, reach, |rotation| *rotation == Matrix3::identity())?;
         Ok(moved)
     }
 
@@ -100,7 +102,7 @@ impl Source<'_> {
             let moved = if is_whole {
                 self.as_stated(frame, &vectors, origin)
             } else {
-                self.averaged(frame, &vectors, origin, |_| true).map(|(moved, _)| moved)
+                self.averaged(frame, &vectors, origin, frame.reach(), |_| true).map(|(moved, _)| moved)
             };
             moved.is_ok_and(|moved| file_group(&moved.unit).as_ref().and_then(from_group).is_some())
         };
@@ -200,6 +202,7 @@ impl Source<'_> {
         frame: &Frame<'_>,
         vectors: &Matrix3<i64>,
         origin: &Vector3<f64>,
+        reach: f64,
         keep: impl Fn(&Matrix3<i32>) -> bool,
     ) -> Result<(Moved, f64), Diagnostic> {
         let primitive = frame.primitive.as_ref();
@@ -208,7 +211,7 @@ impl Source<'_> {
             let rows = [0, 1, 2].map(|i| [0, 1, 2].map(|j| rotation[(i, j)]));
             Motion::new(rows, [0; 3]).is_some_and(|motion| change.motion(&motion).is_ok())
         };
-        let found = symmetrise(primitive, &primitive.from_cell(origin), |rotation| {
+        let found = symmetrise(primitive, &primitive.from_cell(origin), reach, |rotation| {
             keep(rotation) && is_whole(rotation)
         })?;
         let ratio = change.axes().determinant();
