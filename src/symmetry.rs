@@ -10,6 +10,7 @@ pub mod setting;
 mod symmetrise;
 
 pub use centre::{Centre, Centres};
+pub(crate) use change::wrap;
 pub use change::{Change, ChangeError, transform_text};
 pub use engine::{Engine, StandardCell, Symmetry, find_symmetry};
 pub use mapping::Mapping;

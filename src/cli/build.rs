@@ -15,6 +15,7 @@ use std::path::PathBuf;
 
 /// Write structures as CIF.
 #[derive(Debug, Args)]
+#[command(disable_help_subcommand = true)]
 pub(super) struct Arguments {
     #[command(subcommand)]
     work: Work,
@@ -33,7 +34,7 @@ enum Work {
 /// makes a setting of the International Tables, the one of the highest site symmetry and the nearest among equals. A crystal
 /// without centres keeps its origin. Where the atoms have
 /// more symmetry than the file states, they are averaged over it. What was written is read back and classified again, and
-/// refused if anything differs.
+/// refused if anything differs. Displacement parameters, magnetic moments and bonds are not carried over.
 #[derive(Debug, Args)]
 #[command(
     after_help = "Example:\n  cosetta build setting structures/mgal2o4-spinel.cif --axes primitive -o spinel.cif\n\n\
@@ -110,7 +111,9 @@ fn setting(arguments: SettingArguments) -> anyhow::Result<Exit> {
             let least = if arguments.output.quiet { Severity::Error } else { Severity::Note };
             found.severity >= least
         });
-        for diagnostic in shown.chain(outcome.as_ref().err()) {
+        let of_source =
+            source.material.classification.diagnostics.iter().filter(|_| arguments.output.verbose);
+        for diagnostic in of_source.chain(shown).chain(outcome.as_ref().err()) {
             output::talk(&format!("{name} {}: {diagnostic}", source.material.block));
         }
         if outcome.is_err() {

@@ -153,7 +153,7 @@ fn write_cell(text: &mut CifText, recast: &Recast) -> Result<(), WriteError> {
     for ((tag, value), uncertainty) in TAGS.iter().zip(values).zip(recast.cell_uncertainty) {
         text.pair(tag, &Datum::measured(*value, uncertainty))?;
     }
-    text.pair("_cell_volume", &Datum::number(recast.unit.lattice.volume(), 6))
+    text.pair("_cell_volume", &Datum::number(recast.unit.lattice.volume(), 4))
 }
 
 fn write_symmetry(text: &mut CifText, recast: &Recast) -> Result<(), WriteError> {
@@ -179,11 +179,8 @@ fn write_symmetry(text: &mut CifText, recast: &Recast) -> Result<(), WriteError>
 /// An element with its oxidation number, such as `Fe3+`.
 fn type_symbol(site: &Site) -> String {
     let Some(number) = site.oxidation else { return site.element.to_string() };
-    let size = match Datum::number(number.abs(), 4) {
-        Datum::Number(size) => size,
-        _ => return site.element.to_string(),
-    };
-    format!("{}{size}{}", site.element, if number < 0.0 { '-' } else { '+' })
+    let Datum::Number(magnitude) = Datum::number(number.abs(), 4) else { return site.element.to_string() };
+    format!("{}{magnitude}{}", site.element, if number < 0.0 { '-' } else { '+' })
 }
 
 fn write_sites(text: &mut CifText, recast: &Recast) -> Result<(), WriteError> {

@@ -29,6 +29,7 @@ pub struct Symmetrised {
 }
 
 /// Averages a primitive cell over those of its operations whose matrix is kept, as seen from an origin in primitive axes.
+/// Away from centres of inversion, translations within `reach` Å of `n/24` are taken for fractions.
 ///
 /// # Errors
 /// `symmetry-006` when a translation is near to no fraction from this origin, or the operations are no group or do not map
@@ -36,6 +37,7 @@ pub struct Symmetrised {
 pub fn symmetrise(
     primitive: &Primitive,
     origin: &Vector3<f64>,
+    reach: f64,
     keep: impl Fn(&Matrix3<i32>) -> bool,
 ) -> Result<Symmetrised, Diagnostic> {
     let limit = match_limit(primitive.tolerance);
@@ -46,9 +48,8 @@ pub fn symmetrise(
         let offset = (inversion.apply(origin) - origin).map(|x| x - x.round());
         primitive.lattice.to_cartesian(&offset).norm() <= 2.0 * limit
     });
-    let steps = if is_centre { 2 } else { 24 };
-    let motions =
-        kept.iter().map(|operation| snapped(operation, origin, steps, &primitive.lattice, 2.0 * limit));
+    let (steps, reach) = if is_centre { (2, 2.0 * limit) } else { (24, reach) };
+    let motions = kept.iter().map(|operation| snapped(operation, origin, steps, &primitive.lattice, reach));
     let motions: Vec<Motion> = motions.collect::<Option<_>>().ok_or_else(|| {
         inconsistent("from this origin, an operation found has a translation that is no fraction")
     })?;
@@ -125,4 +126,63 @@ fn averaged(lattice: &Lattice, operations: &[Operation]) -> Result<Lattice, Diag
 #[allow(clippy::cast_precision_loss, reason = "lattice translations between neighbouring cells")]
 fn float(value: i64) -> f64 {
     value as f64
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::crystal::{Crystal, Element, Site};
+    use crate::symmetry::{Centres, Engine, analyse};
+
+    #[test]
+    fn a_displaced_crystal_becomes_exact() {
+        // Caesium chloride, its origin anywhere, one atom 0.0004 of 4.12 Å off its place: each atom is moved by half of that
+        // once the centre is taken in the middle. By hand.
+        let parameters = CellParameters { lengths: [4.12, 4.12, 4.121], angles: [90.0; 3] };
+        let site = |symbol: &str, position: [f64; 3]| {
+            Site::new(symbol, Element::from_symbol(symbol).expect("known"), position.into())
+        };
+        let crystal = Crystal {
+            lattice: Lattice::from_parameters(&parameters).expect("a cell"),
+            sites: vec![site("Cs", [0.1, 0.2, 0.3]), site("Cl", [0.6004, 0.7, 0.8])],
+            origins: vec![0, 1],
+        };
+        let (_, primitive) = analyse(&crystal, &[55, 17], Engine::Moyo, 0.01).expect("a symmetry");
+        let centres = Centres::find(&primitive).expect("centres").expect("centrosymmetric");
+        let found = symmetrise(&primitive, &centres.origin().position, 0.01, |_| true).expect("a group");
+        assert_eq!(found.operations.len(), 48);
+        assert_eq!(found.orbits, [0, 1]);
+        for position in &found.positions {
+            assert!(position.map(|x| 2.0 * x - (2.0 * x).round()).norm() < 1e-9, "{position}");
+        }
+        assert!(
+            found
+                .operations
+                .iter()
+                .all(|operation| operation.translation.map(|x| x * 2.0 % 1.0).norm() < 1e-12)
+        );
+        assert!((found.largest_move - 0.0002 * 4.12).abs() < 1e-4, "{}", found.largest_move);
+        assert!((found.lattice.volume() - crystal.lattice.volume()).abs() < 1e-9);
+        let lengths = found.lattice.parameters().lengths;
+        assert!((lengths[0] - lengths[2]).abs() < 1e-9);
+    }
+
+    #[test]
+    fn an_origin_without_fractions_is_refused() {
+        // Zincblende from an origin off every symmetry element.
+        let parameters = CellParameters { lengths: [3.8; 3], angles: [60.0; 3] };
+        let crystal = Crystal {
+            lattice: Lattice::from_parameters(&parameters).expect("a cell"),
+            sites: vec![
+                Site::new("Zn", Element::from_symbol("Zn").expect("known"), Vector3::repeat(0.013)),
+                Site::new("S", Element::from_symbol("S").expect("known"), Vector3::repeat(0.263)),
+            ],
+            origins: vec![0, 1],
+        };
+        let (_, primitive) = analyse(&crystal, &[30, 16], Engine::Moyo, 0.001).expect("a symmetry");
+        assert!(symmetrise(&primitive, &Vector3::zeros(), 0.001, |_| true).is_err());
+        let found = symmetrise(&primitive, &Vector3::repeat(0.013), 0.001, |_| true).expect("a group");
+        assert_eq!(found.operations.len(), 24);
+        assert!((found.positions[1] - Vector3::repeat(0.25)).norm() < 1e-9);
+    }
 }

@@ -2,10 +2,11 @@
 //! compared with itself read before, and settings with the International Tables.
 
 use super::commands::run;
-use cosetta::cell::CellParameters;
+use cosetta::cell::{CellParameters, contacts_within};
 use cosetta::cif::read_bytes;
 use cosetta::collection::{Material, Settings, classify_bytes, find_inputs};
-use cosetta::crystal::Element;
+use cosetta::crystal::{Crystal, Element, Operation};
+use cosetta::symmetry::setting::standard;
 use std::collections::BTreeMap;
 use std::fs;
 use std::path::{Path, PathBuf};
@@ -19,6 +20,27 @@ struct Essence {
     /// Atoms of each element in the cell, with the volume of the cell.
     amounts: BTreeMap<Element, f64>,
     volume: f64,
+    /// For each pair of elements, a sum over contacts per volume that falls to zero at the longest one.
+    contacts: BTreeMap<(Element, Element), f64>,
+}
+
+/// The longest contact in Å, and the largest cell in which contacts are compared.
+const CONTACTS: (f64, usize) = (3.2, 600);
+
+fn contacts(crystal: &Crystal) -> BTreeMap<(Element, Element), f64> {
+    let mut sums = BTreeMap::new();
+    if crystal.sites.len() > CONTACTS.1 {
+        return sums;
+    }
+    let positions: Vec<_> = crystal.sites.iter().map(|site| site.position).collect();
+    for contact in contacts_within(&crystal.lattice, &positions, CONTACTS.0).expect("a good cell") {
+        let (one, other) = (&crystal.sites[contact.first], &crystal.sites[contact.second]);
+        let pair = (one.element.min(other.element), one.element.max(other.element));
+        let weight = (1.0 - (contact.distance() / CONTACTS.0).powi(2)).powi(2);
+        let share = one.occupancy * other.occupancy / crystal.lattice.volume();
+        *sums.entry(pair).or_insert(0.0) += weight * share;
+    }
+    sums
 }
 
 fn essence(material: &Material) -> Option<Essence> {
@@ -37,7 +59,7 @@ fn essence(material: &Material) -> Option<Essence> {
         Err(refusal) => refusal.code.to_string(),
     };
     let group = work.symmetry.as_ref().map(|symmetry| symmetry.number);
-    Some(Essence { group, answer, amounts, volume: crystal.lattice.volume() })
+    Some(Essence { group, answer, amounts, volume: crystal.lattice.volume(), contacts: contacts(crystal) })
 }
 
 impl Essence {
@@ -47,6 +69,16 @@ impl Essence {
                 "{:?} {} became {:?} {}",
                 self.group, self.answer, other.group, other.answer
             ));
+        }
+        if !self.contacts.is_empty() && !other.contacts.is_empty() {
+            let far = self.contacts.iter().find_map(|(pair, sum)| {
+                let after = other.contacts.get(pair).copied().unwrap_or_default();
+                ((after - sum).abs() > 0.02 * sum.max(1e-3))
+                    .then(|| format!("contacts {pair:?}: {sum} became {after}"))
+            });
+            if far.is_some() {
+                return far;
+            }
         }
         let volumes = self.volume / other.volume;
         let is_same = self.amounts.len() == other.amounts.len()
@@ -123,6 +155,32 @@ fn demo_structures_stay_the_same_crystals() {
         }
     }
     assert!(count >= 4 * 67, "{count} structures written");
+}
+
+#[test]
+fn a_file_that_was_written_is_written_alike() {
+    // But for what is said about the source, which is then the file that was written.
+    let bare = |text: &str| text.split("# P and p").next().map(str::to_owned);
+    for file in [
+        "mgal2o4-spinel",
+        "al2o3-corundum",
+        "dysco3-perovskite",
+        "zno-wurtzite",
+        "ga2o3-beta",
+        "zro2-baddeleyite",
+    ] {
+        for axes in ["file", "standard", "primitive"] {
+            let (_, once, _) = build(&format!("structures/{file}.cif"), &["--axes", axes]);
+            let again = if axes == "primitive" { "file" } else { axes };
+            let (status, twice, talk) = run(&["build", "setting", "-", "--axes", again], &once);
+            assert_eq!(status, 0, "{talk}");
+            assert_eq!(bare(&once), bare(&twice), "{file} {axes}");
+            assert!(
+                twice.contains("_cosetta_transform_Pp_abc         a,b,c;0,0,0\n"),
+                "{file} {axes}\n{twice}"
+            );
+        }
+    }
 }
 
 /// Spinel in origin choice 1, with an uncertainty, an author and a shared site if asked for.
@@ -232,12 +290,14 @@ fn files_of_the_data_sets_stay_the_same_crystals() {
     let inputs = find_inputs(&folders.map(|folder| data.join(folder)));
     let mut counts: BTreeMap<String, usize> = BTreeMap::new();
     let mut faults = Vec::new();
-    for axes in ["file", "standard"] {
+    for axes in ["file", "standard", "primitive", "expanded"] {
+        let arguments = if axes == "expanded" { vec!["--expanded"] } else { vec!["--axes", axes] };
         for input in &inputs {
             let name = input.name();
             let bytes = input.read().expect("a readable file");
             let before = materials(&name, &bytes);
-            let (_, text, talk) = build(&name, &["--axes", axes]);
+            let (_, text, talk) = build(&name, &arguments);
+            let written = read_bytes(text.as_bytes()).blocks;
             let after = materials(&name, text.as_bytes());
             let readable: Vec<&Material> =
                 before.iter().filter(|m| m.classification.crystal.is_some()).collect();
@@ -264,6 +324,31 @@ fn files_of_the_data_sets_stay_the_same_crystals() {
                     None => "same crystal, refused likewise",
                 };
                 *counts.entry(format!("{axes}: {key}")).or_default() += 1;
+                let block = written.iter().find(|block| block.name == old.block);
+                if axes != "expanded"
+                    && old.classification.centres.is_some()
+                    && let Some(Ok(unit)) = block.map(|block| &block.unit)
+                {
+                    let is_centre = |operation: &Operation| {
+                        operation.is_inversion() && operation.translation.norm() < 1e-9
+                    };
+                    let key = if unit.operations.iter().any(is_centre) {
+                        "origin on a centre"
+                    } else {
+                        "NO CENTRE AT ORIGIN"
+                    };
+                    *counts.entry(format!("{axes}: {key}")).or_default() += 1;
+                }
+                if axes == "standard"
+                    && let (Some(block), Some(symmetry)) = (block, &old.classification.symmetry)
+                {
+                    let hall = standard(symmetry.number).map(|setting| setting.hall);
+                    let key = if hall == block.stated.hall { "standard setting" } else { "OTHER SETTING" };
+                    *counts.entry(format!("{axes}: {key}")).or_default() += 1;
+                }
+                let usual = block.is_some_and(|block| block.stated.hall.is_some());
+                let key = if usual { "usual setting, named" } else { "setting without a name" };
+                *counts.entry(format!("{axes}: {key}")).or_default() += 1;
                 faults.extend(why.map(|why| format!("{axes} {name} {}: {why}", old.block)));
             }
             for code in
@@ -280,4 +365,14 @@ fn files_of_the_data_sets_stay_the_same_crystals() {
         println!("{count:>6} {key}");
     }
     assert!(faults.is_empty(), "{} exceptions:\n{}", faults.len(), faults.join("\n"));
+}
+
+#[test]
+#[cfg(feature = "spglib")]
+fn an_engine_without_standard_cell_is_refused_by_name() {
+    let (status, text, talk) =
+        build("structures/mgal2o4-spinel.cif", &["--engine", "spglib", "--axes", "standard"]);
+    assert_eq!((status, text.as_str()), (1, ""));
+    assert!(talk.contains("build-003") && talk.contains("--engine moyo"), "{talk}");
+    assert_eq!(build("structures/mgal2o4-spinel.cif", &["--engine", "spglib"]).0, 0);
 }

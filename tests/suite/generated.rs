@@ -43,6 +43,9 @@ fn generated_manual_pages() {
     for subcommand in command.get_subcommands() {
         let name = format!("cosetta-{}", subcommand.get_name());
         page(subcommand.clone(), &name, false);
+        for inner in subcommand.get_subcommands() {
+            page(inner.clone(), &format!("{name}-{}", inner.get_name()), false);
+        }
     }
 }
 

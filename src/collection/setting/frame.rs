@@ -1,6 +1,7 @@
 //! What is needed to move a structure: its symmetry, primitive cell and centres, searched with shared sites as one kind.
 
-use super::{Axes, point_group_order, scaled};
+use super::Axes;
+use super::source::scaled;
 use crate::cell::{Reduced, contacts_within};
 use crate::collection::classification::{Classification, Settings};
 use crate::crystal::{AsymmetricUnit, Crystal, ExpandTolerance};
@@ -145,7 +146,7 @@ impl<'a> Frame<'a> {
             let miss = (scaled - scaled.map(f64::round)).abs().max() / 24.0;
             return (miss < FRACTION).then(|| whole(scaled.map(f64::round) * (unit / 24.0)));
         }
-        let limit = (4.0 * self.primitive.tolerance).clamp(0.02, 0.24);
+        let limit = self.wide_reach();
         let inversions = group.motions().iter().filter(|motion| motion.to_operation().is_inversion());
         let candidates = inversions.filter_map(|motion| {
             let translation = Vector3::from(motion.translation().map(f64::from)) / unit;
@@ -157,6 +158,17 @@ impl<'a> Frame<'a> {
             (distance <= limit && is_exact).then(|| (distance, doubled.map(|units| units / 2)))
         });
         candidates.min_by(|a, b| a.0.total_cmp(&b.0)).map(|(_, shift)| shift)
+    }
+
+    /// Translations within this of a fraction, in Å, are taken for one: a thousandth is what four digits of a coordinate
+    /// leave open, and the tolerance of the search what the user does.
+    pub(super) fn reach(&self) -> f64 {
+        self.primitive.tolerance.max(1e-3)
+    }
+
+    /// The same where a fraction is known to be meant.
+    pub(super) fn wide_reach(&self) -> f64 {
+        (4.0 * self.primitive.tolerance).clamp(0.02, 0.24)
     }
 
     /// The number of the space group, if the operations of a structure in new axes are all of those found.
@@ -217,4 +229,9 @@ fn kinds(crystal: &Crystal, members: &[Vec<usize>]) -> Vec<i32> {
             *known.entry(content).or_insert(next)
         })
         .collect()
+}
+
+/// How many rotations there are.
+fn point_group_order(group: &Group) -> usize {
+    group.order() / group.translations().max(1)
 }
