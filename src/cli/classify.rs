@@ -84,7 +84,7 @@ pub(super) fn run(arguments: Arguments) -> anyhow::Result<Exit> {
     };
     let mut run = Run {
         progress: progress_bar(inputs.len(), arguments.output.quiet),
-        pool: (jobs != 1).then_some(pool),
+        pool,
         is_verbose: arguments.output.verbose,
         tally: Tally::default(),
         chunk: Vec::new(),
@@ -112,8 +112,7 @@ pub(super) fn run(arguments: Arguments) -> anyhow::Result<Exit> {
 /// Collects members and classifies them together, in order.
 struct Run<'a> {
     progress: ProgressBar,
-    /// Worker threads, unless one is enough.
-    pool: Option<rayon::ThreadPool>,
+    pool: rayon::ThreadPool,
     is_verbose: bool,
     tally: Tally,
     chunk: Vec<Member>,
@@ -137,11 +136,8 @@ impl Run<'_> {
             progress.inc(1);
             materials
         };
-        // A pool of one thread would only hand the work over and wait.
-        let results: Vec<Vec<Material>> = match &self.pool {
-            Some(pool) if chunk.len() > 1 => pool.install(|| chunk.into_par_iter().map(one).collect()),
-            _ => chunk.into_iter().map(one).collect(),
-        };
+        // Also for one member: its structures may be many.
+        let results: Vec<Vec<Material>> = self.pool.install(|| chunk.into_par_iter().map(one).collect());
         for material in results.into_iter().flatten() {
             self.tally.add(&material);
             if self.is_verbose {

@@ -125,8 +125,8 @@ pub(super) fn is_gzip(bytes: &[u8]) -> bool {
     bytes.starts_with(b"\x1f\x8b")
 }
 
-/// One structure of an input.
-pub(super) struct Structure {
+/// One structure of an input, or something beside them.
+pub(super) struct Part {
     /// Data block, or id of the entry; empty where the format has no names.
     pub(super) name: String,
     /// Whether it is meant to be a structure, and not something that stands beside them.
@@ -143,7 +143,7 @@ enum Places {
     Sites(Vec<Span>),
 }
 
-impl Structure {
+impl Part {
     /// A finding about a listed site, with its place in the source.
     pub(super) fn locate(&self, finding: Diagnostic) -> Diagnostic {
         let span = match &self.places {
@@ -161,37 +161,37 @@ impl Structure {
 ///
 /// # Errors
 /// What keeps the input from being read at all.
-pub(super) fn read(path: &str, bytes: &[u8]) -> Result<(Vec<Structure>, Vec<Diagnostic>), Diagnostic> {
+pub(super) fn read(path: &str, bytes: &[u8]) -> Result<(Vec<Part>, Vec<Diagnostic>), Diagnostic> {
     match Format::of(path, bytes) {
         Format::Cif => Ok(read_cif(bytes)),
         Format::Poscar => {
             let poscar = poscar::read_bytes(bytes)?;
-            let structure = Structure {
+            let part = Part {
                 name: String::new(),
                 is_structure: true,
                 unit: poscar.unit(),
                 diagnostics: poscar.diagnostics,
                 places: Places::Sites(poscar.places),
             };
-            Ok((vec![structure], Vec::new()))
+            Ok((vec![part], Vec::new()))
         }
         Format::Optimade => {
             let entries = optimade::read_bytes(bytes)?;
-            let structures = entries.into_iter().map(|entry| Structure {
+            let parts = entries.into_iter().map(|entry| Part {
                 name: entry.id,
                 is_structure: entry.is_structure,
                 unit: entry.unit,
                 diagnostics: entry.diagnostics,
                 places: Places::Sites(entry.site_places),
             });
-            Ok((structures.collect(), Vec::new()))
+            Ok((parts.collect(), Vec::new()))
         }
     }
 }
 
-fn read_cif(bytes: &[u8]) -> (Vec<Structure>, Vec<Diagnostic>) {
+fn read_cif(bytes: &[u8]) -> (Vec<Part>, Vec<Diagnostic>) {
     let reading = cif::read_bytes(bytes);
-    let structures = reading.blocks.into_iter().map(|mut block| Structure {
+    let parts = reading.blocks.into_iter().map(|mut block| Part {
         name: block.name.clone(),
         is_structure: block.is_structure,
         unit: std::mem::replace(
@@ -201,7 +201,7 @@ fn read_cif(bytes: &[u8]) -> (Vec<Structure>, Vec<Diagnostic>) {
         diagnostics: std::mem::take(&mut block.diagnostics),
         places: Places::Cif(Box::new(block)),
     });
-    (structures.collect(), reading.diagnostics)
+    (parts.collect(), reading.diagnostics)
 }
 
 #[cfg(test)]
