@@ -3,7 +3,7 @@
 use super::common::{self, OutputOptions, StructureOptions};
 use super::exit::Exit;
 use super::output::{self, Output};
-use crate::collection::{Material, Member, Settings, classify_member, find_inputs};
+use crate::collection::{Batches, Material, Member, Settings, classify_member, find_inputs};
 use crate::diagnostic::Code;
 use crate::report::record::MaterialRecord;
 use crate::report::table::Table;
@@ -122,6 +122,10 @@ struct Run<'a> {
 
 impl Run<'_> {
     fn take(&mut self, member: Member) -> anyhow::Result<()> {
+        if member.is_dump() {
+            self.flush()?;
+            return self.take_dump(member);
+        }
         self.held += member.held();
         self.chunk.push(member);
         if self.chunk.len() >= CHUNK || self.held >= CHUNK_BYTES { self.flush() } else { Ok(()) }
@@ -138,7 +142,29 @@ impl Run<'_> {
         };
         // Also for one member: its structures may be many.
         let results: Vec<Vec<Material>> = self.pool.install(|| chunk.into_par_iter().map(one).collect());
-        for material in results.into_iter().flatten() {
+        self.write(results.into_iter().flatten())
+    }
+
+    /// A file of many structures, batch by batch.
+    fn take_dump(&mut self, member: Member) -> anyhow::Result<()> {
+        let name = member.name.clone();
+        let settings = self.sink.settings;
+        match member.read() {
+            Err(refusal) => self.write([Material::refused(&name, refusal)])?,
+            Ok(bytes) => {
+                let mut batches = Batches::new(&name, &bytes, settings);
+                drop(bytes);
+                while let Some(materials) = self.pool.install(|| batches.next()) {
+                    self.write(materials)?;
+                }
+            }
+        }
+        self.progress.inc(1);
+        Ok(())
+    }
+
+    fn write(&mut self, materials: impl IntoIterator<Item = Material>) -> anyhow::Result<()> {
+        for material in materials {
             self.tally.add(&material);
             if self.is_verbose {
                 self.progress.suspend(|| talk_diagnostics(&material));

@@ -1,20 +1,11 @@
-//! From an input to a label: reads, expands, searches symmetry, assigns charges, sums the polarization.
+//! From a structure to a label: expands, searches symmetry, assigns charges, sums the polarization.
 
-use super::door::{self, Part};
-use super::{Input, Member};
 use crate::charge::{self, Assignment, Given, Known};
 use crate::crystal::{AsymmetricUnit, Crystal, ExpandTolerance, Formula};
 use crate::diagnostic::{Code, Diagnostic};
 use crate::polarization::FormalPolarization;
 use crate::symmetry::{Centres, Engine, Parent, Primitive, Symmetry, analyse};
-use rayon::prelude::*;
 use std::collections::BTreeSet;
-use std::convert::Infallible;
-
-/// So many names are listed when none of them is the one that was asked for.
-const BLOCKS_NAMED: usize = 20;
-/// From so many structures on, those of one file are worked on side by side.
-const MANY_STRUCTURES: usize = 16;
 
 /// What a classification is asked to use. Printed in every report.
 #[derive(Debug, Clone)]
@@ -145,97 +136,6 @@ impl Classification {
         let (primitive, assignment) = (self.primitive.as_ref()?, self.assignment.as_ref()?);
         Some(primitive.representatives.iter().map(|&site| assignment.charges[site]).collect())
     }
-}
-
-/// Classifies every structure of an input, that of all members where it is an archive. At least one material.
-#[must_use]
-pub fn classify_input(input: &Input, settings: &Settings) -> Vec<Material> {
-    let mut materials = Vec::new();
-    let mut take = |member: Member| {
-        materials.extend(classify_member(member, settings));
-        Ok(())
-    };
-    let Ok(()) = input.visit::<Infallible>(settings.max_unpacked, &mut take);
-    materials
-}
-
-/// Classifies every structure of a file or of a member of an archive. At least one material.
-#[must_use]
-pub fn classify_member(member: Member, settings: &Settings) -> Vec<Material> {
-    let file = member.name.clone();
-    match member.read() {
-        Ok(bytes) => classify_bytes(&file, &bytes, settings),
-        Err(refusal) => vec![Material::refused(&file, refusal)],
-    }
-}
-
-/// Classifies every structure in the content of a file, whose name helps to tell the format. Parts without a structure
-/// (headers of a publication, entries of other types) are skipped when another part holds one. At least one material.
-#[must_use]
-pub fn classify_bytes(file: &str, bytes: &[u8], settings: &Settings) -> Vec<Material> {
-    let (parts, first_diagnostics) = match door::read(file, bytes) {
-        Ok(read) => read,
-        Err(refusal) => return vec![Material::refused(file, refusal)],
-    };
-    if parts.is_empty() {
-        let refusal = Diagnostic::error(Code::FileEmpty, "the file holds no data block")
-            .hint("a CIF starts with data_ and a name");
-        let mut material = Material::refused(file, refusal);
-        material.classification.diagnostics = first_diagnostics;
-        return vec![material];
-    }
-    let is_wanted =
-        |name: &str| settings.block.as_ref().is_none_or(|wanted| name.eq_ignore_ascii_case(wanted));
-    if let Some(wanted) = &settings.block
-        && !parts.iter().any(|part| is_wanted(&part.name))
-    {
-        let refusal = unknown_block(wanted, &parts);
-        return vec![Material { block: wanted.clone(), ..Material::refused(file, refusal) }];
-    }
-    let any_structure = parts.iter().any(|part| part.is_structure);
-    let wanted: Vec<Part> = parts
-        .into_iter()
-        .filter(|part| {
-            is_wanted(&part.name) && (settings.block.is_some() || part.is_structure || !any_structure)
-        })
-        .collect();
-    let one = |part: &Part| classify_structure(file, part, settings);
-    // A dump of a database is one file; most files hold one structure, and are worked on side by side by the caller.
-    let mut materials: Vec<Material> = if wanted.len() < MANY_STRUCTURES {
-        wanted.iter().map(one).collect()
-    } else {
-        wanted.par_iter().map(one).collect()
-    };
-    if let Some(first) = materials.first_mut() {
-        first.classification.diagnostics.splice(..0, first_diagnostics);
-    }
-    materials
-}
-
-fn classify_structure(file: &str, part: &Part, settings: &Settings) -> Material {
-    let mut classification = match &part.unit {
-        Ok(unit) => classify_unit(unit, settings),
-        Err(refusal) => Classification::refused(refusal.clone()),
-    };
-    let mut diagnostics = part.diagnostics.clone();
-    let found = std::mem::take(&mut classification.diagnostics);
-    diagnostics.extend(found.into_iter().map(|found| part.locate(found)));
-    classification.diagnostics = diagnostics;
-    classification.outcome = classification.outcome.map_err(|refusal| part.locate(refusal));
-    Material { file: file.to_owned(), block: part.name.clone(), classification }
-}
-
-fn unknown_block(wanted: &str, parts: &[Part]) -> Diagnostic {
-    let names: Vec<_> = parts.iter().map(|part| part.name.as_str()).filter(|name| !name.is_empty()).collect();
-    let Some(first) = names.first() else {
-        let message =
-            format!("the file has no data block '{wanted}': its format has no names for structures");
-        return Diagnostic::error(Code::FileUnknownBlock, message);
-    };
-    let more = if names.len() > BLOCKS_NAMED { ", ..." } else { "" };
-    let some = names.iter().take(BLOCKS_NAMED).copied().collect::<Vec<_>>().join(", ");
-    let message = format!("the file has no data block '{wanted}'; it has: {some}{more}");
-    Diagnostic::error(Code::FileUnknownBlock, message).hint(format!("--block {first}"))
 }
 
 /// Classifies one structure.

@@ -11,6 +11,9 @@ use walkdir::WalkDir;
 /// Files larger than this many bytes are refused.
 pub(super) const MAX_FILE_BYTES: u64 = 1 << 30;
 
+/// From this size on, also when compressed, a file may hold hundreds of structures.
+const DUMP_BYTES: u64 = 1 << 17;
+
 /// One thing to read.
 #[derive(Debug, Clone, PartialEq, Eq)]
 pub enum Input {
@@ -49,6 +52,19 @@ impl Member {
             Content::Read(Ok(bytes)) => bytes.len(),
             _ => 0,
         }
+    }
+
+    /// Whether this is likely to be a dump with many structures: a large file of a format that such dumps have.
+    #[must_use]
+    pub fn is_dump(&self) -> bool {
+        if Format::of_name(&self.name) != Some(Format::Optimade) {
+            return false;
+        }
+        let length = match &self.content {
+            Content::Read(_) => self.held() as u64,
+            Content::File(path, _) => fs::metadata(path).map_or(0, |about| about.len()),
+        };
+        length >= DUMP_BYTES
     }
 
     /// The content, without compression.
@@ -130,12 +146,12 @@ fn packing_of(name: &str, head: &[u8]) -> Option<Packing> {
 /// The packing of a file, and the file. A file with the name of a structure is not opened for this.
 fn packing_of_file(path: &Path) -> io::Result<Option<(Packing, File)>> {
     let name = path.to_string_lossy();
-    if Format::of_name(&name).is_some() || path.is_dir() {
+    // The bytes of a pipe come only once.
+    if Format::of_name(&name).is_some() || !path.is_file() {
         return Ok(None);
     }
     let mut head = Vec::new();
     File::open(path)?.take(1 << 16).read_to_end(&mut head)?;
-    // A file that changes while it is read is opened a second time for that; pipes cannot be.
     match packing_of(&name, &head) {
         Some(packing) => Ok(Some((packing, File::open(path)?))),
         None => Ok(None),

@@ -237,6 +237,17 @@ fn a_dump_of_many_entries_keeps_their_order() {
     let materials = classify_bytes("x.jsonl", dump.join("\n").as_bytes(), &Settings::default());
     let names: Vec<&str> = materials.iter().map(|material| material.block.as_str()).collect();
     assert_eq!(names, (0..50).map(|k| format!("x/{k}")).collect::<Vec<_>>());
+    // Long enough to be taken batch by batch.
+    let folder = tempfile::tempdir().expect("a folder");
+    let path = folder.path().join("x.jsonl").to_string_lossy().into_owned();
+    let dump: Vec<String> = (0..600).map(|k| line.replace("\"mgo\"", &format!("\"x/{k}\""))).collect();
+    fs::write(&path, dump.join("\n")).expect("a file");
+    assert!(fs::metadata(&path).expect("a file").len() > 1 << 18);
+    let (_, two, stderr) = run(&["classify", &path, "structures/mgo-rocksalt.cif", "--format", "csv"], "");
+    let (_, one, _) =
+        run(&["classify", &path, "structures/mgo-rocksalt.cif", "--format", "csv", "--jobs", "1"], "");
+    assert_eq!((two.lines().count(), &two), (602, &one), "{stderr}");
+    assert!(two.lines().nth(600).is_some_and(|line| line.contains(",x/599,")));
     let one = Settings { block: Some("x/7".into()), ..Settings::default() };
     let materials = classify_bytes("x.jsonl", dump.join("\n").as_bytes(), &one);
     assert_eq!((materials.len(), materials[0].block.as_str()), (1, "x/7"));
