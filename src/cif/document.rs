@@ -63,6 +63,7 @@ impl<'s> Document<'s> {
     }
 
     /// Data blocks in the order of the file.
+    #[must_use]
     pub fn blocks(&self) -> impl ExactSizeIterator<Item = Block<'_, 's>> {
         (0..self.blocks.len()).map(|number| self.block_of(number))
     }
@@ -75,14 +76,12 @@ impl<'s> Document<'s> {
 
     fn block_of(&self, number: usize) -> Block<'_, 's> {
         let shape = &self.blocks[number];
-        let (name, span) = match shape.heading {
-            Some(heading) => self.heading(heading as usize),
-            None => {
-                // A block without heading begins with its first entry.
-                let start =
-                    self.entries.get(shape.entries.start as usize).map_or(0, |entry| entry.begins(self));
-                (Cow::Borrowed(""), self.lines.span(self.source, start, start))
-            }
+        let (name, span) = if let Some(heading) = shape.heading {
+            self.heading(heading as usize)
+        } else {
+            // A block without heading begins with its first entry.
+            let start = self.entries.get(shape.entries.start as usize).map_or(0, |entry| entry.begins(self));
+            (Cow::Borrowed(""), self.lines.span(self.source, start, start))
         };
         let inner = self.frames_of(number);
         let mut own = Vec::with_capacity(inner.len() + 1);
@@ -105,8 +104,8 @@ impl<'s> Document<'s> {
     fn frame_of(&self, number: usize) -> Block<'_, 's> {
         let shape = &self.frames[number];
         let (name, span) = self.heading(shape.heading as usize);
-        let own = vec![shape.entries.start as usize..shape.entries.end as usize];
-        Block { document: self, number: None, name, span, own }
+        let entries = shape.entries.start as usize..shape.entries.end as usize;
+        Block { document: self, number: None, name, span, own: Vec::from([entries]) }
     }
 
     /// Name and place of a heading that begins at a byte.

@@ -439,18 +439,18 @@ const RESERVED: u8 = 8;
 
 /// What each byte is.
 static CLASS: [u8; 256] = {
+    const MEMBERS: [(u8, &[u8]); 4] =
+        [(BLANK, b" \t\x0B\x0C\x00\x1A"), (LINE_END, b"\n\r"), (BRACKET, b"[]{}"), (RESERVED, b"$[]")];
     let mut class = [0; 256];
-    let mut byte = 0;
-    while byte < 256 {
-        class[byte] = match byte as u8 {
-            b' ' | b'\t' | 0x0B | 0x0C | 0x00 | 0x1A => BLANK,
-            b'\n' | b'\r' => LINE_END,
-            b'[' | b']' => BRACKET | RESERVED,
-            b'{' | b'}' => BRACKET,
-            b'$' => RESERVED,
-            _ => 0,
-        };
-        byte += 1;
+    let mut number = 0;
+    while number < MEMBERS.len() {
+        let (bit, bytes) = MEMBERS[number];
+        let mut at = 0;
+        while at < bytes.len() {
+            class[bytes[at] as usize] |= bit;
+            at += 1;
+        }
+        number += 1;
     }
     class
 };

@@ -98,13 +98,7 @@ impl<'s> Parser<'s> {
             match token.kind {
                 TokenKind::Block => self.open_block(&token),
                 TokenKind::Frame => self.open_frame(token),
-                TokenKind::FrameEnd => {
-                    if !self.close_frame() {
-                        self.error(Code::CifFrame, token.span, || {
-                            "a save frame ends here that was not opened".into()
-                        });
-                    }
-                }
+                TokenKind::FrameEnd => self.end_frame(&token),
                 TokenKind::Loop => self.read_loop(&token),
                 TokenKind::Tag => self.read_pair(&token),
                 TokenKind::Global => {
@@ -169,6 +163,12 @@ impl<'s> Parser<'s> {
         self.check_length(&token, "the name of a save frame");
         self.need_block(token.span);
         self.frame = Some((token, self.next_entry()));
+    }
+
+    fn end_frame(&mut self, token: &Token) {
+        if !self.close_frame() {
+            self.error(Code::CifFrame, token.span, || "a save frame ends here that was not opened".into());
+        }
     }
 
     fn close_frame(&mut self) -> bool {

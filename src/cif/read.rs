@@ -101,19 +101,13 @@ pub fn is_structure(block: &Block<'_, '_>) -> bool {
 #[must_use]
 pub fn read_block(block: &Block<'_, '_>) -> BlockReading {
     let mut diagnostics = Vec::new();
+    let refusal = Diagnostic::error(Code::CifNoStructure, "the block holds no cell and no atom sites");
     let mut reading = BlockReading {
-        name: block.name.clone().into_owned(),
         span: block.span,
         is_structure: is_structure(block),
-        unit: Err(Diagnostic::error(Code::CifNoStructure, "the block holds no cell and no atom sites")
-            .at(block.span)),
-        stated: StatedSymmetry::default(),
         formula_sum: value_of(block, FORMULA_SUM).and_then(|value| value.stated().map(str::to_owned)),
         formula_units: optional_number(block, FORMULA_UNITS, &mut diagnostics).filter(|units| *units > 0.0),
-        cell_uncertainty: [None; 6],
-        site_places: Vec::new(),
-        site_uncertainty: Vec::new(),
-        diagnostics: Vec::new(),
+        ..BlockReading::of_unit(&block.name, Err(refusal.at(block.span)))
     };
     if reading.is_structure {
         reading.unit = read_unit(block, &mut reading, &mut diagnostics);
@@ -206,6 +200,24 @@ pub struct SitePlace {
 }
 
 impl BlockReading {
+    /// A structure of which nothing else is stated.
+    #[must_use]
+    pub fn of_unit(name: &str, unit: Result<AsymmetricUnit, Diagnostic>) -> Self {
+        Self {
+            name: name.to_owned(),
+            span: Span::default(),
+            is_structure: true,
+            unit,
+            stated: StatedSymmetry::default(),
+            formula_sum: None,
+            formula_units: None,
+            cell_uncertainty: [None; 6],
+            site_places: Vec::new(),
+            site_uncertainty: Vec::new(),
+            diagnostics: Vec::new(),
+        }
+    }
+
     /// A finding about a listed site, with the place in the file it had not been given so far.
     #[must_use]
     pub fn locate(&self, finding: Diagnostic) -> Diagnostic {

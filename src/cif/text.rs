@@ -1,6 +1,6 @@
 //! The text of a value: line ends, folded lines, prefixes.
 //!
-//! *Line folding* (IUCr syntax specification of CIF 1.1, paragraphs 26 to 29): when the first line of a text field is a
+//! *Line folding* (`IUCr` syntax specification of CIF 1.1, paragraphs 26 to 29): when the first line of a text field is a
 //! backslash, a backslash at the end of a line joins it with the next. *Prefix* (CIF 2.0; Bernstein et al., J. Appl. Cryst. 49
 //! (2016) 277, section 5.2): when the first line is some text without backslash followed by one backslash, or by two to
 //! announce folding as well, each further line begins with that text, which is not part of the value. Blanks after the
@@ -37,14 +37,13 @@ pub(super) fn of_field(raw: &str, dialect: Dialect) -> Cow<'_, str> {
 fn unfold(lines: &[&str]) -> String {
     let mut text = String::new();
     for (number, line) in lines.iter().enumerate() {
-        match line.trim_end_matches([' ', '\t']).strip_suffix('\\') {
-            Some(part) => text.push_str(part),
-            None => {
-                text.push_str(line);
-                if number + 1 < lines.len() {
-                    text.push('\n');
-                }
-            }
+        if let Some(part) = line.trim_end_matches([' ', '\t']).strip_suffix('\\') {
+            text.push_str(part);
+            continue;
+        }
+        text.push_str(line);
+        if number + 1 < lines.len() {
+            text.push('\n');
         }
     }
     text

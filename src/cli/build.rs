@@ -3,9 +3,9 @@
 use super::common::{OutputOptions, StructureOptions};
 use super::exit::Exit;
 use super::output::{self, Output};
-use crate::cif::{self, BlockReading, CifText};
+use crate::cif::{BlockReading, CifText};
 use crate::collection::{
-    Axes, Classification, Input, Material, Recast, Settings, classify_bytes, difference, recast,
+    Axes, Classification, Contents, Input, Material, Recast, Settings, classify_bytes, difference, recast,
 };
 use crate::diagnostic::{Code, Diagnostic, Severity};
 use crate::report::setting::{Provenance, Sheet, provenance, write_block};
@@ -137,22 +137,23 @@ struct Source {
 
 /// The structures of a file, in its order.
 fn sources(name: &str, bytes: &[u8], settings: &Settings) -> Vec<Source> {
-    let blocks = cif::read_bytes(bytes).blocks.into_iter().zip(provenance(bytes));
-    let mut blocks: Vec<(BlockReading, Provenance)> = blocks.collect();
-    let mut found = Vec::new();
-    for material in classify_bytes(name, bytes, settings) {
-        // Blocks of one name are met in the order of the file.
-        let at = blocks.iter().position(|(block, _)| block.name == material.block);
-        let (reading, provenance) = match at {
-            Some(at) => {
-                let (reading, provenance) = blocks.remove(at);
-                (Some(reading), provenance)
+    let contents = match Contents::open(name, bytes, settings) {
+        Ok(contents) => contents,
+        Err(refused) => {
+            return vec![Source { material: *refused, reading: None, provenance: Provenance::default() }];
+        }
+    };
+    let mut provenance = if contents.is_cif() { provenance(bytes) } else { Vec::new() };
+    (0..contents.len())
+        .map(|number| {
+            let own = provenance.get_mut(contents.part(number)).map(std::mem::take);
+            Source {
+                material: contents.classify(number, settings),
+                reading: Some(contents.reading(number)),
+                provenance: own.unwrap_or_default(),
             }
-            None => (None, Provenance::default()),
-        };
-        found.push(Source { material, reading, provenance });
-    }
-    found
+        })
+        .collect()
 }
 
 /// What is being written.

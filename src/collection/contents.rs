@@ -3,7 +3,7 @@
 
 use super::classification::{Classification, Material, Settings, classify_unit};
 use super::door::Format;
-use crate::cif::{self, Document};
+use crate::cif::{self, BlockReading, Document};
 use crate::crystal::AsymmetricUnit;
 use crate::diagnostic::{Code, Diagnostic, Span};
 use crate::{optimade, poscar};
@@ -22,7 +22,7 @@ pub struct Contents<'b> {
 }
 
 enum Source<'b> {
-    Cif(Document<'b>),
+    Cif(Box<Document<'b>>),
     Listed(Vec<Structure>),
 }
 
@@ -31,7 +31,7 @@ struct Structure {
     /// Data block, or id of the entry; empty where the format has no names.
     name: String,
     /// Whether it is meant to be a structure, and not something that stands beside them.
-    is_structure: bool,
+    is_meant: bool,
     unit: Result<AsymmetricUnit, Diagnostic>,
     diagnostics: Vec<Diagnostic>,
     /// Where each site is in the source.
@@ -93,7 +93,7 @@ impl<'b> Contents<'b> {
     #[must_use]
     pub fn classify(&self, number: usize, settings: &Settings) -> Material {
         let first = if number == 0 { self.diagnostics.clone() } else { Vec::new() };
-        let part = self.wanted[number] as usize;
+        let part = self.part(number);
         match &self.source {
             Source::Cif(document) => {
                 let block = document.block(part).expect("a block of this document");
@@ -106,6 +106,39 @@ impl<'b> Contents<'b> {
                 let locate = |found| structure.locate(found);
                 let Structure { name, unit, diagnostics, .. } = structure;
                 self.material(name, first, unit, diagnostics, locate, settings)
+            }
+        }
+    }
+
+    /// Whether it is a CIF.
+    #[must_use]
+    pub fn is_cif(&self) -> bool {
+        matches!(self.source, Source::Cif(_))
+    }
+
+    /// The number, counted from zero among all parts of the file (of a CIF its data blocks), of a structure.
+    ///
+    /// # Panics
+    /// When the number is not below [`Contents::len`].
+    #[must_use]
+    pub fn part(&self, number: usize) -> usize {
+        self.wanted[number] as usize
+    }
+
+    /// What a structure says of itself. Formats other than CIF say no more than the structure.
+    ///
+    /// # Panics
+    /// When the number is not below [`Contents::len`].
+    #[must_use]
+    pub fn reading(&self, number: usize) -> BlockReading {
+        let part = self.part(number);
+        match &self.source {
+            Source::Cif(document) => {
+                cif::read_block(&document.block(part).expect("a block of this document"))
+            }
+            Source::Listed(structures) => {
+                let Structure { name, unit, diagnostics, .. } = &structures[part];
+                BlockReading { diagnostics: diagnostics.clone(), ..BlockReading::of_unit(name, unit.clone()) }
             }
         }
     }
@@ -150,7 +183,7 @@ impl<'b> Contents<'b> {
     fn is_structure(&self, part: usize) -> bool {
         match &self.source {
             Source::Cif(document) => document.block(part).is_some_and(|block| cif::is_structure(&block)),
-            Source::Listed(structures) => structures[part].is_structure,
+            Source::Listed(structures) => structures[part].is_meant,
         }
     }
 
@@ -187,13 +220,13 @@ fn read<'b>(path: &str, bytes: &'b [u8]) -> Result<(Source<'b>, Vec<Diagnostic>)
     Ok(match Format::of(path, bytes) {
         Format::Cif => {
             let (document, diagnostics) = cif::parse(bytes);
-            (Source::Cif(document), diagnostics)
+            (Source::Cif(Box::new(document)), diagnostics)
         }
         Format::Poscar => {
             let poscar = poscar::read_bytes(bytes)?;
             let structure = Structure {
                 name: String::new(),
-                is_structure: true,
+                is_meant: true,
                 unit: poscar.unit(),
                 diagnostics: poscar.diagnostics,
                 places: poscar.places,
@@ -204,7 +237,7 @@ fn read<'b>(path: &str, bytes: &'b [u8]) -> Result<(Source<'b>, Vec<Diagnostic>)
             let entries = optimade::read_bytes(bytes)?;
             let structures = entries.into_iter().map(|entry| Structure {
                 name: entry.id,
-                is_structure: entry.is_structure,
+                is_meant: entry.is_structure,
                 unit: entry.unit,
                 diagnostics: entry.diagnostics,
                 places: entry.site_places,

@@ -247,18 +247,19 @@ impl Crystal {
                 .about(self.origins[contact.second]));
             }
             if contact.distance() < tolerance.min_distance {
-                return Err(Diagnostic::error(
-                    Code::SitesTooClose,
-                    format!(
-                        "sites {} and {} are {:.3} Å apart, below --min-distance {}",
-                        first.label,
-                        second.label,
-                        contact.distance(),
-                        tolerance.min_distance
-                    ),
-                )
-                .about(self.origins[contact.second])
-                .hint(format!("--min-distance {:.3}", contact.distance() / 2.0)));
+                let distance = contact.distance();
+                let message = format!(
+                    "sites {} and {} are {distance:.3} Å apart, below --min-distance {}",
+                    first.label, second.label, tolerance.min_distance
+                );
+                let refusal =
+                    Diagnostic::error(Code::SitesTooClose, message).about(self.origins[contact.second]);
+                let lower = distance / 2.0;
+                return Err(if lower < 5e-4 {
+                    refusal
+                } else {
+                    refusal.hint(format!("--min-distance {lower:.3}"))
+                });
             }
         }
         if !dropped.is_empty() {

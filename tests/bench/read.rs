@@ -2,6 +2,7 @@
 //!
 //!     cargo bench --bench read -- PATH... [--repeats N]
 //!     cargo bench --bench read -- FILE --once parse|read
+//!     cargo bench --bench read -- PATH... --list
 //!
 //! The first form loads the files (of a folder, all that end in `.cif`) and times passes over all of them in memory:
 //! `cif::parse` alone, and `cif::read_bytes`. The second handles one file once, loading included, and tells the highest
@@ -9,18 +10,22 @@
 #![allow(clippy::print_stdout, reason = "a report to the terminal")]
 
 use cosetta::cif;
+use cosetta::symmetry::setting::Motion;
 use serde_json::json;
 use std::path::{Path, PathBuf};
 use std::process::ExitCode;
 use std::time::Instant;
 
-const USAGE: &str = "usage: read PATH... [--repeats N] [--once parse|read]";
+const USAGE: &str = "usage: read PATH... [--repeats N] [--once parse|read] [--list]";
 
 fn main() -> ExitCode {
     let Some(request) = Request::parse(std::env::args().skip(1)) else {
         println!("{USAGE}");
         return ExitCode::from(2);
     };
+    if request.is_list {
+        return list(&request.paths);
+    }
     let report = match &request.once {
         Some(step) => time_once(&request.paths[0], *step),
         None => time_passes(&request.paths, request.repeats),
@@ -41,6 +46,7 @@ struct Request {
     paths: Vec<PathBuf>,
     repeats: usize,
     once: Option<Step>,
+    is_list: bool,
 }
 
 #[derive(Clone, Copy)]
@@ -64,11 +70,12 @@ impl Step {
 
 impl Request {
     fn parse(mut words: impl Iterator<Item = String>) -> Option<Self> {
-        let mut request = Self { paths: Vec::new(), repeats: 5, once: None };
+        let mut request = Self { paths: Vec::new(), repeats: 5, once: None, is_list: false };
         while let Some(word) = words.next() {
             match word.as_str() {
                 // Added by cargo.
                 "--bench" => {}
+                "--list" => request.is_list = true,
                 "--repeats" => request.repeats = words.next()?.parse().ok().filter(|&repeats| repeats > 0)?,
                 "--once" => {
                     request.once = Some(match words.next()?.as_str() {
@@ -108,7 +115,49 @@ fn time_passes(paths: &[PathBuf], repeats: usize) -> std::io::Result<serde_json:
     }))
 }
 
+/// What was read from each block: cell, operations, listed sites, or the refusal.
+fn list(paths: &[PathBuf]) -> ExitCode {
+    for name in names(paths) {
+        let Ok(bytes) = std::fs::read(&name) else { return ExitCode::FAILURE };
+        for block in cif::read_bytes(&bytes).blocks.iter().filter(|block| block.is_structure) {
+            let mut found = json!({ "file": name, "block": block.name });
+            match &block.unit {
+                Err(refusal) => found["refusal"] = json!(refusal.to_string()),
+                Ok(unit) => {
+                    let cell = unit.lattice.parameters();
+                    let operations: Option<Vec<String>> = unit
+                        .operations
+                        .iter()
+                        .map(|o| Motion::from_operation(o).map(|m| m.to_string()))
+                        .collect();
+                    found["cell"] = json!(cell.lengths.iter().chain(&cell.angles).collect::<Vec<_>>());
+                    found["operations"] = json!(operations);
+                    found["sites"] = unit
+                        .sites
+                        .iter()
+                        .map(|site| {
+                            json!([
+                                site.label,
+                                site.element.symbol(),
+                                site.position.as_slice(),
+                                site.occupancy
+                            ])
+                        })
+                        .collect();
+                }
+            }
+            println!("{found}");
+        }
+    }
+    ExitCode::SUCCESS
+}
+
 fn load(paths: &[PathBuf]) -> std::io::Result<Vec<Vec<u8>>> {
+    names(paths).iter().map(std::fs::read).collect()
+}
+
+/// The files themselves, and those of folders that end in `.cif`.
+fn names(paths: &[PathBuf]) -> Vec<PathBuf> {
     let mut names = Vec::new();
     for path in paths {
         if path.is_dir() {
@@ -118,7 +167,7 @@ fn load(paths: &[PathBuf]) -> std::io::Result<Vec<Vec<u8>>> {
             names.push(path.clone());
         }
     }
-    names.iter().map(std::fs::read).collect()
+    names
 }
 
 fn is_cif(path: &Path) -> bool {

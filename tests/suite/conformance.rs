@@ -58,7 +58,7 @@ fn case(lines: &[&str], line: usize) -> Case {
             ("charges", charges) => case.charges = Some(charges.to_owned()),
             ("block", block) => case.block = Some(block.to_owned()),
             ("symmetry-tolerance", length) => {
-                case.symmetry_tolerance = Some(length.parse().expect("a length"))
+                case.symmetry_tolerance = Some(length.parse().expect("a length"));
             }
             other => panic!("case '{}': unknown attribute {other:?}", case.name),
         }
@@ -289,7 +289,7 @@ fn conformance_cases() {
             }
         }
     }
-    assert!(faults.is_empty(), "{} cases; these differ:\n{faults}", count);
+    assert!(faults.is_empty(), "{count} cases; these differ:\n{faults}");
     assert!(count >= 150, "only {count} cases");
 }
 
