@@ -22,12 +22,12 @@ pub struct Contents<'b> {
 }
 
 enum Source<'b> {
-    Cif(Document<'b>),
-    Listed(Vec<Structure>),
+    Cif(Box<Document<'b>>),
+    Listed(Vec<Part>),
 }
 
-/// One structure.
-struct Structure {
+/// One structure, or something that stands beside them.
+struct Part {
     /// Data block, or id of the entry; empty where the format has no names.
     name: String,
     /// Whether it is meant to be a structure, and not something that stands beside them.
@@ -104,7 +104,7 @@ impl<'b> Contents<'b> {
             Source::Listed(structures) => {
                 let structure = &structures[part];
                 let locate = |found| structure.locate(found);
-                let Structure { name, unit, diagnostics, .. } = structure;
+                let Part { name, unit, diagnostics, .. } = structure;
                 self.material(name, first, unit, diagnostics, locate, settings)
             }
         }
@@ -172,7 +172,7 @@ impl<'b> Contents<'b> {
     }
 }
 
-impl Structure {
+impl Part {
     /// A finding about a listed site, with its place in the source.
     fn locate(&self, finding: Diagnostic) -> Diagnostic {
         match finding.site.and_then(|site| self.places.get(site)) {
@@ -187,11 +187,11 @@ fn read<'b>(path: &str, bytes: &'b [u8]) -> Result<(Source<'b>, Vec<Diagnostic>)
     Ok(match Format::of(path, bytes) {
         Format::Cif => {
             let (document, diagnostics) = cif::parse(bytes);
-            (Source::Cif(document), diagnostics)
+            (Source::Cif(Box::new(document)), diagnostics)
         }
         Format::Poscar => {
             let poscar = poscar::read_bytes(bytes)?;
-            let structure = Structure {
+            let structure = Part {
                 name: String::new(),
                 is_structure: true,
                 unit: poscar.unit(),
@@ -202,7 +202,7 @@ fn read<'b>(path: &str, bytes: &'b [u8]) -> Result<(Source<'b>, Vec<Diagnostic>)
         }
         Format::Optimade => {
             let entries = optimade::read_bytes(bytes)?;
-            let structures = entries.into_iter().map(|entry| Structure {
+            let structures = entries.into_iter().map(|entry| Part {
                 name: entry.id,
                 is_structure: entry.is_structure,
                 unit: entry.unit,
