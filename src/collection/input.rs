@@ -230,9 +230,20 @@ fn find_in_folder(folder: &Path, inputs: &mut Vec<Input>) {
     }
 }
 
+/// Whether a file of a folder is meant to be read. JSON may be anything, so it has to speak of lattice vectors, or of
+/// the standard's entries, in its first 64 kB, unless it is compressed or cannot be opened.
 fn has_known_name(path: &Path) -> bool {
     let name = path.to_string_lossy();
-    Format::of_name(&name).is_some() || Packing::of_name(&name).is_some()
+    match Format::of_name(&name) {
+        Some(Format::Optimade) => {
+            let mut head = Vec::new();
+            let is_read = File::open(path).and_then(|file| file.take(1 << 16).read_to_end(&mut head)).is_ok();
+            let speaks_of = |word: &[u8]| memchr::memmem::find(&head, word).is_some();
+            !is_read || is_gzip(&head) || speaks_of(b"lattice_vectors") || speaks_of(b"species_at_sites")
+        }
+        Some(_) => true,
+        None => Packing::of_name(&name).is_some(),
+    }
 }
 
 #[cfg(test)]
@@ -257,6 +268,16 @@ mod tests {
             })
             .collect();
         assert_eq!(names, ["POSCAR-1", "a.CIF", "b/z.cif", "c.cif", "d.tar.gz", "e.cif.gz"]);
+    }
+
+    #[test]
+    fn json_of_another_kind_is_left_alone() {
+        let folder = tempfile::tempdir().expect("a folder");
+        fs::write(folder.path().join("results.json"), r#"{"label": "polar"}"#).expect("a file");
+        fs::write(folder.path().join("entries.json"), r#"{"data": [{"lattice_vectors": 1}]}"#).expect("a file");
+        let names: Vec<_> = find_inputs(&[folder.path().to_path_buf()]).iter().map(Input::name).collect();
+        assert_eq!(names.len(), 1);
+        assert!(names[0].ends_with("entries.json"));
     }
 
     #[test]
