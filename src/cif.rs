@@ -10,17 +10,25 @@
 //! unreadable or open to two readings.
 
 mod document;
+mod edit;
+mod findings;
 mod lex;
 mod number;
 mod operation;
 mod parse;
 mod read;
+mod source;
+mod text;
 mod write;
 
-pub use document::{Block, Document, Item, Loop, Pair, Table, Tag, Value, ValueKind};
+pub use document::{Block, Document, Element, Item, Pair, Row, Table, Tag, Value, ValueKind};
+pub use edit::{EditError, Edits};
 pub use lex::{Dialect, Lexer, Token, TokenKind};
 pub use number::{Measured, parse_number};
 pub use operation::{OperationError, parse_operation};
 pub use parse::parse;
-pub use read::{BlockReading, Reading, SitePlace, StatedSymmetry, SymmetrySource, read_bytes, read_document};
+pub use read::{
+    BlockReading, Reading, SitePlace, StatedSymmetry, SymmetrySource, is_structure, read_block, read_bytes,
+    read_document,
+};
 pub use write::{CifText, Datum, WriteError};

@@ -14,7 +14,7 @@ pub use exit::Exit;
 
 use clap::{CommandFactory, Parser, Subcommand};
 
-/// Formal polarization lattices of insulating crystals, from CIF files.
+/// Formal polarization lattices of insulating crystals, from CIF, POSCAR and OPTIMADE files.
 ///
 /// For people who design interfaces between insulators: which formal polarization values does a crystal allow, is zero
 /// among them, and what does that mean for the planes you will join.

@@ -1,11 +1,16 @@
-//! Many inputs: which files a list of paths names, and their structures, classified in a stable order.
+//! Many inputs: which files a list of paths names, what they hold, and their structures, classified in a stable order.
 
+mod archive;
 mod classification;
+mod contents;
+mod door;
 mod input;
 mod setting;
 
 pub use classification::{
-    Classification, Material, PARENT_TOLERANCE, ParentLevel, Settings, classify_bytes, classify_unit,
+    Classification, Material, PARENT_TOLERANCE, ParentLevel, Settings, classify_bytes, classify_input,
+    classify_member, classify_unit,
 };
-pub use input::{Input, find_inputs};
+pub use contents::Contents;
+pub use input::{Input, Member, find_inputs};
 pub use setting::{Axes, Recast, difference, recast};

@@ -6,8 +6,10 @@
 //! [`Severity::Error`] that stopped the work.
 
 mod code;
+mod lines;
 
 pub use code::Code;
+pub use lines::Lines;
 
 use serde::Serialize;
 use std::fmt;

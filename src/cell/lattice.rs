@@ -127,6 +127,14 @@ impl Lattice {
         Ok(Self { basis, inverse })
     }
 
+    /// The same lattice, if its lengths and angles are in the ranges that [`Lattice::from_parameters`] accepts.
+    ///
+    /// # Errors
+    /// The parameter that is out of range.
+    pub fn in_range(self) -> Result<Self, LatticeError> {
+        Self::from_parameters(&self.parameters()).map(|_| self)
+    }
+
     /// The matrix whose columns are the lattice vectors, in Å.
     #[must_use]
     pub fn basis(&self) -> &Matrix3<f64> {

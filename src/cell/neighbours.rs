@@ -35,23 +35,43 @@ pub fn contacts_within(
     positions: &[Vector3<f64>],
     cutoff: f64,
 ) -> Result<Vec<Contact>, LatticeError> {
+    let found = contacts_up_to(lattice, positions, cutoff, usize::MAX)?;
+    Ok(found.unwrap_or_default())
+}
+
+/// As [`contacts_within`], unless some point has more than `limit` contacts with points after it: then the index of the
+/// first such point is the error, and the search ends there, so that a crowd of points costs neither time nor memory.
+///
+/// # Errors
+/// As [`contacts_within`].
+pub fn contacts_up_to(
+    lattice: &Lattice,
+    positions: &[Vector3<f64>],
+    cutoff: f64,
+    limit: usize,
+) -> Result<Result<Vec<Contact>, usize>, LatticeError> {
     let reduced = Reduced::new(lattice)?;
     let frame = reduced.lattice();
     let grid = Grid::new(frame, lattice, positions, cutoff);
     let mut contacts = Vec::new();
     for (first, home) in grid.points.iter().enumerate() {
-        grid.visit(home, |second, vector| {
+        let before = contacts.len();
+        let is_complete = grid.visit(home, |second, vector| {
             let is_self = second == first && vector.norm_squared() < 1e-12;
             let counted = second > first || (second == first && is_upper_half(&vector));
             if counted && !is_self && vector.norm_squared() <= cutoff * cutoff {
                 contacts.push(Contact { first, second, vector });
             }
+            contacts.len() - before <= limit
         });
+        if !is_complete {
+            return Ok(Err(first));
+        }
     }
     contacts.sort_by(|a, b| {
         (a.first, a.second).cmp(&(b.first, b.second)).then(a.distance().total_cmp(&b.distance()))
     });
-    Ok(contacts)
+    Ok(Ok(contacts))
 }
 
 /// The nearest pair of points no further apart than `cutoff` Å, if there is one.
@@ -118,8 +138,9 @@ impl<'a> Grid<'a> {
         Self { frame, points, counts, reach, bins }
     }
 
+    /// Calls `found` for the points in the bins around one, as long as it returns true. Returns whether it always did.
     #[allow(clippy::cast_precision_loss, reason = "cell numbers are far below 2^52")]
-    fn visit(&self, home: &Point, mut found: impl FnMut(usize, Vector3<f64>)) {
+    fn visit(&self, home: &Point, mut found: impl FnMut(usize, Vector3<f64>) -> bool) -> bool {
         let ranges = [0, 1, 2].map(|i| (home.bin[i] - self.reach[i])..=(home.bin[i] + self.reach[i]));
         for i in ranges[0].clone() {
             for j in ranges[1].clone() {
@@ -129,11 +150,14 @@ impl<'a> Grid<'a> {
                     let shift = Vector3::from_fn(|a, _| bin[a].div_euclid(self.counts[a]) as f64);
                     for &other in &self.bins[bin_index(&self.counts, &wrapped)] {
                         let difference = self.points[other].fractional + shift - home.fractional;
-                        found(other, self.frame.to_cartesian(&difference));
+                        if !found(other, self.frame.to_cartesian(&difference)) {
+                            return false;
+                        }
                     }
                 }
             }
         }
+        true
     }
 }
 

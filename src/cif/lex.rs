@@ -1,11 +1,19 @@
 //! From bytes to tokens: the lexical layer of CIF 1.1 (International Tables for Crystallography, volume G, chapter 2.2),
-//! as it is found in the wild.
+//! as it is found in the wild, and of CIF 2.0 (Bernstein et al., J. Appl. Cryst. 49 (2016) 277).
 //!
 //! The lexer walks over the bytes once, keeps line and column, and never fails: what it cannot close it ends at the end
 //! of the line (quotes) or of the file (text fields), with a diagnostic.
 //! Line ends are LF, CR LF or a lone CR. NUL, vertical tab, form feed and the old end-of-file mark 0x1A count as blanks.
-//! With the `#\#CIF_2.0` comment in front, quotes close at the next quote and triple quotes are read.
+//! With the `#\#CIF_2.0` comment in front, quotes close at the next quote, triple quotes are read, words end before
+//! brackets, and a list or a table is one token, whatever is inside.
 
+mod compound;
+
+pub(super) use compound::{Part, parts};
+
+use super::findings::Findings;
+use super::source::{BYTE_ORDER_MARK, LineStart, line_end_after, line_end_length};
+use super::text::lacks_prefix;
 use crate::diagnostic::{Code, Diagnostic, Span};
 
 /// The edition of the syntax a file declares.
@@ -15,6 +23,26 @@ pub enum Dialect {
     One,
     /// CIF 2.0, declared by the first line `#\#CIF_2.0`.
     Two,
+}
+
+/// What the first line of a file declares.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+enum Declared {
+    Nothing,
+    Edition(Dialect),
+    Other,
+}
+
+const MAGIC: &[u8] = b"#\\#CIF_";
+
+fn declared(bytes: &[u8]) -> Declared {
+    let Some(rest) = bytes.strip_prefix(MAGIC) else { return Declared::Nothing };
+    let end = rest.iter().position(|&byte| is(byte, BLANK | LINE_END)).unwrap_or(rest.len());
+    match &rest[..end] {
+        b"1.0" | b"1.1" => Declared::Edition(Dialect::One),
+        b"2.0" => Declared::Edition(Dialect::Two),
+        _ => Declared::Other,
+    }
 }
 
 /// What a token is.
@@ -40,6 +68,10 @@ pub enum TokenKind {
     Quoted,
     /// A text field between semicolons at line starts; the content is what is inside, without the last line end.
     Text,
+    /// A list of CIF 2.0; the content is what is between the brackets.
+    List,
+    /// A table of CIF 2.0; the content is what is between the braces.
+    Table,
 }
 
 /// One token.
@@ -63,18 +95,33 @@ pub struct Lexer<'s> {
     line: usize,
     line_start: usize,
     dialect: Dialect,
-    diagnostics: Vec<Diagnostic>,
+    findings: Findings,
 }
-
-const BYTE_ORDER_MARK: &[u8] = b"\xEF\xBB\xBF";
 
 impl<'s> Lexer<'s> {
     /// A lexer at the start of the bytes. A UTF-8 byte order mark is skipped.
     #[must_use]
     pub fn new(bytes: &'s [u8]) -> Self {
         let start = if bytes.starts_with(BYTE_ORDER_MARK) { BYTE_ORDER_MARK.len() } else { 0 };
-        let dialect = if bytes[start..].starts_with(b"#\\#CIF_2.0") { Dialect::Two } else { Dialect::One };
-        Self { bytes, at: start, line: 1, line_start: start, dialect, diagnostics: Vec::new() }
+        let declared = declared(&bytes[start..]);
+        let dialect = match declared {
+            Declared::Edition(dialect) => dialect,
+            Declared::Nothing | Declared::Other => Dialect::One,
+        };
+        let findings = Findings::default();
+        let mut lexer = Self { bytes, at: start, line: 1, line_start: start, dialect, findings };
+        if declared == Declared::Other {
+            lexer.report_edition();
+        }
+        lexer
+    }
+
+    /// A lexer in the middle of a file, which reports nothing.
+    pub(super) fn within(bytes: &'s [u8], at: usize, line: LineStart, dialect: Dialect) -> Self {
+        // The first line begins after a byte order mark.
+        let is_marked = line.start == 0 && bytes.starts_with(BYTE_ORDER_MARK);
+        let line_start = if is_marked { BYTE_ORDER_MARK.len() } else { line.start };
+        Self { bytes, at, line: line.line, line_start, dialect, findings: Findings::silent() }
     }
 
     /// The edition of the syntax the file declares.
@@ -86,7 +133,27 @@ impl<'s> Lexer<'s> {
     /// What was noticed so far.
     #[must_use]
     pub fn into_diagnostics(self) -> Vec<Diagnostic> {
-        self.diagnostics
+        self.findings.merge(Findings::default())
+    }
+
+    pub(super) fn into_findings(self) -> Findings {
+        self.findings
+    }
+
+    fn report_edition(&mut self) {
+        let end = line_end_after(self.bytes, self.at);
+        let span = Span { start: self.at, end, line: 1, column: 1 };
+        let text = String::from_utf8_lossy(&self.bytes[self.at..end]).trim_end().to_owned();
+        self.findings.add(Code::CifEdition, || {
+            Diagnostic::warning(
+                Code::CifEdition,
+                format!(
+                    "the first line '{text}' declares no known edition of CIF; the file was read as CIF 1.1"
+                ),
+            )
+            .at(span)
+            .hint("#\\#CIF_1.1 or #\\#CIF_2.0")
+        });
     }
 
     fn peek(&self) -> Option<u8> {
@@ -102,116 +169,180 @@ impl<'s> Lexer<'s> {
 
     fn skip_blanks_and_comments(&mut self) {
         while let Some(byte) = self.peek() {
-            match byte {
-                b'\n' | b'\r' => self.step_over_line_end(),
-                b'#' => self.at = line_end_after(self.bytes, self.at),
-                _ if is_blank(byte) => self.at += 1,
-                _ => return,
+            let class = CLASS[usize::from(byte)];
+            if class & BLANK != 0 {
+                self.at += 1;
+            } else if class & LINE_END != 0 {
+                self.step_over_line_end();
+            } else if byte == b'#' {
+                self.at = line_end_after(self.bytes, self.at);
+            } else {
+                return;
             }
         }
     }
 
-    fn span_from(&self, start: usize, line: usize, line_start: usize) -> Span {
-        Span { start, end: self.at, line, column: start - line_start + 1 }
+    /// The place of what begins at the current byte.
+    fn here(&self) -> Place {
+        Place { start: self.at, line: self.line, column: self.at - self.line_start + 1 }
+    }
+
+    fn span_from(&self, place: Place) -> Span {
+        Span { start: place.start, end: self.at, line: place.line, column: place.column }
+    }
+
+    /// Reports a value that is not followed by a blank.
+    fn expect_blank(&mut self, what: &str, may_close: bool) {
+        let Some(byte) = self.peek() else { return };
+        if is(byte, BLANK | LINE_END) || may_close && matches!(byte, b']' | b'}') {
+            return;
+        }
+        let place = self.here();
+        let span = Span { start: place.start, end: place.start + 1, line: place.line, column: place.column };
+        self.findings.add(Code::CifNoBlank, || {
+            let next = char::from(byte);
+            let next =
+                if byte.is_ascii_graphic() { format!("'{next}'") } else { "the next character".to_owned() };
+            Diagnostic::warning(
+                Code::CifNoBlank,
+                format!("no blank between {what} and {next}; it was read as if there were one"),
+            )
+            .at(span)
+        });
     }
 
     fn text_field(&mut self) -> Token {
-        let (start, line, line_start) = (self.at, self.line, self.line_start);
+        let place = self.here();
         self.at += 1;
         loop {
             self.at = line_end_after(self.bytes, self.at);
             let end = self.at;
             if self.peek().is_none() {
-                let span = self.span_from(start, line, line_start);
-                self.diagnostics.push(
+                let span = Span { end: place.start + 1, ..self.span_from(place) };
+                let line = place.line;
+                self.findings.add(Code::CifTextOpen, || {
                     Diagnostic::error(
                         Code::CifTextOpen,
                         format!("the text field that begins at line {line} is not closed; the rest of the file was taken as its text"),
                     )
-                    .at(Span { end: start + 1, ..span })
-                    .hint("end it with a line that begins with ;"),
-                );
-                return Token { kind: TokenKind::Text, span, start: start + 1, end };
+                    .at(span)
+                    .hint("end it with a line that begins with ;")
+                });
+                return Token {
+                    kind: TokenKind::Text,
+                    span: self.span_from(place),
+                    start: place.start + 1,
+                    end,
+                };
             }
             self.step_over_line_end();
             if self.peek() == Some(b';') {
                 self.at += 1;
-                let span = self.span_from(start, line, line_start);
-                return Token { kind: TokenKind::Text, span, start: start + 1, end };
+                let token =
+                    Token { kind: TokenKind::Text, span: self.span_from(place), start: place.start + 1, end };
+                self.check_prefix(&token);
+                return token;
             }
         }
     }
 
-    fn quoted(&mut self, quote: u8) -> Token {
-        let (start, line, line_start) = (self.at, self.line, self.line_start);
-        if self.dialect == Dialect::Two && self.bytes[start..].starts_with(&[quote; 3]) {
-            return self.triple_quoted(quote);
+    /// Reports a text field that announces a prefix which some line lacks.
+    fn check_prefix(&mut self, token: &Token) {
+        if self.dialect == Dialect::One {
+            return;
         }
-        self.at += 1;
-        while let Some(byte) = self.peek() {
-            if byte == b'\n' || byte == b'\r' {
-                break;
-            }
-            self.at += 1;
-            let is_closing = byte == quote
-                && (self.dialect == Dialect::Two || self.peek().is_none_or(is_blank_or_line_end));
-            if is_closing {
-                let span = self.span_from(start, line, line_start);
-                return Token { kind: TokenKind::Quoted, span, start: start + 1, end: self.at - 1 };
-            }
-        }
-        let span = self.span_from(start, line, line_start);
-        let end = start + 1 + self.bytes[start + 1..self.at].trim_ascii_end().len();
-        self.diagnostics.push(
-            Diagnostic::error(
-                Code::CifQuoteOpen,
+        let Some(number) = lacks_prefix(&self.bytes[token.start..token.end]) else { return };
+        let span = Span { end: token.span.start + 1, ..token.span };
+        self.findings.add(Code::CifProtocol, || {
+            Diagnostic::warning(
+                Code::CifProtocol,
                 format!(
-                    "the quote {} is not closed on its line; the rest of the line was taken as the value",
-                    char::from(quote)
+                    "the first line of the text field announces a prefix that line {} does not begin with; the text was kept as it stands",
+                    span.line + number
                 ),
             )
             .at(span)
-            .hint(format!("end the value with {} and a blank", char::from(quote))),
-        );
-        Token { kind: TokenKind::Quoted, span, start: start + 1, end }
+        });
+    }
+
+    fn quoted(&mut self, quote: u8) -> Token {
+        let place = self.here();
+        if self.dialect == Dialect::Two && self.bytes[self.at..].starts_with(&[quote; 3]) {
+            return self.triple_quoted(quote);
+        }
+        self.at += 1;
+        let limit = line_end_after(self.bytes, self.at);
+        while let Some(offset) = memchr::memchr(quote, &self.bytes[self.at..limit]) {
+            self.at += offset + 1;
+            if self.dialect == Dialect::Two || self.peek().is_none_or(|byte| is(byte, BLANK | LINE_END)) {
+                let end = self.at - 1;
+                return Token {
+                    kind: TokenKind::Quoted,
+                    span: self.span_from(place),
+                    start: place.start + 1,
+                    end,
+                };
+            }
+        }
+        self.at = limit;
+        let start = place.start + 1;
+        let end = start + self.bytes[start..self.at].trim_ascii_end().len();
+        let span = self.span_from(place);
+        self.findings.add(Code::CifQuoteOpen, || {
+            let quote = char::from(quote);
+            Diagnostic::error(
+                Code::CifQuoteOpen,
+                format!(
+                    "the quote {quote} is not closed on its line; the rest of the line was taken as the value"
+                ),
+            )
+            .at(span)
+            .hint(format!("end the value with {quote} and a blank"))
+        });
+        Token { kind: TokenKind::Quoted, span, start, end }
     }
 
     fn triple_quoted(&mut self, quote: u8) -> Token {
-        let (start, line, line_start) = (self.at, self.line, self.line_start);
+        let place = self.here();
         self.at += 3;
+        let start = self.at;
         while let Some(byte) = self.peek() {
-            if byte == b'\n' || byte == b'\r' {
+            if is(byte, LINE_END) {
                 self.step_over_line_end();
-            } else if self.bytes[self.at..].starts_with(&[quote; 3]) {
+            } else if byte == quote && self.bytes[self.at..].starts_with(&[quote; 3]) {
                 let end = self.at;
                 self.at += 3;
-                let span = self.span_from(start, line, line_start);
-                return Token { kind: TokenKind::Quoted, span, start: start + 3, end };
+                return Token { kind: TokenKind::Quoted, span: self.span_from(place), start, end };
             } else {
                 self.at += 1;
             }
         }
-        let span = self.span_from(start, line, line_start);
-        self.diagnostics.push(
+        let span = Span { end: start, ..self.span_from(place) };
+        self.findings.add(Code::CifTextOpen, || {
             Diagnostic::error(
                 Code::CifTextOpen,
                 format!(
-                    "the triple quote that begins at line {line} is not closed; the rest of the file was taken as its text"
+                    "the triple quote that begins at line {} is not closed; the rest of the file was taken as its text",
+                    span.line
                 ),
             )
-            .at(Span { end: start + 3, ..span })
-            .hint("end it with the same three quotes"),
-        );
-        Token { kind: TokenKind::Quoted, span, start: start + 3, end: self.at }
+            .at(span)
+            .hint("end it with the same three quotes")
+        });
+        Token { kind: TokenKind::Quoted, span: self.span_from(place), start, end: self.at }
     }
 
     fn word(&mut self) -> Token {
-        let start = self.at;
-        while self.peek().is_some_and(|byte| !is_blank_or_line_end(byte)) {
-            self.at += 1;
-        }
-        let span = self.span_from(start, self.line, self.line_start);
-        let word = &self.bytes[start..self.at];
+        let place = self.here();
+        let rest = &self.bytes[self.at..];
+        let stop = match self.dialect {
+            Dialect::Two if !begins_name(rest) => BLANK | LINE_END | BRACKET,
+            _ => BLANK | LINE_END,
+        };
+        let length = self.bytes[self.at..].iter().position(|&byte| is(byte, stop));
+        // A word has at least one byte: a bracket that closes nothing is one of its own.
+        self.at = length.map_or(self.bytes.len(), |length| self.at + length.max(1));
+        let word = &self.bytes[place.start..self.at];
         let (kind, lead) = match word[0] {
             b'_' => (TokenKind::Tag, 0),
             b'd' | b'D' if has_prefix(word, b"data_") => (TokenKind::Block, 5),
@@ -222,7 +353,46 @@ impl<'s> Lexer<'s> {
             b'g' | b'G' if word.eq_ignore_ascii_case(b"global_") => (TokenKind::Global, 0),
             _ => (TokenKind::Bare, 0),
         };
-        Token { kind, span, start: start + lead, end: self.at }
+        let is_reserved = is(word[0], RESERVED);
+        let token = Token { kind, span: self.span_from(place), start: place.start + lead, end: self.at };
+        if kind == TokenKind::Bare && is_reserved {
+            self.report_reserved(&token, char::from(self.bytes[place.start]));
+        }
+        token
+    }
+
+    fn report_reserved(&mut self, token: &Token, first: char) {
+        let span = token.span;
+        self.findings.add(Code::CifBracket, || {
+            Diagnostic::warning(
+                Code::CifBracket,
+                format!(
+                    "a value without quotes begins with {first}, which is reserved; it was kept as it is"
+                ),
+            )
+            .at(span)
+            .hint(format!("'{first}…'"))
+        });
+    }
+
+    /// Passes over a closing bracket that closes nothing.
+    fn skip_stray_bracket(&mut self, bracket: u8) {
+        let place = self.here();
+        self.at += 1;
+        let span = self.span_from(place);
+        self.findings.add(Code::CifBracket, || {
+            let message = format!("bracket {} closes nothing and was passed over", char::from(bracket));
+            Diagnostic::error(Code::CifBracket, message).at(span)
+        });
+    }
+
+    /// One value or word, no list and no table. The current byte begins it.
+    fn simple(&mut self, first: u8) -> Token {
+        match first {
+            b';' if self.at == self.line_start => self.text_field(),
+            b'\'' | b'"' => self.quoted(first),
+            _ => self.word(),
+        }
     }
 }
 
@@ -230,88 +400,73 @@ impl Iterator for Lexer<'_> {
     type Item = Token;
 
     fn next(&mut self) -> Option<Token> {
-        self.skip_blanks_and_comments();
-        match self.peek()? {
-            b';' if self.at == self.line_start => Some(self.text_field()),
-            quote @ (b'\'' | b'"') => Some(self.quoted(quote)),
-            _ => Some(self.word()),
+        loop {
+            self.skip_blanks_and_comments();
+            let first = self.peek()?;
+            if self.dialect == Dialect::One {
+                let token = self.simple(first);
+                if token.kind == TokenKind::Text {
+                    self.expect_blank("the text field", false);
+                }
+                return Some(token);
+            }
+            match first {
+                b']' | b'}' => self.skip_stray_bracket(first),
+                b'[' | b'{' => return Some(self.compound(&mut |_| {})),
+                _ => {
+                    let token = self.simple(first);
+                    self.expect_blank("this value", true);
+                    return Some(token);
+                }
+            }
         }
     }
 }
 
-/// What is wrong with the bytes themselves: an encoding that cannot be read, bytes that are not UTF-8, control bytes.
-/// Each is reported once, at its first place.
-pub(super) fn inspect(bytes: &[u8]) -> Vec<Diagnostic> {
-    if bytes.starts_with(&[0xFF, 0xFE]) || bytes.starts_with(&[0xFE, 0xFF]) {
-        return vec![
-            Diagnostic::error(Code::CifEncoding, "the file is in UTF-16, not in ASCII or UTF-8")
-                .at(span_of_byte(bytes, 0))
-                .hint("iconv -f UTF-16 -t UTF-8 FILE"),
-        ];
-    }
-    let mut found = Vec::new();
-    if let Err(error) = std::str::from_utf8(bytes) {
-        let offset = error.valid_up_to();
-        found.push(
-            Diagnostic::warning(
-                Code::CifNotUtf8,
-                format!(
-                    "byte 0x{:02X} is not UTF-8; such bytes are shown as \u{FFFD}",
-                    bytes.get(offset).copied().unwrap_or_default()
-                ),
-            )
-            .at(span_of_byte(bytes, offset))
-            .hint("iconv -f ISO-8859-1 -t UTF-8 FILE"),
-        );
-    }
-    let is_control = |&byte: &u8| byte < 0x20 && !matches!(byte, b'\t' | b'\n' | b'\r');
-    if let Some(offset) = bytes.iter().position(is_control) {
-        found.push(
-            Diagnostic::warning(
-                Code::CifControlByte,
-                format!("control byte 0x{:02X} in the text", bytes[offset]),
-            )
-            .at(span_of_byte(bytes, offset))
-            .hint("tr -d '\\000-\\010\\013\\014\\016-\\037' < FILE"),
-        );
-    }
-    found
+/// Where a token begins.
+#[derive(Debug, Clone, Copy)]
+struct Place {
+    start: usize,
+    line: usize,
+    column: usize,
 }
 
-/// The span of one byte, found by counting lines from the start.
-fn span_of_byte(bytes: &[u8], offset: usize) -> Span {
-    let (mut at, mut line, mut line_start) = (0, 1, 0);
-    while at < offset {
-        let length = line_end_length(bytes, at);
-        at += length.max(1);
-        if length > 0 && at <= offset {
-            line += 1;
-            line_start = at;
-        }
+const BLANK: u8 = 1;
+const LINE_END: u8 = 2;
+const BRACKET: u8 = 4;
+/// What must not begin a value without quotes: volume G, 2.2.7.1, paragraph 14.
+const RESERVED: u8 = 8;
+
+/// What each byte is.
+static CLASS: [u8; 256] = {
+    let mut class = [0; 256];
+    let mut byte = 0;
+    while byte < 256 {
+        class[byte] = match byte as u8 {
+            b' ' | b'\t' | 0x0B | 0x0C | 0x00 | 0x1A => BLANK,
+            b'\n' | b'\r' => LINE_END,
+            b'[' | b']' => BRACKET | RESERVED,
+            b'{' | b'}' => BRACKET,
+            b'$' => RESERVED,
+            _ => 0,
+        };
+        byte += 1;
     }
-    Span { start: offset, end: (offset + 1).min(bytes.len()), line, column: offset - line_start + 1 }
+    class
+};
+
+/// Whether a tag or a heading ends before this byte.
+pub(super) fn ends_name(byte: u8) -> bool {
+    is(byte, BLANK | LINE_END)
 }
 
-/// Offset of the first line end at or after `from`, or the end of the bytes.
-fn line_end_after(bytes: &[u8], from: usize) -> usize {
-    bytes[from..].iter().position(|&b| b == b'\n' || b == b'\r').map_or(bytes.len(), |n| from + n)
+fn is(byte: u8, class: u8) -> bool {
+    CLASS[usize::from(byte)] & class != 0
 }
 
-/// How many bytes the line end at `at` has: none, one or two.
-fn line_end_length(bytes: &[u8], at: usize) -> usize {
-    match bytes.get(at) {
-        Some(b'\r') if bytes.get(at + 1) == Some(&b'\n') => 2,
-        Some(b'\r' | b'\n') => 1,
-        _ => 0,
-    }
-}
-
-fn is_blank(byte: u8) -> bool {
-    matches!(byte, b' ' | b'\t' | 0x0B | 0x0C | 0x00 | 0x1A)
-}
-
-fn is_blank_or_line_end(byte: u8) -> bool {
-    is_blank(byte) || byte == b'\n' || byte == b'\r'
+/// Whether a tag or a heading begins here; brackets are part of them.
+fn begins_name(rest: &[u8]) -> bool {
+    rest[0] == b'_' || has_prefix(rest, b"data_") || has_prefix(rest, b"save_")
 }
 
 fn has_prefix(word: &[u8], prefix: &[u8]) -> bool {
@@ -320,6 +475,7 @@ fn has_prefix(word: &[u8], prefix: &[u8]) -> bool {
 
 #[cfg(test)]
 mod tests {
+    use super::super::source::Lines;
     use super::*;
     use proptest::prelude::*;
 
@@ -385,15 +541,18 @@ mod tests {
     }
 
     #[test]
-    fn bytes_are_inspected_once() {
-        let found = inspect(b"ab\n\xE9\xE9\x00\x00");
-        assert_eq!(
-            found.iter().map(|d| d.code).collect::<Vec<_>>(),
-            [Code::CifNotUtf8, Code::CifControlByte]
-        );
-        assert_eq!(found[0].span.map(|s| (s.line, s.column)), Some((2, 1)));
-        assert_eq!(inspect(b"\xFF\xFEd\0")[0].code, Code::CifEncoding);
-        assert!(inspect("# Å\n\t".as_bytes()).is_empty());
+    fn the_first_line_declares_the_edition() {
+        for (text, dialect, codes) in [
+            ("#\\#CIF_2.0\n", Dialect::Two, vec![]),
+            ("\u{FEFF}#\\#CIF_2.0 \n", Dialect::Two, vec![]),
+            ("#\\#CIF_1.1", Dialect::One, vec![]),
+            ("#\\#CIF_2.01\n", Dialect::One, vec![Code::CifEdition]),
+            (" #\\#CIF_2.0\n", Dialect::One, vec![]),
+            ("# any\n", Dialect::One, vec![]),
+        ] {
+            assert_eq!(Lexer::new(text.as_bytes()).dialect(), dialect, "{text}");
+            assert_eq!(super::tests::codes(text.as_bytes()), codes, "{text}");
+        }
     }
 
     proptest! {
@@ -405,7 +564,7 @@ mod tests {
         #[test]
         fn spans_are_ordered_in_text_that_looks_like_a_file(
             text in proptest::collection::vec(
-                proptest::sample::select(vec!["data_", "loop_", "_a", "'", "\"", ";", "\n", "\r", " ", "#", "'''", "x", "save_"]),
+                proptest::sample::select(vec!["data_", "loop_", "_a", "'", "\"", ";", "\n", "\r", " ", "#", "'''", "x", "save_", "#\\#CIF_2.0\n", "[", "]", "{", "}", ":", "'k':"]),
                 0..60,
             )
         ) {
@@ -415,10 +574,11 @@ mod tests {
 
     fn check_spans(bytes: &[u8]) -> Result<(), TestCaseError> {
         let mut end = 0;
+        let (lines, _) = Lines::of(bytes);
         for token in Lexer::new(bytes) {
             prop_assert!(token.span.start >= end && token.span.end > token.span.start);
             prop_assert!(token.span.end <= bytes.len());
-            prop_assert_eq!(span_of_byte(bytes, token.span.start).line, token.span.line);
+            prop_assert_eq!(lines.at(bytes, token.span.start).line, token.span.line);
             end = token.span.end;
         }
         Ok(())

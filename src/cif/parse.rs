@@ -3,63 +3,83 @@
 //! The parser never stops at a fault: it reports it and goes on at the next tag, loop or block. An *error* means that
 //! something in the file was lost or had to be guessed at, a *warning* that the file was read in the one way it can be
 //! meant. Whether a structure is refused because of it is decided by the reader, which refuses only what it uses.
+//! Time and memory are linear in the length of the file, whatever is in it.
 
-use super::document::{Block, Document, Item, Loop, Pair, Tag, Value, ValueKind};
-use super::lex::{Lexer, Token, TokenKind, inspect};
+mod repeated;
+
+use super::document::{BlockShape, Document, Entry, FrameShape, LoopShape, MAX_OFFSET, Place};
+use super::findings::Findings;
+use super::lex::{Dialect, Lexer, Token, TokenKind};
+use super::source::{Lines, inspect, narrow};
 use crate::diagnostic::{Code, Diagnostic, Span};
+use repeated::repeated;
 use std::borrow::Cow;
-use std::collections::HashMap;
 
 /// Longest part of a value that a message quotes, in characters.
 const QUOTED_LENGTH: usize = 40;
+/// Longest name in characters, in CIF 1.1 (volume G, 2.2.7.1, paragraph 5) and in CIF 2.0, where the line is the limit.
+const MAX_NAME: [usize; 2] = [75, 2048];
 
-/// Parses a file. The diagnostics are in the order of the file.
+/// Parses a file. The diagnostics are in the order of the file; of each code at most 100 are listed and the rest counted.
 ///
 /// ```
 /// use cosetta::cif::parse;
 /// let (document, diagnostics) = parse(b"data_NaCl\n_cell_length_a 5.64(1)\n");
 /// assert!(diagnostics.is_empty());
-/// assert_eq!(document.blocks[0].value("_Cell_Length_a").map(|value| value.text.as_ref()), Some("5.64(1)"));
+/// let block = document.block(0).unwrap();
+/// assert_eq!(block.value("_Cell_Length_a").unwrap().text, "5.64(1)");
 /// ```
 #[must_use]
 pub fn parse(bytes: &[u8]) -> (Document<'_>, Vec<Diagnostic>) {
-    let mut diagnostics = inspect(bytes);
-    if diagnostics.iter().any(|found| found.code == Code::CifEncoding) {
-        let dialect = Lexer::new(&[]).dialect();
-        return (Document { source: bytes, dialect, blocks: Vec::new() }, diagnostics);
+    if bytes.len() >= MAX_OFFSET {
+        let message = format!("the file has {} bytes, above the limit of {}", bytes.len(), MAX_OFFSET - 1);
+        return (
+            Parser::new(&[], Lines::of(&[]).0).document,
+            vec![Diagnostic::error(Code::FileTooLarge, message)],
+        );
     }
-    let mut parser = Parser {
-        source: bytes,
-        text: std::str::from_utf8(bytes).ok(),
-        lexer: Lexer::new(bytes),
-        ahead: None,
-        blocks: Vec::new(),
-        frame: None,
-        names: HashMap::new(),
-        diagnostics: Vec::new(),
-    };
+    let (lines, long) = Lines::of(bytes);
+    let mut diagnostics = inspect(bytes, &lines, long, Lexer::new(bytes).dialect());
+    let mut parser = Parser::new(bytes, lines);
+    if diagnostics.iter().any(|found| found.code == Code::CifEncoding) {
+        return (parser.document, diagnostics);
+    }
     parser.run();
-    let dialect = parser.lexer.dialect();
-    diagnostics.append(&mut parser.diagnostics);
-    diagnostics.extend(parser.lexer.into_diagnostics());
-    diagnostics.sort_by_key(|found| found.span.map_or(0, |span| span.start));
-    (Document { source: bytes, dialect, blocks: parser.blocks }, diagnostics)
+    repeated(&parser.document, &mut parser.findings);
+    diagnostics.extend(parser.findings.merge(parser.lexer.into_findings()));
+    // What has no place is said last.
+    diagnostics.sort_by_key(|found| found.span.map_or(usize::MAX, |span| span.start));
+    (parser.document, diagnostics)
 }
 
 struct Parser<'s> {
-    source: &'s [u8],
-    /// The source as text, when all of it is UTF-8.
-    text: Option<&'s str>,
+    document: Document<'s>,
     lexer: Lexer<'s>,
     ahead: Option<Token>,
-    blocks: Vec<Block<'s>>,
-    frame: Option<Block<'s>>,
-    /// Block names in lower case, with the line of the first.
-    names: HashMap<String, usize>,
-    diagnostics: Vec<Diagnostic>,
+    /// The heading and the first entry of the save frame that is open.
+    frame: Option<(Token, u32)>,
+    findings: Findings,
 }
 
 impl<'s> Parser<'s> {
+    fn new(source: &'s [u8], lines: Lines) -> Self {
+        let lexer = Lexer::new(source);
+        let document = Document {
+            source,
+            text: std::str::from_utf8(source).ok(),
+            dialect: lexer.dialect(),
+            lines,
+            blocks: Vec::new(),
+            frames: Vec::new(),
+            entries: Vec::new(),
+            loops: Vec::new(),
+            marks: Vec::new(),
+            surplus: Vec::new(),
+            faults: Vec::new(),
+        };
+        Self { document, lexer, ahead: None, frame: None, findings: Findings::default() }
+    }
+
     fn next(&mut self) -> Option<Token> {
         self.ahead.take().or_else(|| self.lexer.next())
     }
@@ -77,232 +97,287 @@ impl<'s> Parser<'s> {
         while let Some(token) = self.next() {
             match token.kind {
                 TokenKind::Block => self.open_block(&token),
-                TokenKind::Frame => self.open_frame(&token),
+                TokenKind::Frame => self.open_frame(token),
                 TokenKind::FrameEnd => {
                     if !self.close_frame() {
-                        self.report(Code::CifFrame, "a save frame ends here that was not opened", token.span);
+                        self.error(Code::CifFrame, token.span, || {
+                            "a save frame ends here that was not opened".into()
+                        });
                     }
                 }
                 TokenKind::Loop => self.read_loop(&token),
                 TokenKind::Tag => self.read_pair(&token),
                 TokenKind::Global => {
-                    self.warn(
-                        Code::CifReserved,
-                        "global_ is not part of CIF; its items were read as a block of their own",
-                        token.span,
-                    );
+                    self.warn(Code::CifReserved, token.span, || {
+                        "global_ is not part of CIF; its items were read as a block of their own".into()
+                    });
                     self.close_frame();
-                    self.blocks.push(Block::new(Cow::Borrowed(""), token.span));
+                    self.push_block(Some(&token));
                 }
-                TokenKind::Stop => {
-                    self.warn(Code::CifReserved, "stop_ is not part of CIF and was passed over", token.span);
-                }
-                TokenKind::Bare | TokenKind::Quoted | TokenKind::Text => self.skip_strays(&token),
+                TokenKind::Stop => self.pass_over_stop(&token),
+                kind if is_value(kind) => self.skip_strays(&token),
+                _ => {}
             }
         }
-        if let Some(frame) = &self.frame {
-            let (message, span) = (format!("save frame '{}' is not closed", frame.name), frame.span);
-            self.report(Code::CifFrame, message, span);
+        if let Some((frame, _)) = self.frame {
+            let name = self.text_of(&frame);
+            self.error(Code::CifFrame, frame.span, || format!("save frame '{}' is not closed", shown(&name)));
             self.close_frame();
         }
+        self.end_block();
+    }
+
+    /// The number that the next entry gets.
+    fn next_entry(&self) -> u32 {
+        narrow(self.document.entries.len())
+    }
+
+    fn end_block(&mut self) {
+        let end = self.next_entry();
+        if let Some(block) = self.document.blocks.last_mut() {
+            block.entries.end = end;
+        }
+    }
+
+    fn push_block(&mut self, heading: Option<&Token>) {
+        self.end_block();
+        let first = self.next_entry();
+        let heading = heading.map(|token| narrow(token.span.start));
+        self.document.blocks.push(BlockShape { heading, entries: first..first });
     }
 
     fn open_block(&mut self, token: &Token) {
-        if let Some(frame) = &self.frame {
-            let message = format!("save frame '{}' is not closed before the next block", frame.name);
-            let span = frame.span;
-            self.report(Code::CifFrame, message, span);
+        if let Some((frame, _)) = self.frame {
+            let name = self.text_of(&frame);
+            self.error(Code::CifFrame, frame.span, || {
+                format!("save frame '{}' is not closed before the next block", shown(&name))
+            });
             self.close_frame();
         }
-        let name = self.text_of(token);
-        if name.is_empty() {
-            self.warn(Code::CifBlockUnnamed, "the block has no name after data_", token.span);
-        } else if let Some(first) = self.names.insert(name.to_ascii_lowercase(), token.span.line) {
-            self.warn(
-                Code::CifBlockRepeated,
-                format!("block name '{}' was used before, at line {first}", shown(&name)),
-                token.span,
-            );
+        if token.start == token.end {
+            self.warn(Code::CifBlockUnnamed, token.span, || "the block has no name after data_".into());
         }
-        self.blocks.push(Block::new(name, token.span));
+        self.check_length(token, "the name of a block");
+        self.push_block(Some(token));
     }
 
-    fn open_frame(&mut self, token: &Token) {
+    fn open_frame(&mut self, token: Token) {
         if self.frame.is_some() {
-            self.report(Code::CifFrame, "a save frame begins inside another", token.span);
+            self.error(Code::CifFrame, token.span, || "a save frame begins inside another".into());
             self.close_frame();
         }
-        self.frame = Some(Block::new(self.text_of(token), token.span));
+        self.check_length(&token, "the name of a save frame");
+        self.need_block(token.span);
+        self.frame = Some((token, self.next_entry()));
     }
 
     fn close_frame(&mut self) -> bool {
-        let Some(frame) = self.frame.take() else { return false };
-        let span = frame.span;
-        self.block(span).frames.push(frame);
+        let Some((heading, first)) = self.frame.take() else { return false };
+        let shape = FrameShape {
+            block: narrow(self.document.blocks.len() - 1),
+            heading: narrow(heading.span.start),
+            entries: first..self.next_entry(),
+        };
+        self.document.frames.push(shape);
         true
     }
 
-    /// The last block, made now if the file has not begun one.
-    fn block(&mut self, span: Span) -> &mut Block<'s> {
-        if self.blocks.is_empty() {
-            self.warn(
-                Code::CifNoHeader,
-                "data before the first data_ heading; they were read as a block without a name",
-                span,
-            );
-            self.blocks.push(Block::new(Cow::Borrowed(""), Span { end: span.start, ..span }));
-        }
-        let last = self.blocks.len() - 1;
-        &mut self.blocks[last]
-    }
-
-    fn push(&mut self, item: Item<'s>, span: Span) {
-        let target = match &mut self.frame {
-            Some(frame) => frame,
-            None => self.block(span),
-        };
-        let repeated = target.push(item);
-        for tag in repeated {
-            self.warn(
-                Code::CifTagRepeated,
-                format!("tag {} was given before in this block; the first was kept", shown(&tag.name)),
-                tag.span,
-            );
+    /// Makes a block without a name if the file has not begun one.
+    fn need_block(&mut self, span: Span) {
+        if self.document.blocks.is_empty() {
+            self.warn(Code::CifNoHeader, span, || {
+                "data before the first data_ heading; they were read as a block without a name".into()
+            });
+            self.push_block(None);
         }
     }
 
-    fn read_pair(&mut self, token: &Token) {
-        let tag = self.tag_of(token);
+    fn check_length(&mut self, token: &Token, what: &str) {
+        let limit = MAX_NAME[usize::from(self.document.dialect == Dialect::Two)];
+        if token.end - token.start <= limit {
+            return;
+        }
+        let name = self.text_of(token);
+        let length = name.chars().count();
+        if length > limit {
+            self.warn(Code::CifNameLong, token.span, || {
+                format!("{what} has {length} characters, above the limit of {limit}: '{}'", shown(&name))
+            });
+        }
+    }
+
+    fn push_entry(&mut self, tag: &Token, place: Place) {
+        self.check_length(tag, "a tag");
+        self.document.entries.push(Entry::new(self.document.source, tag.start..tag.end, place));
+    }
+
+    fn read_pair(&mut self, tag: &Token) {
         if let Some(value) = self.next_if(is_value) {
-            let value = self.value_of(&value);
-            self.push(Item::Pair(Pair { tag, value, surplus: None }), token.span);
-        } else {
-            let message = format!("tag {} has no value", shown(&tag.name));
-            let hint = format!("{} ?", shown(&tag.name));
-            self.diagnostics.push(Diagnostic::error(Code::CifNoValue, message).at(token.span).hint(hint));
+            self.need_block(tag.span);
+            self.push_entry(tag, Place::Pair(narrow(value.span.start)));
+            return;
         }
+        let name = self.text_of(tag);
+        self.findings.add(Code::CifNoValue, || {
+            Diagnostic::error(Code::CifNoValue, format!("tag {} has no value", shown(&name)))
+                .at(tag.span)
+                .hint(format!("{} ?", shown(&name)))
+        });
     }
 
     fn read_loop(&mut self, token: &Token) {
-        let mut tags = Vec::new();
+        let (number, first_entry) = (narrow(self.document.loops.len()), self.next_entry());
         while let Some(tag) = self.next_if(|kind| kind == TokenKind::Tag) {
-            tags.push(self.tag_of(&tag));
-        }
-        if tags.is_empty() {
-            let mut skipped = 0;
-            while self.next_if(is_value).is_some() {
-                skipped += 1;
+            if self.next_entry() == first_entry {
+                self.need_block(token.span);
             }
-            self.report(
-                Code::CifLoopNoTags,
-                format!("loop_ is not followed by a tag; {skipped} values were passed over"),
-                token.span,
-            );
+            self.push_entry(&tag, Place::Column(number));
+        }
+        let columns = self.next_entry() - first_entry;
+        if columns == 0 {
+            self.skip_values_of_no_tag(token);
             return;
         }
-        let mut values = Vec::new();
+        let first_mark = narrow(self.document.marks.len());
+        let mut values = 0_usize;
         while let Some(value) = self.next_if(is_value) {
-            values.push(self.value_of(&value));
+            if values.is_multiple_of(LoopShape::VALUES_PER_MARK) {
+                self.document.marks.push(narrow(value.span.start));
+            }
+            values += 1;
         }
-        if self.next_if(|kind| kind == TokenKind::Stop).is_some() {
-            self.warn(Code::CifReserved, "stop_ is not part of CIF and was passed over", token.span);
+        if let Some(stop) = self.next_if(|kind| kind == TokenKind::Stop) {
+            self.pass_over_stop(&stop);
         }
-        if values.is_empty() {
-            let message = format!("the loop of {} has no values", shown(&tags[0].name));
-            self.warn(Code::CifLoopEmpty, message, token.span);
-        }
-        let surplus = values.len() % tags.len();
-        let fault = (surplus > 0).then(|| {
-            let whole = values.len() - surplus;
-            Diagnostic::error(
-                Code::CifLoopRagged,
-                format!(
-                    "the loop of {} has {} tags but {} values: the last row, which begins with '{}', lacks {}",
-                    shown(&tags[0].name),
-                    tags.len(),
-                    values.len(),
-                    shown(&values[whole].text),
-                    tags.len() - surplus
-                ),
-            )
-            .at(values[whole].span)
-            .hint("put values with blanks in quotes, and ? for a missing value")
+        let rows = narrow(values / columns as usize);
+        self.document.loops.push(LoopShape {
+            start: narrow(token.span.start),
+            first_entry,
+            columns,
+            rows,
+            first_mark,
         });
-        self.diagnostics.extend(fault.clone());
-        values.truncate(values.len() - surplus);
-        self.push(Item::Loop(Loop { span: token.span, tags, values, fault }), token.span);
+        if values == 0 {
+            let name = self.name_of(first_entry);
+            self.warn(Code::CifLoopEmpty, token.span, || {
+                format!("the loop of {} has no values", shown(&name))
+            });
+        } else if !values.is_multiple_of(columns as usize) {
+            self.report_ragged(number, values);
+        }
+    }
+
+    fn report_ragged(&mut self, number: u32, values: usize) {
+        let shape = self.document.loops[number as usize];
+        let columns = shape.columns as usize;
+        let whole = values - values % columns;
+        let mark = shape.first_mark as usize + whole / LoopShape::VALUES_PER_MARK;
+        let mut lexer = self.document.lexer_at(self.document.marks[mark] as usize);
+        let Some(first) = lexer.nth(whole % LoopShape::VALUES_PER_MARK) else { return };
+        let found = Diagnostic::error(
+            Code::CifLoopRagged,
+            format!(
+                "the loop of {} has {columns} tags but {values} values: the last row, which begins with '{}', lacks {}",
+                shown(&self.name_of(shape.first_entry)),
+                shown(&self.text_of(&first)),
+                columns - values % columns
+            ),
+        )
+        .at(first.span)
+        .hint("put values with blanks in quotes, and ? for a missing value");
+        self.findings.add(Code::CifLoopRagged, || found.clone());
+        self.document.faults.push((number, found));
+    }
+
+    fn skip_values_of_no_tag(&mut self, token: &Token) {
+        let mut skipped = 0_usize;
+        while self.next_if(is_value).is_some() {
+            skipped += 1;
+        }
+        self.error(Code::CifLoopNoTags, token.span, || {
+            format!("loop_ is not followed by a tag; {skipped} values were passed over")
+        });
+    }
+
+    fn pass_over_stop(&mut self, token: &Token) {
+        self.warn(Code::CifReserved, token.span, || "stop_ is not part of CIF and was passed over".into());
     }
 
     /// Passes over values that no tag announces, and tells the pair before them.
     fn skip_strays(&mut self, first: &Token) {
-        let (mut last, mut count) = (*first, 1);
+        let (mut last, mut count) = (*first, 1_usize);
         while let Some(value) = self.next_if(is_value) {
             (last, count) = (value, count + 1);
         }
         let span = Span { end: last.span.end, ..first.span };
-        let text = self.text_of(first).into_owned();
-        if self.blocks.is_empty() && self.frame.is_none() {
-            self.warn(
-                Code::CifNoHeader,
+        let text = self.text_of(first);
+        if self.document.blocks.is_empty() {
+            self.warn(Code::CifNoHeader, span, || {
                 format!(
                     "text before the first data_ heading was passed over; it begins with '{}'",
                     shown(&text)
-                ),
-                span,
-            );
+                )
+            });
             return;
         }
-        let message = if count == 1 {
-            format!("value '{}' has no tag", shown(&text))
-        } else {
-            format!("{count} values have no tag; the first is '{}'", shown(&text))
-        };
-        let mut found = Diagnostic::error(Code::CifNoTag, message).at(span);
-        let target = self.frame.as_mut().or(self.blocks.last_mut());
-        if let Some(Item::Pair(pair)) = target.and_then(|block| block.items.last_mut()) {
-            pair.surplus = Some(span);
-            if pair.value.span.line == span.line && count < 10 {
-                let tag = shown(&pair.tag.name).into_owned();
-                found = found.hint(format!("put the whole value of {tag} in quotes"));
-            }
+        let pair = self.pair_before();
+        if let Some((entry, _)) = pair {
+            self.document.surplus.push((entry, span));
         }
-        self.diagnostics.push(found);
+        // The whole value is meant to be quoted when all of it is on one line.
+        let is_on_its_line =
+            |value: usize| self.document.lines.at(self.document.source, value).line == span.line;
+        let tag = pair
+            .filter(|(_, value)| count < 10 && is_on_its_line(*value))
+            .map(|(entry, _)| self.name_of(entry));
+        self.findings.add(Code::CifNoTag, || {
+            let message = if count == 1 {
+                format!("value '{}' has no tag", shown(&text))
+            } else {
+                format!("{count} values have no tag; the first is '{}'", shown(&text))
+            };
+            let found = Diagnostic::error(Code::CifNoTag, message).at(span);
+            match tag {
+                Some(tag) => found.hint(format!("put the whole value of {} in quotes", shown(&tag))),
+                None => found,
+            }
+        });
     }
 
-    fn tag_of(&self, token: &Token) -> Tag<'s> {
-        Tag { name: self.text_of(token), span: token.span }
-    }
-
-    fn value_of(&self, token: &Token) -> Value<'s> {
-        let text = self.text_of(token);
-        let kind = match (token.kind, text.as_ref()) {
-            (TokenKind::Quoted, _) => ValueKind::Quoted,
-            (TokenKind::Text, _) => ValueKind::Text,
-            (_, ".") => ValueKind::Inapplicable,
-            (_, "?") => ValueKind::Unknown,
-            _ => ValueKind::Bare,
+    /// The number of the last entry and where its value begins, when it is a pair of the block or save frame at hand.
+    fn pair_before(&self) -> Option<(u32, usize)> {
+        let first = match self.frame {
+            Some((_, first)) => first,
+            None => self.document.blocks.last()?.entries.start,
         };
-        Value { kind, span: token.span, text }
+        let number = self.next_entry().checked_sub(1).filter(|number| *number >= first)?;
+        match self.document.entries[number as usize].place() {
+            Place::Pair(value) => Some((number, value as usize)),
+            Place::Column(_) => None,
+        }
+    }
+
+    fn name_of(&self, entry: u32) -> Cow<'s, str> {
+        let start = self.document.entries[entry as usize].tag as usize;
+        let token = self.document.lexer_at(start).next();
+        token.map_or(Cow::Borrowed(""), |token| self.text_of(&token))
     }
 
     fn text_of(&self, token: &Token) -> Cow<'s, str> {
-        match self.text.and_then(|text| text.get(token.start..token.end)) {
-            Some(text) => Cow::Borrowed(text),
-            None => String::from_utf8_lossy(self.source.get(token.start..token.end).unwrap_or_default()),
-        }
+        self.document.slice(token.start, token.end)
     }
 
-    fn report(&mut self, code: Code, message: impl Into<String>, span: Span) {
-        self.diagnostics.push(Diagnostic::error(code, message).at(span));
+    fn error(&mut self, code: Code, span: Span, message: impl FnOnce() -> String) {
+        self.findings.add(code, || Diagnostic::error(code, message()).at(span));
     }
 
-    fn warn(&mut self, code: Code, message: impl Into<String>, span: Span) {
-        self.diagnostics.push(Diagnostic::warning(code, message).at(span));
+    fn warn(&mut self, code: Code, span: Span, message: impl FnOnce() -> String) {
+        self.findings.add(code, || Diagnostic::warning(code, message()).at(span));
     }
 }
 
 fn is_value(kind: TokenKind) -> bool {
-    matches!(kind, TokenKind::Bare | TokenKind::Quoted | TokenKind::Text)
+    matches!(kind, TokenKind::Bare | TokenKind::Quoted | TokenKind::Text | TokenKind::List | TokenKind::Table)
 }
 
 /// A text short enough for a message, without line ends.
@@ -321,6 +396,7 @@ pub(super) fn shown(text: &str) -> Cow<'_, str> {
 
 #[cfg(test)]
 mod tests {
+    use super::super::document::Item;
     use super::*;
     use proptest::prelude::*;
 
@@ -333,10 +409,13 @@ mod tests {
         let text = "# c\ndata_a\n_t 1\nloop_ _x _y 1 'b c' 2 .\nsave_f _t 2 save_\ndata_b\n_t\n;text\n;\n";
         let (document, found) = parse(text.as_bytes());
         assert!(found.is_empty(), "{found:?}");
-        assert_eq!(document.blocks.len(), 2);
-        assert_eq!(document.blocks[0].frames[0].value("_t").map(|v| v.text.as_ref()), Some("2"));
-        assert_eq!(document.blocks[0].value("_t").map(|v| v.text.as_ref()), Some("1"));
-        assert_eq!(document.blocks[1].value("_t").map(|v| v.text.as_ref()), Some("text"));
+        assert_eq!(document.blocks().len(), 2);
+        assert_eq!(
+            document.block(0).expect("a block").frames().next().expect("a frame").value("_t").map(|v| v.text),
+            Some("2".into())
+        );
+        assert_eq!(document.block(0).expect("a block").value("_t").map(|v| v.text), Some("1".into()));
+        assert_eq!(document.block(1).expect("a block").value("_t").map(|v| v.text), Some("text".into()));
     }
 
     #[test]
@@ -364,8 +443,8 @@ mod tests {
             let text = format!("{text}\ndata_last _w 7");
             let (document, found) = parse(text.as_bytes());
             assert_eq!(found.iter().map(|d| d.code).collect::<Vec<_>>(), [expected], "{text}");
-            let last = document.blocks.last().expect("a block");
-            assert_eq!(last.value("_w").map(|v| v.text.as_ref()), Some("7"), "{text}");
+            let last = document.blocks().last().expect("a block");
+            assert_eq!(last.value("_w").map(|v| v.text), Some("7".into()), "{text}");
         }
         assert_eq!(codes("data_a _u\n;x\ndata_last _w 7"), [Code::CifTextOpen]);
     }
@@ -374,7 +453,7 @@ mod tests {
     fn whole_rows_of_a_ragged_loop_are_kept() {
         let (document, found) = parse(b"data_a\nloop_ _u _v\n1 2\n3 4\n5");
         assert_eq!(found[0].span.map(|s| (s.line, s.column)), Some((5, 1)));
-        let table = document.blocks[0].column(&["_v"]).expect("a loop");
+        let table = document.block(0).expect("a block").column(&["_v"]).expect("a loop");
         assert_eq!(table.rows(), 2);
         assert!(table.fault().is_some());
     }
@@ -382,7 +461,7 @@ mod tests {
     #[test]
     fn a_surplus_is_told_to_its_pair() {
         let (document, _) = parse(b"data_a _symbol P 21/c _other 1");
-        let pair = document.blocks[0].pair("_symbol").expect("there");
+        let pair = document.block(0).expect("a block").pair("_symbol").expect("there");
         assert_eq!(pair.surplus.map(|span| document.raw(span)), Some(&b"21/c"[..]));
     }
 
@@ -390,7 +469,7 @@ mod tests {
     fn bytes_that_are_not_utf8_are_kept_in_the_source() {
         let (document, found) = parse(b"data_a _u \xE9x");
         assert_eq!(found[0].code, Code::CifNotUtf8);
-        let value = document.blocks[0].value("_u").expect("there");
+        let value = document.block(0).expect("a block").value("_u").expect("there");
         assert_eq!(value.text, "\u{FFFD}x");
         assert_eq!(document.raw(value.span), b"\xE9x");
     }
@@ -416,10 +495,13 @@ mod tests {
         ) {
             let text = words.join(" ");
             let (document, _) = parse(text.as_bytes());
-            for block in &document.blocks {
-                for item in &block.items {
-                    if let Item::Loop(looped) = item {
-                        prop_assert_eq!(looped.values.len(), looped.rows() * looped.tags.len());
+            for block in document.blocks() {
+                for item in block.items() {
+                    if let Item::Loop(table) = item {
+                        prop_assert_eq!(table.iter().count(), table.rows());
+                        for row in table.iter() {
+                            prop_assert!(table.tags().enumerate().all(|(column, _)| row.value(column).is_some()));
+                        }
                     }
                 }
             }

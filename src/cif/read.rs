@@ -9,7 +9,7 @@ mod tags;
 
 pub use symmetry::{StatedSymmetry, SymmetrySource};
 
-use super::document::{Block, Document, Value};
+use super::document::{Block, Document};
 use super::parse::parse;
 use crate::cell::Lattice;
 use crate::crystal::{AsymmetricUnit, Element, ExpandTolerance, Operation, Site};
@@ -88,19 +88,27 @@ pub fn read_bytes(bytes: &[u8]) -> Reading {
 /// Reads every block of a document.
 #[must_use]
 pub fn read_document(document: &Document<'_>) -> Vec<BlockReading> {
-    document.blocks.iter().map(|block| read_block(document, block)).collect()
+    document.blocks().map(|block| read_block(&block)).collect()
 }
 
-fn read_block(document: &Document<'_>, block: &Block<'_>) -> BlockReading {
+/// Whether a block has any item of a cell or of atom sites.
+#[must_use]
+pub fn is_structure(block: &Block<'_, '_>) -> bool {
+    has_cell(block) || has_sites(block)
+}
+
+/// Reads one block of a document.
+#[must_use]
+pub fn read_block(block: &Block<'_, '_>) -> BlockReading {
     let mut diagnostics = Vec::new();
     let mut reading = BlockReading {
         name: block.name.clone().into_owned(),
         span: block.span,
-        is_structure: has_cell(block) || has_sites(block),
+        is_structure: is_structure(block),
         unit: Err(Diagnostic::error(Code::CifNoStructure, "the block holds no cell and no atom sites")
             .at(block.span)),
         stated: StatedSymmetry::default(),
-        formula_sum: value_of(block, FORMULA_SUM).and_then(Value::stated).map(str::to_owned),
+        formula_sum: value_of(block, FORMULA_SUM).and_then(|value| value.stated().map(str::to_owned)),
         formula_units: optional_number(block, FORMULA_UNITS, &mut diagnostics).filter(|units| *units > 0.0),
         cell_uncertainty: [None; 6],
         site_places: Vec::new(),
@@ -108,7 +116,7 @@ fn read_block(document: &Document<'_>, block: &Block<'_>) -> BlockReading {
         diagnostics: Vec::new(),
     };
     if reading.is_structure {
-        reading.unit = read_unit(document, block, &mut reading, &mut diagnostics);
+        reading.unit = read_unit(block, &mut reading, &mut diagnostics);
     }
     diagnostics.sort_by_key(|found| found.span.map_or(block.span.start, |span| span.start));
     reading.diagnostics = diagnostics;
@@ -116,8 +124,7 @@ fn read_block(document: &Document<'_>, block: &Block<'_>) -> BlockReading {
 }
 
 fn read_unit(
-    document: &Document<'_>,
-    block: &Block<'_>,
+    block: &Block<'_, '_>,
     reading: &mut BlockReading,
     noticed: &mut Vec<Diagnostic>,
 ) -> Result<AsymmetricUnit, Diagnostic> {
@@ -134,8 +141,13 @@ fn read_unit(
         formula: formula.as_ref(),
         units: reading.formula_units,
     };
-    let (stated, operations) =
-        read_symmetry(block, document.source, &lattice, |operations| evidence.misfit(operations), noticed);
+    let (stated, operations) = read_symmetry(
+        block,
+        block.document().source(),
+        &lattice,
+        |operations| evidence.misfit(operations),
+        noticed,
+    );
     reading.stated = stated;
     let operations = operations?;
     check_metric(block, &lattice, &uncertainty, &operations, noticed);
@@ -148,7 +160,7 @@ fn read_unit(
 }
 
 /// Refuses structures that are not crystals of atoms in three dimensions, by name.
-fn refuse_other_kinds(block: &Block<'_>) -> Result<(), Diagnostic> {
+fn refuse_other_kinds(block: &Block<'_, '_>) -> Result<(), Diagnostic> {
     let stated =
         |tags: Spellings| tags.iter().filter_map(|tag| block.value(tag)).find(|v| v.stated().is_some());
     let dimension = stated(MODULATION_DIMENSION).filter(|value| value.stated() != Some("0"));
@@ -273,7 +285,7 @@ impl Evidence<'_> {
 
     fn check(
         &self,
-        block: &Block<'_>,
+        block: &Block<'_, '_>,
         operations: &[Operation],
         is_named: bool,
         noticed: &mut Vec<Diagnostic>,
@@ -313,7 +325,7 @@ impl Evidence<'_> {
     /// Compares the sites with the formula; returns how many units of it they make.
     fn check_formula(
         &self,
-        block: &Block<'_>,
+        block: &Block<'_, '_>,
         made: &Composition,
         is_named: bool,
         noticed: &mut Vec<Diagnostic>,

@@ -4,7 +4,7 @@ use super::common::StructureOptions;
 use super::exit::Exit;
 use super::output::{self, Output};
 use super::render::Drawing;
-use crate::collection::{Input, Settings, classify_bytes, find_inputs};
+use crate::collection::{Member, Settings, classify_bytes, find_inputs};
 use crate::diagnostic::{Code, Diagnostic, Severity};
 use anyhow::Context;
 use clap::{Args, ValueEnum};
@@ -23,7 +23,7 @@ use std::path::PathBuf;
     An error is what keeps a structure from being classified; a warning says that the file was read in one of several \
     possible ways; a note does not change the answer.")]
 pub(super) struct Arguments {
-    /// CIF files, folders, or - for standard input
+    /// Files of structures (CIF, POSCAR, OPTIMADE JSON), also packed; folders; or - for standard input
     #[arg(required = true, value_name = "PATH")]
     paths: Vec<PathBuf>,
     #[command(flatten)]
@@ -50,7 +50,7 @@ pub(super) struct Arguments {
 enum Format {
     /// For people
     Text,
-    /// One JSON array with an object for each file
+    /// One JSON array with an object for each file or member of an archive
     Json,
 }
 
@@ -98,22 +98,25 @@ pub(super) fn run(arguments: Arguments) -> anyhow::Result<Exit> {
     let mut output = Output::open(arguments.output.as_deref())?;
     let mut tally = Tally::default();
     for input in find_inputs(&arguments.paths) {
-        let file = input.name();
-        let (source, findings) = examine(&input, &settings);
-        match arguments.format {
-            Format::Text => {
-                for finding in &findings {
-                    output.write(&drawing.draw(&file, &finding.block, &source, &finding.diagnostic))?;
+        input.visit(settings.max_unpacked, &mut |member| -> anyhow::Result<()> {
+            let file = member.name.clone();
+            let (source, findings) = examine(member, &settings);
+            match arguments.format {
+                Format::Text => {
+                    for finding in &findings {
+                        output.write(&drawing.draw(&file, &finding.block, &source, &finding.diagnostic))?;
+                    }
+                }
+                Format::Json => {
+                    let record = FileRecord { file: &file, diagnostics: &findings };
+                    let text = serde_json::to_string(&record).context("cannot write a record as JSON")?;
+                    let before = if tally.files == 0 { "[\n" } else { ",\n" };
+                    output.write(&format!("{before}{text}"))?;
                 }
             }
-            Format::Json => {
-                let record = FileRecord { file: &file, diagnostics: &findings };
-                let text = serde_json::to_string(&record).context("cannot write a record as JSON")?;
-                let before = if tally.files == 0 { "[\n" } else { ",\n" };
-                output.write(&format!("{before}{text}"))?;
-            }
-        }
-        tally.add(&findings);
+            tally.add(&findings);
+            Ok(())
+        })?;
     }
     if arguments.format == Format::Json {
         output.write(if tally.files == 0 { "[]\n" } else { "\n]\n" })?;
@@ -125,10 +128,10 @@ pub(super) fn run(arguments: Arguments) -> anyhow::Result<Exit> {
     Ok(tally.exit(arguments.strict))
 }
 
-/// The content of an input and all that is to be said about it, in the order of the file; what has no place comes last.
-fn examine(input: &Input, settings: &Settings) -> (Vec<u8>, Vec<Finding>) {
-    let file = input.name();
-    let bytes = match input.read() {
+/// The content of a file or member and all that is to be said about it, in the order of the file; what has no place comes last.
+fn examine(member: Member, settings: &Settings) -> (Vec<u8>, Vec<Finding>) {
+    let file = member.name.clone();
+    let bytes = match member.read() {
         Ok(bytes) => bytes,
         Err(diagnostic) => return (Vec::new(), vec![Finding { block: String::new(), diagnostic }]),
     };

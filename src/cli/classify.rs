@@ -3,7 +3,7 @@
 use super::common::{self, OutputOptions, StructureOptions};
 use super::exit::Exit;
 use super::output::{self, Output};
-use crate::collection::{Classification, Input, Material, Settings, classify_bytes, find_inputs};
+use crate::collection::{Contents, Material, Member, Settings, classify_member, find_inputs};
 use crate::diagnostic::Code;
 use crate::report::record::MaterialRecord;
 use crate::report::table::Table;
@@ -16,20 +16,25 @@ use std::collections::BTreeMap;
 use std::io::IsTerminal;
 use std::path::PathBuf;
 
-/// Inputs that are worked on together before their results are written.
+/// Files and members that are worked on together before their results are written.
 const CHUNK: usize = 256;
+/// Unpacked members are worked on together up to this many bytes.
+const CHUNK_BYTES: usize = 64 << 20;
+/// The structures of a file from this many bytes up are worked on together and written as they come.
+const LARGE: u64 = 8 << 20;
 
 /// Label each material: its polarization lattice, and whether it contains zero.
 ///
-/// Reads CIF files, folders of them (at any depth) and standard input. A file that cannot be answered is refused with
-/// a code and a reason and never stops the run. With one structure the answer is in words; with several there is one
+/// Reads CIF files, POSCAR files, OPTIMADE JSON, each also compressed with gzip; zip and tar archives of them; folders
+/// (at any depth) and standard input. A file that cannot be answered is refused with a code and a reason and never
+/// stops the run. With one structure the answer is in words; with several there is one
 /// row for each.
 #[derive(Debug, Args)]
 #[command(after_help = "Example:\n  cosetta classify structures/ktao3-perovskite.cif --plane 0,0,1\n\n\
     Exit status: 0 done, 1 some input was refused, 2 usage, 3 input or output failed.\n\
     Formal polarization is defined for insulators; a CIF does not show whether there is a band gap.")]
 pub(super) struct Arguments {
-    /// CIF files, folders, or - for standard input
+    /// Files of structures (CIF, POSCAR, OPTIMADE JSON), also packed; folders; or - for standard input
     #[arg(required = true, value_name = "PATH")]
     paths: Vec<PathBuf>,
     #[command(flatten)]
@@ -69,7 +74,7 @@ pub(super) fn run(arguments: Arguments) -> anyhow::Result<Exit> {
     let jobs = arguments.jobs.map_or(0, usize::from);
     let pool =
         rayon::ThreadPoolBuilder::new().num_threads(jobs).build().context("cannot start worker threads")?;
-    let mut sink = Sink {
+    let sink = Sink {
         output: Output::open(arguments.output.output.as_deref())?,
         format: arguments.format,
         details: arguments.details,
@@ -79,43 +84,104 @@ pub(super) fn run(arguments: Arguments) -> anyhow::Result<Exit> {
         kept: None,
         written: 0,
     };
-    let mut tally = Tally::default();
-    let progress = progress_bar(inputs.len(), arguments.output.quiet);
-    for chunk in inputs.chunks(CHUNK) {
-        let one = |input: &Input| {
-            let materials = classify_input(input, &settings);
+    let mut run = Run {
+        progress: progress_bar(inputs.len(), arguments.output.quiet),
+        pool: (jobs != 1).then_some(pool),
+        is_verbose: arguments.output.verbose,
+        tally: Tally::default(),
+        chunk: Vec::new(),
+        held: 0,
+        sink,
+    };
+    for input in &inputs {
+        let mut members = 0_u64;
+        input.visit(settings.max_unpacked, &mut |member| {
+            // How many members an archive holds is not known before.
+            run.progress.inc_length(members.min(1));
+            members += 1;
+            run.take(member)
+        })?;
+    }
+    run.flush()?;
+    run.progress.finish_and_clear();
+    run.sink.finish()?;
+    if !arguments.output.quiet && run.tally.materials > 1 {
+        output::talk(&run.tally.to_string());
+    }
+    Ok(run.tally.exit())
+}
+
+/// Collects members and classifies them together, in order.
+struct Run<'a> {
+    progress: ProgressBar,
+    /// Worker threads, unless one is enough.
+    pool: Option<rayon::ThreadPool>,
+    is_verbose: bool,
+    tally: Tally,
+    chunk: Vec<Member>,
+    held: usize,
+    sink: Sink<'a>,
+}
+
+impl Run<'_> {
+    fn take(&mut self, member: Member) -> anyhow::Result<()> {
+        if member.length() >= LARGE {
+            self.flush()?;
+            return self.take_large(member);
+        }
+        self.held += member.held();
+        self.chunk.push(member);
+        if self.chunk.len() >= CHUNK || self.held >= CHUNK_BYTES { self.flush() } else { Ok(()) }
+    }
+
+    fn flush(&mut self) -> anyhow::Result<()> {
+        self.held = 0;
+        let chunk = std::mem::take(&mut self.chunk);
+        let (progress, settings) = (&self.progress, self.sink.settings);
+        let one = |member: Member| {
+            let materials = classify_member(member, settings);
             progress.inc(1);
             materials
         };
         // A pool of one thread would only hand the work over and wait.
-        let results: Vec<Vec<Material>> = if jobs == 1 || chunk.len() == 1 {
-            chunk.iter().map(one).collect()
-        } else {
-            pool.install(|| chunk.par_iter().map(one).collect())
+        let results: Vec<Vec<Material>> = match &self.pool {
+            Some(pool) if chunk.len() > 1 => pool.install(|| chunk.into_par_iter().map(one).collect()),
+            _ => chunk.into_iter().map(one).collect(),
         };
-        for material in results.into_iter().flatten() {
-            tally.add(&material);
-            if arguments.output.verbose {
-                progress.suspend(|| talk_diagnostics(&material));
-            }
-            sink.take(material)?;
-        }
+        results.into_iter().flatten().try_for_each(|material| self.tell(material))
     }
-    progress.finish_and_clear();
-    sink.finish()?;
-    if !arguments.output.quiet && tally.materials > 1 {
-        output::talk(&tally.to_string());
-    }
-    Ok(tally.exit())
-}
 
-fn classify_input(input: &Input, settings: &Settings) -> Vec<Material> {
-    let file = input.name();
-    match input.read() {
-        Ok(bytes) => classify_bytes(&file, &bytes, settings),
-        Err(refusal) => {
-            vec![Material { file, block: String::new(), classification: Classification::refused(refusal) }]
+    /// Classifies the structures of one file in parallel.
+    fn take_large(&mut self, member: Member) -> anyhow::Result<()> {
+        let name = member.name.clone();
+        let bytes = match member.read() {
+            Ok(bytes) => bytes,
+            Err(refusal) => return self.tell(Material::refused(&name, refusal)),
+        };
+        let settings = self.sink.settings;
+        let contents = match Contents::open(&name, &bytes, settings) {
+            Ok(contents) => contents,
+            Err(refused) => return self.tell(*refused),
+        };
+        for first in (0..contents.len()).step_by(CHUNK) {
+            let numbers = first..(first + CHUNK).min(contents.len());
+            let one = |number| contents.classify(number, settings);
+            let results: Vec<Material> = match &self.pool {
+                Some(pool) => pool.install(|| numbers.into_par_iter().map(one).collect()),
+                None => numbers.map(one).collect(),
+            };
+            results.into_iter().try_for_each(|material| self.tell(material))?;
         }
+        self.progress.inc(1);
+        Ok(())
+    }
+
+    fn tell(&mut self, material: Material) -> anyhow::Result<()> {
+        self.tally.add(&material);
+        if self.is_verbose {
+            self.progress.suspend(|| talk_diagnostics(&material));
+        }
+        self.sink.take(material)
     }
 }
 

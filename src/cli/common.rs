@@ -1,11 +1,14 @@
 //! Options that several commands share.
 
+use super::exit::Exit;
+use super::output;
 use crate::charge::Given;
-use crate::collection::{PARENT_TOLERANCE, Settings};
+use crate::collection::{Input, Material, PARENT_TOLERANCE, Settings, classify_input};
 use crate::crystal::ExpandTolerance;
+use crate::diagnostic::Code;
 use crate::symmetry::Engine;
 use clap::Args;
-use std::path::PathBuf;
+use std::path::{Path, PathBuf};
 
 /// How a structure is read and searched.
 #[derive(Debug, Args)]
@@ -13,7 +16,7 @@ pub(super) struct StructureOptions {
     /// Formal charges in e by element or site label, such as 'Ta=5,K=1,O=-2'
     #[arg(long, value_name = "CHARGES", allow_hyphen_values = true, help_heading = "Structure")]
     charges: Option<Given>,
-    /// Only the data block of this name
+    /// Only the data block or entry of this name
     #[arg(long, value_name = "NAME", help_heading = "Structure")]
     block: Option<String>,
     /// Symmetry engine: moyo, or spglib where it is built in
@@ -35,6 +38,9 @@ pub(super) struct StructureOptions {
     /// Refuse cells with more sites than this
     #[arg(long, value_name = "N", default_value_t = ExpandTolerance::default().max_sites, help_heading = "Structure")]
     max_sites: usize,
+    /// Unpack at most this much from one archive, in bytes, or with K, M, G or T for powers of 1024
+    #[arg(long, value_name = "SIZE", default_value = "2G", value_parser = size, help_heading = "Structure")]
+    max_unpacked: u64,
 }
 
 impl StructureOptions {
@@ -50,6 +56,7 @@ impl StructureOptions {
             },
             parent_tolerance: (!self.no_parent).then_some(self.parent_tolerance),
             block: self.block,
+            max_unpacked: self.max_unpacked,
         }
     }
 }
@@ -76,6 +83,37 @@ pub(super) fn positive(text: &str) -> Result<f64, String> {
     }
 }
 
+/// Parses a number of bytes such as `1000000`, `500M` or `2G`.
+pub(super) fn size(text: &str) -> Result<u64, String> {
+    let digits = text.trim_end_matches(|c: char| c.is_ascii_alphabetic());
+    let shift = match text[digits.len()..].to_ascii_uppercase().as_str() {
+        "" | "B" => 0,
+        "K" | "KB" | "KIB" => 10,
+        "M" | "MB" | "MIB" => 20,
+        "G" | "GB" | "GIB" => 30,
+        "T" | "TB" | "TIB" => 40,
+        other => return Err(format!("'{other}' is not K, M, G or T; write a size as 500M or 2G")),
+    };
+    let number: u64 = digits.parse().map_err(|_| format!("'{text}' is not a size; write 500M or 2G"))?;
+    number
+        .checked_mul(1 << shift)
+        .filter(|size| *size > 0)
+        .ok_or_else(|| format!("'{text}' is not between 1 byte and 16 EiB"))
+}
+
+/// The materials of one path, or how to end when it cannot be read at all, which has then been said.
+pub(super) fn materials_of(path: &Path, settings: &Settings) -> Result<Vec<Material>, Exit> {
+    let materials = classify_input(&Input::new(path), settings);
+    if let [only] = materials.as_slice()
+        && let Err(refusal) = &only.classification.outcome
+        && matches!(refusal.code, Code::FileUnreadable | Code::FileEmpty | Code::FileTooLarge)
+    {
+        output::talk(&format!("{}: {refusal}", only.file));
+        return Err(if refusal.code == Code::FileUnreadable { Exit::Fault } else { Exit::Refused });
+    }
+    Ok(materials)
+}
+
 /// Parses `h,k,l`.
 pub(super) fn plane(text: &str) -> Result<[i64; 3], String> {
     let indices: Vec<i64> = text
@@ -91,5 +129,24 @@ pub(super) fn plane(text: &str) -> Result<[i64; 3], String> {
         }
         Ok(indices) => Ok(indices),
         Err(indices) => Err(format!("{} indices in place of three; write a plane as 0,0,1", indices.len())),
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn sizes() {
+        assert_eq!(size("2G"), Ok(Settings::default().max_unpacked));
+        // By hand: K, M, G are 1024, 1024², 1024³.
+        for (text, expected) in
+            [("1", 1), ("500M", 524_288_000), ("2G", 2_147_483_648), ("3kb", 3072), ("1GiB", 1 << 30)]
+        {
+            assert_eq!(size(text), Ok(expected), "{text}");
+        }
+        for text in ["", "0", "G", "-1", "1.5G", "2X", "99999999T", "é"] {
+            assert!(size(text).is_err(), "{text}");
+        }
     }
 }

@@ -1,11 +1,11 @@
 //! `cosetta enumerate`.
 
 use super::classify::Format;
-use super::common::{OutputOptions, StructureOptions};
+use super::common::{self, OutputOptions, StructureOptions};
 use super::exit::Exit;
 use super::output::{self, Output};
-use crate::collection::{Input, Material, Settings, classify_bytes};
-use crate::diagnostic::{Code, Diagnostic};
+use crate::collection::{Material, Settings};
+use crate::diagnostic::Diagnostic;
 use crate::polarization::{Choices, Component, FormalPolarization, Sweep};
 use crate::report::record::{EnumerationRecord, FreeCountRecord, FreeRecord, MaterialRecord, SweepRecord};
 use crate::report::table::{Column, Table};
@@ -23,7 +23,7 @@ use std::path::PathBuf;
 #[command(after_help = "Example:\n  cosetta enumerate structures/mgal2o4-spinel.cif --choices sweep\n\n\
     Exit status: 0 done, 1 the input was refused, 2 usage, 3 input or output failed.")]
 pub(super) struct Arguments {
-    /// CIF file, or - for standard input
+    /// File of structures (CIF, POSCAR, OPTIMADE JSON), also packed, or - for standard input
     #[arg(value_name = "FILE")]
     file: PathBuf,
     #[command(flatten)]
@@ -54,15 +54,9 @@ enum Family {
 
 pub(super) fn run(arguments: Arguments) -> anyhow::Result<Exit> {
     let settings = arguments.structure.settings();
-    let input =
-        if arguments.file.as_os_str() == "-" { Input::Stdin } else { Input::File(arguments.file.clone()) };
-    let name = input.name();
-    let materials = match input.read() {
-        Ok(bytes) => classify_bytes(&name, &bytes, &settings),
-        Err(refusal) => {
-            output::talk(&format!("{name}: {refusal}"));
-            return Ok(if refusal.code == Code::FileUnreadable { Exit::Fault } else { Exit::Refused });
-        }
+    let materials = match common::materials_of(&arguments.file, &settings) {
+        Ok(materials) => materials,
+        Err(exit) => return Ok(exit),
     };
     let mut output = Output::open(arguments.output.output.as_deref())?;
     let mut exit = Exit::Done;
@@ -72,7 +66,7 @@ pub(super) fn run(arguments: Arguments) -> anyhow::Result<Exit> {
         if let Some(refusal) = refusal {
             exit = Exit::Refused;
             if !arguments.output.quiet {
-                output::talk(&format!("{name} {}: {refusal}", material.block));
+                output::talk(&format!("{} {}: {refusal}", material.file, material.block));
             }
         }
         records.push(record);

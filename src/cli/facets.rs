@@ -4,8 +4,8 @@ use super::classify::Format;
 use super::common::{self, OutputOptions, StructureOptions};
 use super::exit::Exit;
 use super::output::{self, Output};
-use crate::collection::{Input, Material, Settings, classify_bytes};
-use crate::diagnostic::{Code, Diagnostic};
+use crate::collection::{Material, Settings};
+use crate::diagnostic::Diagnostic;
 use crate::facet::{Facet, Stacking, distinct_planes};
 use crate::report::facets::{self, FacetsRecord, Parts};
 use crate::report::words;
@@ -25,7 +25,7 @@ use std::path::PathBuf;
     not included. Some surface treatments use hazardous chemicals: follow your local rules."
 )]
 pub(super) struct Arguments {
-    /// CIF file, or - for standard input
+    /// File of structures (CIF, POSCAR, OPTIMADE JSON), also packed, or - for standard input
     #[arg(value_name = "FILE")]
     file: PathBuf,
     #[command(flatten)]
@@ -48,15 +48,9 @@ pub(super) struct Arguments {
 
 pub(super) fn run(arguments: Arguments) -> anyhow::Result<Exit> {
     let settings = arguments.structure.settings();
-    let input =
-        if arguments.file.as_os_str() == "-" { Input::Stdin } else { Input::File(arguments.file.clone()) };
-    let name = input.name();
-    let materials = match input.read() {
-        Ok(bytes) => classify_bytes(&name, &bytes, &settings),
-        Err(refusal) => {
-            output::talk(&format!("{name}: {refusal}"));
-            return Ok(if refusal.code == Code::FileUnreadable { Exit::Fault } else { Exit::Refused });
-        }
+    let materials = match common::materials_of(&arguments.file, &settings) {
+        Ok(materials) => materials,
+        Err(exit) => return Ok(exit),
     };
     let mut output = Output::open(arguments.output.output.as_deref())?;
     let mut exit = Exit::Done;
@@ -68,7 +62,7 @@ pub(super) fn run(arguments: Arguments) -> anyhow::Result<Exit> {
         {
             exit = Exit::Refused;
             if !arguments.output.quiet {
-                output::talk(&format!("{name} {}: {refusal}", material.block));
+                output::talk(&format!("{} {}: {refusal}", material.file, material.block));
             }
         }
         records.push(record);

@@ -1,12 +1,13 @@
-//! From the content of a file to a label: reads, expands, searches symmetry, assigns charges, sums the polarization.
+//! From an input to a label: reads, expands, searches symmetry, assigns charges, sums the polarization.
 
+use super::{Contents, Input, Member};
 use crate::charge::{self, Assignment, Given, Known};
-use crate::cif;
 use crate::crystal::{AsymmetricUnit, Crystal, ExpandTolerance, Formula};
 use crate::diagnostic::{Code, Diagnostic};
 use crate::polarization::FormalPolarization;
 use crate::symmetry::{Centres, Engine, Parent, Primitive, Symmetry, analyse};
 use std::collections::BTreeSet;
+use std::convert::Infallible;
 
 /// What a classification is asked to use. Printed in every report.
 #[derive(Debug, Clone)]
@@ -21,8 +22,10 @@ pub struct Settings {
     pub expand: ExpandTolerance,
     /// Largest distance in Å of an atom from its place in the parent structure; without it no parent is searched.
     pub parent_tolerance: Option<f64>,
-    /// Only the data block of this name.
+    /// Only the data block or entry of this name.
     pub block: Option<String>,
+    /// The largest number of bytes that may come out of one archive.
+    pub max_unpacked: u64,
 }
 
 impl Default for Settings {
@@ -36,6 +39,7 @@ impl Default for Settings {
             expand: ExpandTolerance::default(),
             parent_tolerance: Some(PARENT_TOLERANCE),
             block: None,
+            max_unpacked: MAX_UNPACKED,
         }
     }
 }
@@ -43,6 +47,9 @@ impl Default for Settings {
 /// Oxygen atoms of strongly tilted perovskites lie up to 0.75 Å from their places in the cubic parent (0.72 Å in `DyScO3`),
 /// those of rutiles 0.82 to 0.88 Å from a body-centred arrangement that nobody calls their parent.
 pub const PARENT_TOLERANCE: f64 = 0.8;
+
+/// 2 GiB: some 100,000 CIFs, and no more than a machine for such work can spare.
+const MAX_UNPACKED: u64 = 2 << 30;
 
 /// The answer for the averaged structure of the parent cell.
 #[derive(Debug, Clone)]
@@ -83,12 +90,20 @@ pub struct Classification {
 /// One structure of one file.
 #[derive(Debug, Clone)]
 pub struct Material {
-    /// The input it came from: a path, or `-` for standard input.
+    /// The input it came from: a path, or `-` for standard input; for a member of an archive the path within follows.
     pub file: String,
-    /// The data block, or empty when the file could not be read.
+    /// The data block or the id of the entry; empty when the file could not be read or its format has no names.
     pub block: String,
     /// What was found.
     pub classification: Classification,
+}
+
+impl Material {
+    /// A material of which nothing is known but why.
+    #[must_use]
+    pub fn refused(file: &str, refusal: Diagnostic) -> Self {
+        Self { file: file.to_owned(), block: String::new(), classification: Classification::refused(refusal) }
+    }
 }
 
 impl Classification {
@@ -125,58 +140,36 @@ impl Classification {
     }
 }
 
-/// Classifies every structure in the content of a file. Blocks without a structure (headers of a publication) are
-/// skipped when another block holds one. Always returns at least one material.
+/// Classifies every structure of an input, that of all members where it is an archive. At least one material.
+#[must_use]
+pub fn classify_input(input: &Input, settings: &Settings) -> Vec<Material> {
+    let mut materials = Vec::new();
+    let mut take = |member: Member| {
+        materials.extend(classify_member(member, settings));
+        Ok(())
+    };
+    let Ok(()) = input.visit::<Infallible>(settings.max_unpacked, &mut take);
+    materials
+}
+
+/// Classifies every structure of a file or of a member of an archive. At least one material.
+#[must_use]
+pub fn classify_member(member: Member, settings: &Settings) -> Vec<Material> {
+    let file = member.name.clone();
+    match member.read() {
+        Ok(bytes) => classify_bytes(&file, &bytes, settings),
+        Err(refusal) => vec![Material::refused(&file, refusal)],
+    }
+}
+
+/// Classifies every structure in the content of a file, whose name helps to tell the format. Parts without a structure
+/// (headers of a publication, entries of other types) are skipped when another part holds one. At least one material.
 #[must_use]
 pub fn classify_bytes(file: &str, bytes: &[u8], settings: &Settings) -> Vec<Material> {
-    let reading = cif::read_bytes(bytes);
-    let material = |block: &str, classification| Material {
-        file: file.to_owned(),
-        block: block.to_owned(),
-        classification,
-    };
-    if reading.blocks.is_empty() {
-        let refusal = Diagnostic::error(Code::FileEmpty, "the file holds no data block")
-            .hint("a CIF starts with data_ and a name");
-        let mut classification = Classification::refused(refusal);
-        classification.diagnostics = reading.diagnostics;
-        return vec![material("", classification)];
+    match Contents::open(file, bytes, settings) {
+        Ok(contents) => (0..contents.len()).map(|number| contents.classify(number, settings)).collect(),
+        Err(refused) => vec![*refused],
     }
-    let is_wanted =
-        |name: &str| settings.block.as_ref().is_none_or(|wanted| name.eq_ignore_ascii_case(wanted));
-    if let Some(wanted) = &settings.block
-        && !reading.blocks.iter().any(|block| is_wanted(&block.name))
-    {
-        let names: Vec<_> = reading.blocks.iter().map(|block| block.name.as_str()).collect();
-        let refusal = Diagnostic::error(
-            Code::FileUnknownBlock,
-            format!("the file has no data block '{wanted}'; it has: {}", names.join(", ")),
-        )
-        .hint(format!("--block {}", names[0]));
-        return vec![material(wanted, Classification::refused(refusal))];
-    }
-    let any_structure = reading.blocks.iter().any(|block| block.is_structure);
-    let mut first_diagnostics = reading.diagnostics;
-    reading
-        .blocks
-        .into_iter()
-        .filter(|block| {
-            is_wanted(&block.name) && (settings.block.is_some() || block.is_structure || !any_structure)
-        })
-        .map(|block| {
-            let mut classification = match &block.unit {
-                Ok(unit) => classify_unit(unit, settings),
-                Err(refusal) => Classification::refused(refusal.clone()),
-            };
-            let mut diagnostics = std::mem::take(&mut first_diagnostics);
-            diagnostics.extend(block.diagnostics.iter().cloned());
-            let found = std::mem::take(&mut classification.diagnostics);
-            diagnostics.extend(found.into_iter().map(|found| block.locate(found)));
-            classification.diagnostics = diagnostics;
-            classification.outcome = classification.outcome.map_err(|refusal| block.locate(refusal));
-            material(&block.name, classification)
-        })
-        .collect()
 }
 
 /// Classifies one structure.

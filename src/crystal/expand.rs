@@ -1,10 +1,14 @@
 //! From the sites and operations a file lists to all atoms of one cell.
 
 use super::{Operation, Site};
-use crate::cell::{Lattice, LatticeError, contacts_within};
+use crate::cell::{Lattice, LatticeError, contacts_up_to};
 use crate::diagnostic::{Code, Diagnostic};
 use nalgebra::Vector3;
 use std::collections::BTreeSet;
+
+/// More contacts of one site than this are not looked into. A file that lists every atom of a general position, and the
+/// operations too, makes at most 192 of them.
+const MAX_CONTACTS: usize = 200;
 
 /// What a file states: a lattice, the sites it lists, and the operations that make the rest.
 #[derive(Debug, Clone)]
@@ -197,6 +201,14 @@ impl Crystal {
         self.sites.iter().all(Site::is_full)
     }
 
+    fn refuse_crowd(&self, site: usize, cutoff: f64) -> Diagnostic {
+        let message = format!(
+            "more than {MAX_CONTACTS} sites lie within {cutoff} Å of site {}, which is no crystal",
+            self.sites[site].label
+        );
+        Diagnostic::error(Code::SitesTooClose, message).about(self.origins[site])
+    }
+
     /// Drops duplicates, refuses contacts that are too short. Contacts of partly occupied sites are left alone
     /// unless their occupancies on one position add up to more than one.
     fn resolve_contacts(
@@ -206,8 +218,9 @@ impl Crystal {
     ) -> Result<(), Diagnostic> {
         let positions: Vec<_> = self.sites.iter().map(|site| site.position).collect();
         let cutoff = tolerance.min_distance.max(tolerance.merge);
-        let contacts =
-            contacts_within(&self.lattice, &positions, cutoff).map_err(|error| lattice_refusal(&error))?;
+        let contacts = contacts_up_to(&self.lattice, &positions, cutoff, MAX_CONTACTS)
+            .map_err(|error| lattice_refusal(&error))?
+            .map_err(|crowded| self.refuse_crowd(crowded, cutoff))?;
         let mut dropped = BTreeSet::new();
         for contact in &contacts {
             let (first, second) = (&self.sites[contact.first], &self.sites[contact.second]);
@@ -250,8 +263,9 @@ impl Crystal {
         }
         if !dropped.is_empty() {
             let mut names: Vec<&str> = Vec::new();
+            let mut seen = BTreeSet::new();
             for (site, origin) in self.sites.iter().zip(&self.origins) {
-                if dropped.contains(origin) && !names.contains(&site.label.as_str()) {
+                if dropped.contains(origin) && seen.insert(site.label.as_str()) {
                     names.push(&site.label);
                 }
             }
@@ -331,6 +345,17 @@ mod tests {
 
     fn site(label: &str, symbol: &str, position: [f64; 3]) -> Site {
         Site::new(label, Element::from_symbol(symbol).expect("known"), Vector3::from(position))
+    }
+
+    #[test]
+    fn a_crowd_of_sites_is_refused_at_once() {
+        // With all pairs in memory this would take 16 bytes × 2e8.
+        let lattice = Lattice::from_parameters(&CellParameters { lengths: [4.0; 3], angles: [90.0; 3] })
+            .expect("cubic");
+        let sites = vec![Site { occupancy: 1e-5, ..site("O1", "O", [0.1, 0.2, 0.3]) }; 20_000];
+        let refusal =
+            Crystal::from_sites(lattice, sites, &ExpandTolerance::default()).expect_err("no crystal");
+        assert_eq!(refusal.code, Code::SitesTooClose);
     }
 
     #[test]

@@ -40,9 +40,16 @@ codes! {
     // Reading a file.
     FileUnreadable = "file-001", "the file cannot be opened or read", "check the path and its permissions";
     FileEmpty = "file-002", "the file holds no data", "give a file with at least one data block";
-    FileNoInput = "file-003", "a folder holds no CIF file", "name the file itself, or a folder with files ending in .cif";
-    FileUnknownBlock = "file-004", "the file has no data block of the name asked for", "use one of the names the message lists";
+    FileNoInput = "file-003", "a folder or an archive holds nothing that is read", "name the file itself; in folders and archives these are read: .cif, .mcif, .vasp, .poscar, POSCAR*, CONTCAR*, .json, .jsonl, each also with .gz, and in folders .zip, .tar, .tar.gz, .tgz";
+    FileUnknownBlock = "file-004", "the file has no data block, or no entry, of the name asked for", "use one of the names the message lists";
     FileTooLarge = "file-005", "the file is larger than the limit", "split the file";
+    // Archives and compressed files.
+    ArchiveTooLarge = "archive-001", "more comes out of an archive or a compressed file than the limit", "raise --max-unpacked, or unpack it and name the folder";
+    ArchiveNested = "archive-002", "an archive lies inside another, or has the name of a structure", "unpack it and name the folder, or rename it to end in .zip, .tar or .tar.gz";
+    ArchiveEncrypted = "archive-003", "a member of an archive is encrypted", "unpack it with its password and name the folder";
+    ArchivePath = "archive-004", "the path of a member is absolute or leads out of the archive, or the member is a link", "pack the archive again with plain relative paths";
+    ArchiveDamaged = "archive-005", "an archive or a compressed file is damaged", "fetch or pack it again";
+    ArchiveMethod = "archive-006", "a member is packed by a method that is not read", "pack it again with the method deflate";
     // The syntax of a CIF.
     CifEncoding = "cif-001", "the file is not in ASCII or UTF-8", "convert it: iconv -f UTF-16 -t UTF-8";
     CifNotUtf8 = "cif-002", "the file holds bytes that are not UTF-8", "convert it: iconv -f ISO-8859-1 -t UTF-8";
@@ -63,6 +70,34 @@ codes! {
     CifNumber = "cif-017", "a number cannot be read", "write it as 4.1163 or 4.1163(2)";
     CifNoStructure = "cif-018", "a data block holds no crystal structure", "name another block";
     CifMacromolecule = "cif-019", "a data block describes a macromolecule", "this program answers for crystals of ions";
+    CifLineLong = "cif-020", "a line is longer than the 2,048 characters the standard allows", "break the line";
+    CifNameLong = "cif-021", "a tag or the name of a block is longer than the standard allows", "use a name of at most 75 characters, or declare CIF 2.0";
+    CifCharacter = "cif-022", "the file holds a character that is not in the set of its edition of CIF", "begin the file with #\\#CIF_2.0, which allows most of Unicode, or remove the character";
+    CifListOpen = "cif-023", "a list or table is not closed", "end a list with ] and a table with }";
+    CifTableEntry = "cif-024", "an entry of a table is not a key in quotes, a colon and a value", "write it as {'key': value}";
+    CifNoBlank = "cif-025", "there is no blank between a value and what follows", "put a blank between them";
+    CifBracket = "cif-026", "a value begins with a reserved character, or a bracket closes nothing", "put the value in quotes, or remove the bracket";
+    CifProtocol = "cif-027", "a text field announces a prefix that not all of its lines have", "begin every line of the text with the prefix";
+    CifEdition = "cif-028", "the first line declares an edition of CIF that is not known", "write #\\#CIF_1.1 or #\\#CIF_2.0";
+    CifKeyRepeated = "cif-029", "a key is given twice in one table", "remove one of the two";
+    // The POSCAR format.
+    PoscarShort = "poscar-001", "a POSCAR file ends before all of its lines", "complete the file: title, scale, three vectors, species, counts, Direct or Cartesian, positions";
+    PoscarNumber = "poscar-002", "a number of a POSCAR file cannot be read", "write it as 0.25 or 2.5E-1";
+    PoscarScale = "poscar-003", "the scale factor is zero, or one of three is not positive", "write 1.0, or minus the volume of the cell";
+    PoscarCounts = "poscar-004", "the line of atom counts is missing, or holds something else", "write one whole number for each species";
+    PoscarSpecies = "poscar-005", "the species line does not fit the line of counts", "write one element symbol for each count";
+    PoscarMode = "poscar-006", "the line before the positions says neither Direct nor Cartesian", "write Direct or Cartesian before the positions";
+    PoscarAnonymous = "poscar-007", "the elements of the atoms cannot be told", "write a line of element symbols before the counts";
+    PoscarLabel = "poscar-008", "the label behind a position contradicts the species line", "correct the species line or the label";
+    // The JSON of the OPTIMADE standard.
+    OptimadeSyntax = "optimade-001", "a file or a line is not JSON that can be read", "correct the JSON at the place named";
+    OptimadeNoEntries = "optimade-002", "JSON without structures of the OPTIMADE standard", "give a response with the entries in data, one entry, or one entry a line";
+    OptimadeType = "optimade-003", "an entry is not of the type structures", "give entries of the type structures";
+    OptimadeProperty = "optimade-004", "a property of an entry is missing, null or of the wrong shape", "ask for all properties of structures: response_fields=lattice_vectors,cartesian_site_positions,species,species_at_sites";
+    OptimadeCounts = "optimade-005", "an entry has different numbers of positions, species at sites and sites", "correct the entry";
+    OptimadeSpecies = "optimade-006", "a species of an entry is not listed, or is not a chemical element", "list it in species, with element symbols";
+    OptimadeDimensions = "optimade-007", "an entry is not periodic in three dimensions", "give a crystal; this program has no answer for molecules and single layers";
+    OptimadeFeature = "optimade-008", "an entry has a structure feature that cannot be used or is not known", "use an entry whose atoms all have positions";
     // The unit cell.
     CellMissing = "cell-001", "a cell length or angle is missing", "add the six _cell_ items";
     CellNotFinite = "cell-002", "a cell length or angle is not a finite number", "correct the value";

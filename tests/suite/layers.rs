@@ -4,13 +4,15 @@ use std::fs;
 use std::path::{Path, PathBuf};
 
 /// From the ground up. A room may import from rooms before it, never from one after it.
-const ROOMS: [&str; 12] = [
+const ROOMS: [&str; 14] = [
     "diagnostic",
     "exact",
     "cell",
     "crystal",
     "symmetry",
     "cif",
+    "poscar",
+    "optimade",
     "charge",
     "polarization",
     "facet",

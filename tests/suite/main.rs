@@ -6,7 +6,9 @@ mod build;
 mod check;
 mod cif;
 mod commands;
+mod conformance;
 mod demo;
+mod doors;
 #[cfg(feature = "spglib")]
 mod engines;
 mod enumeration;

@@ -18,18 +18,18 @@ const METRIC_TOLERANCE: [f64; 2] = [1e-3, 0.02];
 const NAMES: [&str; 6] = ["a", "b", "c", "alpha", "beta", "gamma"];
 
 /// The value of the first spelling the block has.
-pub(super) fn value_of<'d, 's>(block: &'d Block<'s>, tags: Spellings) -> Option<&'d Value<'s>> {
+pub(super) fn value_of<'s>(block: &Block<'_, 's>, tags: Spellings) -> Option<Value<'s>> {
     tags.iter().find_map(|tag| block.value(tag))
 }
 
 /// The values that follow an item without a tag of their own.
-pub(super) fn surplus_of(block: &Block<'_>, tags: Spellings) -> Option<Span> {
+pub(super) fn surplus_of(block: &Block<'_, '_>, tags: Spellings) -> Option<Span> {
     tags.iter().find_map(|tag| block.pair(tag)).and_then(|pair| pair.surplus)
 }
 
 /// A number that is nice to have: an unreadable one is reported and passed over.
 pub(super) fn optional_number(
-    block: &Block<'_>,
+    block: &Block<'_, '_>,
     tags: Spellings,
     noticed: &mut Vec<Diagnostic>,
 ) -> Option<f64> {
@@ -44,13 +44,13 @@ pub(super) fn optional_number(
 }
 
 /// Whether the block has any item of the cell.
-pub(super) fn has_cell(block: &Block<'_>) -> bool {
-    CELL.iter().any(|tags| value_of(block, tags).is_some())
+pub(super) fn has_cell(block: &Block<'_, '_>) -> bool {
+    CELL.iter().copied().flatten().any(|tag| block.has(tag))
 }
 
 /// The lattice, and the standard uncertainties of the six parameters.
 pub(super) fn read_cell(
-    block: &Block<'_>,
+    block: &Block<'_, '_>,
     noticed: &mut Vec<Diagnostic>,
 ) -> Result<(Lattice, [Option<f64>; 6]), Diagnostic> {
     let missing: Vec<&str> = CELL
@@ -74,9 +74,9 @@ pub(super) fn read_cell(
     Ok((lattice, numbers.map(|number| number.uncertainty)))
 }
 
-fn read_parameter(block: &Block<'_>, tags: Spellings) -> Result<Measured, Diagnostic> {
+fn read_parameter(block: &Block<'_, '_>, tags: Spellings) -> Result<Measured, Diagnostic> {
     let value = value_of(block, tags);
-    let (text, span) = value.map_or(("", block.span), |value| (value.text.as_ref(), value.span));
+    let (text, span) = value.as_ref().map_or(("", block.span), |value| (value.text.as_ref(), value.span));
     if let Some(surplus) = surplus_of(block, tags) {
         let message = format!("{} is followed by a second value, so it cannot be trusted", tags[0]);
         return Err(Diagnostic::error(Code::CellNotFinite, message).at(surplus));
@@ -92,7 +92,7 @@ fn read_parameter(block: &Block<'_>, tags: Spellings) -> Result<Measured, Diagno
 }
 
 /// What is wrong with the lattice, at the value that makes it so.
-fn refusal(block: &Block<'_>, error: &LatticeError) -> Diagnostic {
+fn refusal(block: &Block<'_, '_>, error: &LatticeError) -> Diagnostic {
     let (code, index) = match error {
         LatticeError::NotFinite { name, .. } => (Code::CellNotFinite, place(name)),
         LatticeError::OutOfRange { name, .. } => (Code::CellDegenerate, place(name)),
@@ -105,7 +105,7 @@ fn refusal(block: &Block<'_>, error: &LatticeError) -> Diagnostic {
 /// Reports parameters that differ from the ones the operations ask for: the mean of the metric over all of them.
 /// Lengths may differ by 0.001 Å and angles by 0.02°, or by three standard uncertainties, which covers rounding.
 pub(super) fn check_metric(
-    block: &Block<'_>,
+    block: &Block<'_, '_>,
     lattice: &Lattice,
     uncertainty: &[Option<f64>; 6],
     operations: &[Operation],
@@ -182,7 +182,7 @@ fn place(name: &str) -> usize {
     NAMES.iter().position(|known| *known == name).unwrap_or(0)
 }
 
-fn check_volume(block: &Block<'_>, lattice: &Lattice, noticed: &mut Vec<Diagnostic>) {
+fn check_volume(block: &Block<'_, '_>, lattice: &Lattice, noticed: &mut Vec<Diagnostic>) {
     let Some(stated) = optional_number(block, CELL_VOLUME, noticed).filter(|volume| *volume > 0.0) else {
         return;
     };

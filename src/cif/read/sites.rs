@@ -1,6 +1,6 @@
 //! The atom sites of a block.
 
-use super::super::document::{Block, Table, Value};
+use super::super::document::{self, Block, Table, Value};
 use super::super::number::{Measured, parse_number};
 use super::super::parse::shown;
 use super::SitePlace;
@@ -14,6 +14,8 @@ use crate::diagnostic::{Code, Diagnostic, Span};
 use nalgebra::{Matrix3, Vector3};
 use std::collections::{BTreeSet, HashMap};
 
+/// Blocks that list more sites than this are refused unread, whatever `--max-sites` says.
+const MAX_LISTED: usize = 400_000;
 /// Occupancies up to this count as one.
 const MAX_OCCUPANCY: f64 = 1.001;
 /// An uncertainty of a fractional coordinate from here up is a mistyped number.
@@ -34,13 +36,13 @@ pub(super) struct Sites {
 }
 
 /// Whether the block has any item of the atom sites.
-pub(super) fn has_sites(block: &Block<'_>) -> bool {
-    SITE.iter().any(|tags| value_of(block, tags).is_some())
+pub(super) fn has_sites(block: &Block<'_, '_>) -> bool {
+    SITE.iter().copied().flatten().any(|tag| block.has(tag))
 }
 
 /// Reads the atom sites.
 pub(super) fn read_sites(
-    block: &Block<'_>,
+    block: &Block<'_, '_>,
     lattice: &Lattice,
     formula: Option<&Composition>,
     noticed: &mut Vec<Diagnostic>,
@@ -52,6 +54,10 @@ pub(super) fn read_sites(
     if let Some(fault) = table.fault() {
         return Err(fault.clone());
     }
+    if table.rows() > MAX_LISTED {
+        let message = format!("the block lists {} sites, above the limit of {MAX_LISTED}", table.rows());
+        return Err(Diagnostic::error(Code::SiteTooMany, message).at(table.span().unwrap_or(block.span)));
+    }
     let position = Position::of(block, &table, lattice, noticed)?;
     let types = AtomTypes::read(block, noticed);
     let formula: Option<BTreeSet<Element>> = formula.map(|formula| formula.elements().collect());
@@ -59,9 +65,9 @@ pub(super) fn read_sites(
     let mut dropped = Gathered::default();
     let mut disordered = Gathered::default();
     // For each disorder assembly, the group and the label of its first fully occupied site.
-    let mut alternatives: HashMap<&str, (&str, String)> = HashMap::new();
-    for row in 0..table.rows() {
-        let row = Row { table: &table, row };
+    let mut alternatives: HashMap<String, (String, String)> = HashMap::new();
+    for values in table.iter() {
+        let row = Row { values };
         let span = row.span().unwrap_or(block.span);
         let label = row.stated(site::LABEL).or_else(|| row.stated(site::TYPE)).unwrap_or("?").to_owned();
         let is_dummy = row.stated(site::CALCULATED).is_some_and(|flag| flag.eq_ignore_ascii_case("dum"));
@@ -74,7 +80,8 @@ pub(super) fn read_sites(
         if let Some(group) = row.stated(site::DISORDER_GROUP).filter(|_| occupancy >= Site::FULL_OCCUPANCY) {
             disordered.add(&label, span);
             let assembly = row.stated(site::DISORDER_ASSEMBLY).unwrap_or(".");
-            let first = alternatives.entry(assembly).or_insert_with(|| (group, label.clone()));
+            let first =
+                alternatives.entry(assembly.to_owned()).or_insert_with(|| (group.to_owned(), label.clone()));
             if first.0 != group {
                 return Err(both_full(first, assembly, (group, &label)).at(span));
             }
@@ -103,14 +110,14 @@ pub(super) fn read_sites(
 }
 
 /// The refusal of an assembly two of whose alternatives are said to be there in every cell.
-fn both_full(first: &(&str, String), assembly: &str, second: (&str, &str)) -> Diagnostic {
+fn both_full(first: &(String, String), assembly: &str, second: (&str, &str)) -> Diagnostic {
     let of = if assembly == "." { String::new() } else { format!(" of assembly {}", shown(assembly)) };
     let message = format!(
         "sites {} and {} are in disorder groups {} and {}{of}, of which a crystal has one at a time, but both are fully \
          occupied",
         shown(&first.1),
         shown(second.1),
-        shown(first.0),
+        shown(&first.0),
         shown(second.0)
     );
     Diagnostic::error(Code::SiteAlternatives, message)
@@ -148,19 +155,17 @@ pub(super) fn name_list(names: &[String]) -> String {
 }
 
 /// One line of the table.
-#[derive(Clone, Copy)]
-struct Row<'t, 'd, 's> {
-    table: &'t Table<'d, 's>,
-    row: usize,
+struct Row<'s> {
+    values: document::Row<'s>,
 }
 
-impl<'d, 's> Row<'_, 'd, 's> {
-    fn value(&self, column: usize) -> Option<&'d Value<'s>> {
-        self.table.value(self.row, column)
+impl<'s> Row<'s> {
+    fn value(&self, column: usize) -> Option<&Value<'s>> {
+        self.values.value(column)
     }
 
-    fn stated(&self, column: usize) -> Option<&'d str> {
-        self.value(column).and_then(|value| value.stated())
+    fn stated(&self, column: usize) -> Option<&str> {
+        self.values.stated(column)
     }
 
     fn span(&self) -> Option<Span> {
@@ -284,7 +289,7 @@ enum Position {
 
 impl Position {
     fn of(
-        block: &Block<'_>,
+        block: &Block<'_, '_>,
         table: &Table<'_, '_>,
         lattice: &Lattice,
         noticed: &mut Vec<Diagnostic>,
@@ -323,7 +328,7 @@ impl Position {
         Ok(Self::Cartesian(Box::new(*lattice.inverse()), vector))
     }
 
-    fn read(&self, row: &Row<'_, '_, '_>, label: &str) -> Result<Vector3<f64>, Diagnostic> {
+    fn read(&self, row: &Row<'_>, label: &str) -> Result<Vector3<f64>, Diagnostic> {
         match self {
             Self::Fractional => {
                 let numbers = coordinates(row, label, site::FRACTIONAL)?;
@@ -346,7 +351,7 @@ impl Position {
     }
 }
 
-fn coordinates(row: &Row<'_, '_, '_>, label: &str, first: usize) -> Result<[Measured; 3], Diagnostic> {
+fn coordinates(row: &Row<'_>, label: &str, first: usize) -> Result<[Measured; 3], Diagnostic> {
     let mut numbers = [Measured { value: 0.0, uncertainty: None, decimals: None }; 3];
     for (number, column) in numbers.iter_mut().zip(first..) {
         let tag = SITE[column][0];
@@ -365,7 +370,7 @@ fn coordinates(row: &Row<'_, '_, '_>, label: &str, first: usize) -> Result<[Meas
     Ok(numbers)
 }
 
-fn refuse_position(row: &Row<'_, '_, '_>, column: usize, message: String) -> Diagnostic {
+fn refuse_position(row: &Row<'_>, column: usize, message: String) -> Diagnostic {
     let refusal = Diagnostic::error(Code::SitePositionInvalid, message);
     match row.value(column) {
         Some(value) => refusal.at(value.span),
@@ -381,17 +386,13 @@ struct AtomTypes {
 }
 
 impl AtomTypes {
-    fn read(block: &Block<'_>, noticed: &mut Vec<Diagnostic>) -> Self {
+    fn read(block: &Block<'_, '_>, noticed: &mut Vec<Diagnostic>) -> Self {
         let mut types = Self { by_symbol: HashMap::new(), by_element: HashMap::new() };
         let Some(table) = block.table(&ATOM_TYPE).filter(|table| table.has(0) && table.has(1)) else {
             return types;
         };
-        for row in 0..table.rows() {
-            let (Some(symbol), Some(value)) =
-                (table.value(row, 0).and_then(Value::stated), table.value(row, 1))
-            else {
-                continue;
-            };
+        for row in table.iter() {
+            let (Some(symbol), Some(value)) = (row.stated(0), row.value(1)) else { continue };
             let Some(text) = value.stated() else { continue };
             let Some(number) = parse_number(text).map(|n| n.value).or_else(|| parse_charge(text)) else {
                 let message = format!(

@@ -1,6 +1,6 @@
 //! The symmetry of a block: operations, Hall symbol, Hermann-Mauguin symbol, number, in this order of trust.
 
-use super::super::document::Block;
+use super::super::document::{Block, Value};
 use super::super::operation::parse_operation;
 use super::super::parse::shown;
 use super::cell::{surplus_of, value_of};
@@ -59,7 +59,7 @@ struct Places {
 /// Finds the operations of a block. When a name leaves a choice of settings, `prefer` is asked how badly each one fits
 /// the sites, and the one with the smallest answer is used.
 pub(super) fn read_symmetry<F>(
-    block: &Block<'_>,
+    block: &Block<'_, '_>,
     source: &[u8],
     lattice: &Lattice,
     prefer: F,
@@ -69,7 +69,8 @@ where
     F: Fn(&[Operation]) -> u32,
 {
     let (mut stated, places) = read_names(block, source, noticed);
-    let code = value_of(block, COORDINATE_SYSTEM).and_then(|value| value.stated());
+    let code = value_of(block, COORDINATE_SYSTEM);
+    let code = code.as_ref().and_then(Value::stated);
     let named = Named {
         hall: stated.hall.as_deref().and_then(from_hall),
         hm: stated.hm.as_deref().map_or_else(Candidates::default, |symbol| {
@@ -106,7 +107,11 @@ where
     (stated, operations)
 }
 
-fn read_names(block: &Block<'_>, source: &[u8], noticed: &mut Vec<Diagnostic>) -> (StatedSymmetry, Places) {
+fn read_names(
+    block: &Block<'_, '_>,
+    source: &[u8],
+    noticed: &mut Vec<Diagnostic>,
+) -> (StatedSymmetry, Places) {
     // A symbol that was not quoted goes on in the values after it.
     let text = |tags: Spellings| {
         let value = tags.iter().filter_map(|tag| block.value(tag)).find(|value| value.stated().is_some())?;
@@ -140,15 +145,12 @@ fn read_names(block: &Block<'_>, source: &[u8], noticed: &mut Vec<Diagnostic>) -
 type Listed = (Vec<Operation>, Group, usize);
 
 fn read_operations(
-    block: &Block<'_>,
+    block: &Block<'_, '_>,
     named: &Named<'_>,
     noticed: &mut Vec<Diagnostic>,
 ) -> Result<Option<Listed>, Diagnostic> {
     let tables = OPERATIONS.iter().filter_map(|tag| block.column(&[tag]));
-    let Some(table) = tables
-        .into_iter()
-        .find(|table| (0..table.rows()).any(|row| table.value(row, 0).is_some_and(|v| v.stated().is_some())))
-    else {
+    let Some(table) = tables.into_iter().find(|table| table.iter().any(|row| row.stated(0).is_some())) else {
         return Ok(None);
     };
     if let Some(fault) = table.fault() {
@@ -158,11 +160,14 @@ fn read_operations(
     let mut listed: Vec<Motion> = Vec::with_capacity(table.rows());
     let mut seen = std::collections::HashSet::new();
     let mut repeated = 0;
-    for row in 0..table.rows() {
-        let Some(value) = table.value(row, 0) else { continue };
+    for (number, row) in table.iter().enumerate() {
+        let Some(value) = row.value(0) else { continue };
         let motion = parse_operation(&value.text).map_err(|error| {
-            let message =
-                format!("symmetry operation {}, '{}', cannot be read: {error}", row + 1, shown(&value.text));
+            let message = format!(
+                "symmetry operation {}, '{}', cannot be read: {error}",
+                number + 1,
+                shown(&value.text)
+            );
             Diagnostic::error(Code::SymmetryOperation, message).at(value.span).hint("'-x, y+1/2, -z+1/2'")
         })?;
         if seen.insert(motion) {

@@ -47,7 +47,10 @@ fn what_a_text_field_cannot_hold_goes_to_the_second_edition() {
         assert!(written.starts_with("#\\#CIF_2.0\n"), "{written}");
         let (document, found) = parse(written.as_bytes());
         assert!(found.is_empty() && document.dialect == Dialect::Two);
-        assert_eq!(document.blocks[0].value("_a").map(|value| value.text.as_ref()), Some(text));
+        assert_eq!(
+            document.block(0).and_then(|block| block.value("_a")).map(|value| value.text),
+            Some(text.into())
+        );
     }
     assert_eq!(one("a\n;'''\"\"\""), Err(WriteError::Delimiters));
     assert_eq!(one("\u{7}"), Err(WriteError::Character { code: 7 }));
@@ -66,10 +69,16 @@ fn long_lines_are_broken_between_values() {
     assert!(text.lines().all(|line| line.len() <= LINE), "{text}");
     let (document, found) = parse(text.as_bytes());
     assert!(found.is_empty(), "{found:?}");
-    let table = document.blocks[0].table(&[&["_b"], &["_c"], &["_d"]]).expect("a loop");
+    let table = document.block(0).expect("a block").table(&[&["_b"], &["_c"], &["_d"]]).expect("a loop");
     assert_eq!(table.rows(), 3);
-    assert_eq!(table.value(1, 1).map(|value| value.text.as_ref()), Some("two\nlines"));
-    assert_eq!(table.value(2, 2).map(|value| value.text.as_ref()), Some(long.as_str()));
+    assert_eq!(
+        table.row(1).and_then(|row| row.into_value(1)).map(|value| value.text),
+        Some("two\nlines".into())
+    );
+    assert_eq!(
+        table.row(2).and_then(|row| row.into_value(2)).map(|value| value.text),
+        Some(long.as_str().into())
+    );
 }
 
 #[test]
@@ -107,8 +116,8 @@ proptest! {
         if let Ok(written) = one(&text) {
             let (document, found) = parse(written.as_bytes());
             prop_assert!(found.is_empty(), "{found:?}\n{written}");
-            prop_assert_eq!(document.blocks[0].value("_a").map(|value| value.text.as_ref()), Some(text.as_str()));
-            let value = document.blocks[0].value("_a").expect("there");
+            prop_assert_eq!(document.block(0).and_then(|block| block.value("_a")).map(|value| value.text), Some(text.as_str().into()));
+            let value = document.block(0).and_then(|block| block.value("_a")).expect("there");
             prop_assert!(value.stated().is_some() || text.trim().is_empty());
         }
     }
@@ -122,8 +131,8 @@ proptest! {
             let written = cif.finish();
             let (document, found) = parse(written.as_bytes());
             prop_assert!(found.is_empty(), "{found:?}\n{written}");
-            let table = document.blocks[0].table(&[&["_b"]]).expect("a loop");
-            let back: Vec<_> = (0..table.rows()).filter_map(|row| table.value(row, 0)).map(|v| v.text.to_string()).collect();
+            let table = document.block(0).expect("a block").table(&[&["_b"]]).expect("a loop");
+            let back: Vec<_> = table.iter().filter_map(|row| row.into_value(0)).map(|v| v.text.to_string()).collect();
             prop_assert_eq!(back, texts);
         }
     }

@@ -1,6 +1,6 @@
 //! What a file says about where it comes from: copied, because it stays true in any setting.
 
-use crate::cif;
+use crate::cif::{self, Value};
 
 /// Items with one value that say where a structure comes from, what it is called, and under which conditions it was
 /// measured (core dictionary, and the items that public databases add to it).
@@ -56,21 +56,20 @@ pub struct Provenance {
 #[must_use]
 pub fn provenance(bytes: &[u8]) -> Vec<Provenance> {
     let (document, _) = cif::parse(bytes);
-    let plain = |text: &str| text.replace("\r\n", "\n").replace('\r', "\n");
     document
-        .blocks
-        .iter()
+        .blocks()
         .map(|block| {
             let mut found = Provenance::default();
             for tag in ITEMS {
                 let is_known = found.items.iter().any(|(known, _)| known.eq_ignore_ascii_case(tag));
-                if let Some(text) = block.value(tag).and_then(|value| value.stated()).filter(|_| !is_known) {
-                    found.items.push((tag, plain(text)));
+                let value = block.value(tag).filter(|_| !is_known);
+                if let Some(text) = value.as_ref().and_then(Value::stated) {
+                    found.items.push((tag, text.to_owned()));
                 }
             }
             for tag in LISTS {
                 let Some(table) = block.column(&[tag]) else { continue };
-                let values = (0..table.rows()).filter_map(|row| table.value(row, 0)?.stated().map(plain));
+                let values = table.iter().filter_map(|row| row.stated(0).map(str::to_owned));
                 found.lists.push((tag, values.collect()));
             }
             found
