@@ -3,11 +3,12 @@
 use super::common::{OutputOptions, StructureOptions};
 use super::exit::Exit;
 use super::output::{self, Output};
-use crate::cif::{self, BlockReading, CifText};
+use crate::cif::{self, BlockReading, CifText, StatedSymmetry};
 use crate::collection::{
     Axes, Classification, Input, Material, Recast, Settings, classify_bytes, difference, recast,
 };
-use crate::diagnostic::{Code, Diagnostic, Severity};
+use crate::crystal::AsymmetricUnit;
+use crate::diagnostic::{Code, Diagnostic, Severity, Span};
 use crate::report::setting::{Provenance, Sheet, provenance, write_block};
 use clap::{Args, Subcommand, ValueEnum};
 use std::collections::BTreeSet;
@@ -42,7 +43,7 @@ enum Work {
     A structure that is refused a label, because of shared sites for example, is written without results."
 )]
 struct SettingArguments {
-    /// CIF file, or - for standard input
+    /// File of structures (CIF, POSCAR, OPTIMADE JSON), also compressed, or - for standard input
     #[arg(value_name = "FILE")]
     file: PathBuf,
     /// Axes of the structure that is written
@@ -148,11 +149,37 @@ fn sources(name: &str, bytes: &[u8], settings: &Settings) -> Vec<Source> {
                 let (reading, provenance) = blocks.remove(at);
                 (Some(reading), provenance)
             }
-            None => (None, Provenance::default()),
+            None => (all_listed(&material), Provenance::default()),
         };
         found.push(Source { material, reading, provenance });
     }
     found
+}
+
+/// What a format that lists every atom says, from the atoms themselves.
+fn all_listed(material: &Material) -> Option<BlockReading> {
+    let crystal = material.classification.crystal.as_ref()?;
+    // Where a repetition was dropped, sites have other numbers than in the file.
+    if crystal.origins.iter().enumerate().any(|(site, origin)| site != *origin) {
+        return None;
+    }
+    Some(BlockReading {
+        name: material.block.clone(),
+        span: Span::default(),
+        is_structure: true,
+        unit: Ok(AsymmetricUnit {
+            lattice: crystal.lattice.clone(),
+            sites: crystal.sites.clone(),
+            operations: Vec::new(),
+        }),
+        stated: StatedSymmetry::default(),
+        formula_sum: None,
+        formula_units: None,
+        cell_uncertainty: [None; 6],
+        site_places: Vec::new(),
+        site_uncertainty: Vec::new(),
+        diagnostics: Vec::new(),
+    })
 }
 
 /// What is being written.
@@ -171,7 +198,10 @@ impl Job<'_> {
         let work = &source.material.classification;
         let refused = || match &work.outcome {
             Err(refusal) => refusal.clone(),
-            Ok(_) => Diagnostic::error(Code::FileUnknownBlock, "the data block cannot be found again"),
+            Ok(_) => {
+                let message = "the structure lists atoms twice, which is mended for CIF files only";
+                Diagnostic::error(Code::SiteListedTwice, message)
+            }
         };
         let Some(reading) = &source.reading else { return (Vec::new(), Err(refused())) };
         let made = match recast(reading, work, self.settings, self.axes, self.is_expanded) {
