@@ -44,7 +44,7 @@ pub struct Entry {
 ///   "species": [{"name": "Mg", "chemical_symbols": ["Mg"], "concentration": [1]},
 ///               {"name": "O", "chemical_symbols": ["O"], "concentration": [1]}]}}"#;
 /// let entries = cosetta::optimade::read_bytes(text)?;
-/// assert_eq!((entries[0].id.as_str(), entries[0].unit.as_ref()?.sites.len()), ("x/1", 2));
+/// assert_eq!((entries[0].id.as_str(), entries[0].unit.clone()?.sites.len()), ("x/1", 2));
 /// # Ok::<(), cosetta::diagnostic::Diagnostic>(())
 /// ```
 pub fn read_bytes(bytes: &[u8]) -> Result<Vec<Entry>, Diagnostic> {

@@ -196,12 +196,11 @@ impl Job<'_> {
     /// Writes one structure. Returns what was noticed, and why nothing was written if so.
     fn add(&mut self, source: &Source) -> (Vec<Diagnostic>, Result<(), Diagnostic>) {
         let work = &source.material.classification;
-        let refused = || match &work.outcome {
-            Err(refusal) => refusal.clone(),
-            Ok(_) => {
+        let refused = || {
+            work.outcome.as_ref().err().cloned().unwrap_or_else(|| {
                 let message = "the structure lists atoms twice, which is mended for CIF files only";
                 Diagnostic::error(Code::SiteListedTwice, message)
-            }
+            })
         };
         let Some(reading) = &source.reading else { return (Vec::new(), Err(refused())) };
         let made = match recast(reading, work, self.settings, self.axes, self.is_expanded) {

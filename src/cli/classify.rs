@@ -21,7 +21,7 @@ const CHUNK: usize = 256;
 /// Unpacked members are worked on together up to this many bytes.
 const CHUNK_BYTES: usize = 64 << 20;
 /// The structures of a file from this many bytes up are worked on together and written as they come.
-const LARGE: u64 = 8 << 20;
+const LARGE: u64 = 1 << 20;
 
 /// Label each material: its polarization lattice, and whether it contains zero.
 ///

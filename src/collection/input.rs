@@ -139,12 +139,12 @@ fn packing_of(name: &str, head: &[u8]) -> Option<Packing> {
 /// The packing of a file, and the file. A file with the name of a structure is not opened for this.
 fn packing_of_file(path: &Path) -> io::Result<Option<(Packing, File)>> {
     let name = path.to_string_lossy();
-    if Format::of_name(&name).is_some() || path.is_dir() {
+    // The bytes of a pipe come only once.
+    if Format::of_name(&name).is_some() || !path.is_file() {
         return Ok(None);
     }
     let mut head = Vec::new();
     File::open(path)?.take(1 << 16).read_to_end(&mut head)?;
-    // A file that changes while it is read is opened a second time for that; pipes cannot be.
     match packing_of(&name, &head) {
         Some(packing) => Ok(Some((packing, File::open(path)?))),
         None => Ok(None),

@@ -28,7 +28,7 @@ struct Top<'a> {
 
 impl<'a> Piece<'a> {
     /// A value inside this one.
-    pub(super) fn inner<'b>(self, value: &'b RawValue) -> Piece<'b> {
+    pub(super) fn inner(self, value: &RawValue) -> Piece<'_> {
         let offset = (value.get().as_ptr() as usize).saturating_sub(self.json.as_ptr() as usize);
         Piece { json: value.get(), start: self.start + offset }
     }
