@@ -42,7 +42,7 @@ enum Work {
     A structure that is refused a label, because of shared sites for example, is written without results."
 )]
 struct SettingArguments {
-    /// CIF file, or - for standard input
+    /// File of structures (CIF, POSCAR, OPTIMADE JSON), also compressed, or - for standard input
     #[arg(value_name = "FILE")]
     file: PathBuf,
     /// Axes of the structure that is written
@@ -170,9 +170,11 @@ impl Job<'_> {
     /// Writes one structure. Returns what was noticed, and why nothing was written if so.
     fn add(&mut self, source: &Source) -> (Vec<Diagnostic>, Result<(), Diagnostic>) {
         let work = &source.material.classification;
-        let refused = || match &work.outcome {
-            Err(refusal) => refusal.clone(),
-            Ok(_) => Diagnostic::error(Code::FileUnknownBlock, "the data block cannot be found again"),
+        let refused = || {
+            work.outcome.as_ref().err().cloned().unwrap_or_else(|| {
+                let message = "the structure lists atoms twice, which is mended for CIF files only";
+                Diagnostic::error(Code::SiteListedTwice, message)
+            })
         };
         let Some(reading) = &source.reading else { return (Vec::new(), Err(refused())) };
         let made = match recast(reading, work, self.settings, self.axes, self.is_expanded) {

@@ -274,7 +274,8 @@ mod tests {
     fn json_of_another_kind_is_left_alone() {
         let folder = tempfile::tempdir().expect("a folder");
         fs::write(folder.path().join("results.json"), r#"{"label": "polar"}"#).expect("a file");
-        fs::write(folder.path().join("entries.json"), r#"{"data": [{"lattice_vectors": 1}]}"#).expect("a file");
+        fs::write(folder.path().join("entries.json"), r#"{"data": [{"lattice_vectors": 1}]}"#)
+            .expect("a file");
         let names: Vec<_> = find_inputs(&[folder.path().to_path_buf()]).iter().map(Input::name).collect();
         assert_eq!(names.len(), 1);
         assert!(names[0].ends_with("entries.json"));

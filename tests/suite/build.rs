@@ -262,6 +262,21 @@ fn symmetry_that_the_file_does_not_state_is_found() {
 }
 
 #[test]
+fn a_list_of_positions_becomes_a_cif_with_symmetry() {
+    // The primitive cell of rocksalt, its origin off every atom.
+    let poscar = "MgO\n4.21\n0 0.5 0.5\n0.5 0 0.5\n0.5 0.5 0\nMg O\n1 1\nDirect\n0.1 0.1 0.1\n0.6 0.6 0.6\n";
+    let folder = tempfile::tempdir().expect("a folder");
+    let path = folder.path().join("POSCAR");
+    fs::write(&path, poscar).expect("a file");
+    let (status, text, talk) = build(path.to_str().expect("text"), &["--axes", "standard"]);
+    assert_eq!(status, 0, "{talk}");
+    assert!(
+        text.contains("'F m -3 m'") && text.contains("_cell_length_a                    4.21\n"),
+        "{text}"
+    );
+}
+
+#[test]
 fn crystals_without_centre_keep_their_origin() {
     let (status, text, talk) = build("structures/zno-wurtzite.cif", &[]);
     assert_eq!(status, 0);
