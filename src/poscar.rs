@@ -104,6 +104,7 @@ pub fn read_bytes(bytes: &[u8]) -> Result<Poscar, Diagnostic> {
         places.push(line.span());
         labels.push(label_of(line.all_words().get(3..).unwrap_or_default(), is_selective));
     }
+    source.refuse_surplus(kinds.len())?;
     let told = Kinds {
         species: species.as_deref(),
         title: &title,
@@ -236,6 +237,15 @@ mod tests {
             .replace("0 0 0", "0 0 0 T T T Mg3");
         assert_eq!(read(&selective).labels, ["Mg3", "O7"]);
         assert_eq!(read(&with(&[]).replace('\n', "\r\n")).labels, ["Mg1", "O1"]);
+    }
+
+    #[test]
+    fn more_positions_than_counted_are_refused() {
+        let refusal =
+            |after: &str| read_bytes(format!("{}{after}", with(&[])).as_bytes()).err().map(|d| d.code);
+        assert_eq!(refusal(".25 .25 .25\n"), Some(Code::PoscarCounts));
+        assert_eq!(refusal("\n0.0 0.0 0.0\n"), None);
+        assert_eq!(refusal("Cartesian\n0.0 0.0 0.0\n"), None);
     }
 
     #[test]

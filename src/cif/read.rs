@@ -145,11 +145,7 @@ fn read_unit(
     reading.stated = stated;
     let operations = operations?;
     check_metric(block, &lattice, &uncertainty, &operations, noticed);
-    let is_named = matches!(
-        reading.stated.source,
-        SymmetrySource::Hall | SymmetrySource::HermannMauguin | SymmetrySource::Number
-    );
-    evidence.check(block, &operations, is_named, noticed)?;
+    evidence.check(block, &operations, reading.stated.source, noticed)?;
     Ok(AsymmetricUnit { lattice, sites: found.list, operations })
 }
 
@@ -299,7 +295,7 @@ impl Evidence<'_> {
         &self,
         block: &Block<'_, '_>,
         operations: &[Operation],
-        is_named: bool,
+        source: SymmetrySource,
         noticed: &mut Vec<Diagnostic>,
     ) -> Result<(), Diagnostic> {
         let multiplicities = self.multiplicities(operations);
@@ -323,7 +319,9 @@ impl Evidence<'_> {
             );
         }
         let made = self.composition(&multiplicities);
-        let units = self.check_formula(block, &made, is_named, noticed)?;
+        // Statements that contradict each other leave open what was meant; listed operations say it.
+        let trust = Trust { source, contradicts_multiplicities: !wrong.is_empty() };
+        let units = self.check_formula(block, &made, trust, noticed)?;
         let has_hydrogen = made.amount(Element::HYDROGEN) > 0.0;
         if let Some(attached) = &self.found.attached {
             let is_complete = units.is_some() || has_hydrogen && self.formula.is_none();
@@ -339,7 +337,7 @@ impl Evidence<'_> {
         &self,
         block: &Block<'_, '_>,
         made: &Composition,
-        is_named: bool,
+        trust: Trust,
         noticed: &mut Vec<Diagnostic>,
     ) -> Result<Option<f64>, Diagnostic> {
         let Some(formula) = self.formula else { return Ok(None) };
@@ -351,22 +349,30 @@ impl Evidence<'_> {
             );
             return Err(Diagnostic::error(Code::SiteHydrogenMissing, message).at(span));
         }
+        let misses_units = units.is_some_and(|found| !self.is_stated_number_of_units(found));
+        if let Some(why) = trust.doubt(units.is_none(), misses_units) {
+            let what = match units {
+                None => format!("no multiple of the formula {formula}"),
+                Some(found) => format!(
+                    "{found:.3} units of the formula {formula} where {} is {}",
+                    FORMULA_UNITS[0],
+                    self.units.unwrap_or_default()
+                ),
+            };
+            return Err(Diagnostic::error(
+                Code::SymmetryDoubtful,
+                format!("the sites make up {made} in the cell, {what}; {why}"),
+            )
+            .at(span)
+            .hint("_space_group_symop_operation_xyz with one operation per line"));
+        }
         match (units, self.units) {
-            (None, _) if is_named => {
-                let message = format!(
-                    "the sites make up {made} in the cell, no multiple of the formula {formula}; the operations come from a \
-                     name alone, which may mean another setting than the sites are in"
-                );
-                return Err(Diagnostic::error(Code::SymmetryDoubtful, message)
-                    .at(span)
-                    .hint("_space_group_symop_operation_xyz with one operation per line"));
-            }
             (None, _) => {
                 let message =
                     format!("the sites make up {made} in the cell, no multiple of the formula {formula}");
                 noticed.push(Diagnostic::warning(Code::SiteFormula, message).at(span));
             }
-            (Some(found), Some(stated)) if !self.is_stated_number_of_units(found) => {
+            (Some(found), Some(stated)) if misses_units => {
                 let message = format!(
                     "the sites make up {:.3} formula units {formula} in the cell, but {} is {stated}",
                     found, FORMULA_UNITS[0]
@@ -377,6 +383,33 @@ impl Evidence<'_> {
             _ => {}
         }
         Ok(units)
+    }
+}
+
+/// How far the operations in use can be believed.
+#[derive(Debug, Clone, Copy)]
+struct Trust {
+    source: SymmetrySource,
+    /// Whether sites have other numbers of images than the file states.
+    contradicts_multiplicities: bool,
+}
+
+impl Trust {
+    /// Why the structure is in doubt, when its sites miss the formula or the number of formula units.
+    fn doubt(self, misses_formula: bool, misses_units: bool) -> Option<&'static str> {
+        match self.source {
+            SymmetrySource::None if misses_formula || misses_units => Some(
+                "no symmetry is stated, so the sites were taken for all atoms of the cell, which they are not",
+            ),
+            SymmetrySource::Hall | SymmetrySource::HermannMauguin | SymmetrySource::Number
+                if misses_formula || misses_units && self.contradicts_multiplicities =>
+            {
+                Some(
+                    "the operations come from a name alone, which may mean another setting than the sites are in",
+                )
+            }
+            _ => None,
+        }
     }
 }
 

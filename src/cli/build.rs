@@ -121,7 +121,8 @@ fn setting(arguments: SettingArguments) -> anyhow::Result<Exit> {
         }
     }
     if job.written > 0 {
-        let mut output = Output::open(arguments.output.output.as_deref())?;
+        let mut output =
+            Output::open(arguments.output.output.as_deref(), std::slice::from_ref(&arguments.file))?;
         output.write(&job.text.finish())?;
         output.close()?;
     }

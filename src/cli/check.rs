@@ -20,8 +20,8 @@ use std::path::PathBuf;
 #[derive(Debug, Args)]
 #[command(after_help = "Example:\n  cosetta check my.cif --strict\n\n\
     Exit status: 0 no errors (with --strict: no warnings either), 1 there are some, 2 usage, 3 input or output failed.\n\
-    An error is what keeps a structure from being classified; a warning says that the file was read in one of several \
-    possible ways; a note does not change the answer.")]
+    An error says that something in the file was lost, or why there is no answer; a warning that the file was read in one \
+    of several possible ways; a note does not change the answer.")]
 pub(super) struct Arguments {
     /// Files of structures (CIF, POSCAR, OPTIMADE JSON), also packed; folders; or - for standard input
     #[arg(required = true, value_name = "PATH")]
@@ -95,7 +95,7 @@ pub(super) fn run(arguments: Arguments) -> anyhow::Result<Exit> {
     let settings = arguments.structure.settings();
     let is_coloured = arguments.color.is_on(arguments.output.is_some());
     let drawing = Drawing { is_coloured, width: output::terminal_width() };
-    let mut output = Output::open(arguments.output.as_deref())?;
+    let mut output = Output::open(arguments.output.as_deref(), &arguments.paths)?;
     let mut tally = Tally::default();
     for input in find_inputs(&arguments.paths) {
         input.visit(settings.max_unpacked, &mut |member| -> anyhow::Result<()> {

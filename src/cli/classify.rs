@@ -75,7 +75,7 @@ pub(super) fn run(arguments: Arguments) -> anyhow::Result<Exit> {
     let pool =
         rayon::ThreadPoolBuilder::new().num_threads(jobs).build().context("cannot start worker threads")?;
     let sink = Sink {
-        output: Output::open(arguments.output.output.as_deref())?,
+        output: Output::open(arguments.output.output.as_deref(), &arguments.paths)?,
         format: arguments.format,
         details: arguments.details,
         plane: arguments.plane,
@@ -223,7 +223,7 @@ impl Sink<'_> {
             Format::Text if self.details => {
                 let gap = if self.written > 0 { "\n" } else { "" };
                 let text = words::describe(&material, self.settings, self.plane);
-                self.output.write(&format!("{gap}{text}"))?;
+                self.output.write(&output::plain(&format!("{gap}{text}")))?;
             }
             Format::Text => {
                 let record = MaterialRecord::new(&material, self.settings);
@@ -260,7 +260,7 @@ impl Sink<'_> {
                     Some(material) => words::describe(&material, self.settings, self.plane),
                     None => format!("{}{}\n", self.table.to_text(output::terminal_width()), words::INSULATOR),
                 };
-                self.output.write(&text)?;
+                self.output.write(&output::plain(&text))?;
             }
             Format::Json if self.written == 0 => self.output.write("[]\n")?,
             Format::Json => self.output.write("\n]\n")?,

@@ -52,7 +52,7 @@ pub(super) fn run(arguments: Arguments) -> anyhow::Result<Exit> {
         Ok(materials) => materials,
         Err(exit) => return Ok(exit),
     };
-    let mut output = Output::open(arguments.output.output.as_deref())?;
+    let mut output = Output::open(arguments.output.output.as_deref(), std::slice::from_ref(&arguments.file))?;
     let mut exit = Exit::Done;
     let mut records = Vec::new();
     for material in &materials {

@@ -3,6 +3,7 @@
 //! The layout is ours; only the window on the source is drawn by annotate-snippets. Bytes that are not UTF-8 are shown
 //! as replacement characters, and the caret stands where it should all the same, because the line is decoded in parts.
 
+use super::output::plain;
 use crate::diagnostic::{Diagnostic, Severity, Span};
 use annotate_snippets::{AnnotationKind, Level, Renderer, Snippet};
 
@@ -24,6 +25,7 @@ impl Drawing {
     /// One diagnostic of a file, with an empty line after it. `source` is the content of the file, as far as there is
     /// any.
     pub(super) fn draw(self, file: &str, block: &str, source: &[u8], diagnostic: &Diagnostic) -> String {
+        let (file, block) = (&*plain(file), &*plain(block));
         let place = match diagnostic.span {
             Some(span) => format!("{file}, line {}, column {}", span.line, span.column),
             None if block.is_empty() => file.to_owned(),
@@ -31,7 +33,7 @@ impl Drawing {
         };
         let severity = self.paint(diagnostic.severity, &diagnostic.severity.to_string());
         let mut text = format!("{severity} {} in {place}\n", diagnostic.code);
-        text.push_str(&self.wrap(&diagnostic.message));
+        text.push_str(&self.wrap(&plain(&diagnostic.message)));
         let window = diagnostic.span.and_then(|span| Window::new(source, span));
         if let Some(window) = window {
             text.push_str(&self.draw_window(&window, diagnostic.severity));

@@ -166,7 +166,12 @@ fn read_file(path: &Path) -> Result<Vec<u8>, Diagnostic> {
     if length > MAX_FILE_BYTES {
         return Err(too_large(length));
     }
-    fs::read(path).map_err(|error| unreadable("the file", &error))
+    // Devices and pipes have no length, and may have no end.
+    let mut bytes = Vec::with_capacity(usize::try_from(length).unwrap_or(0));
+    File::open(path)
+        .and_then(|file| file.take(MAX_FILE_BYTES + 1).read_to_end(&mut bytes))
+        .map_err(|error| unreadable("the file", &error))?;
+    if bytes.len() as u64 > MAX_FILE_BYTES { Err(too_large(bytes.len() as u64)) } else { Ok(bytes) }
 }
 
 /// The content, if there is any.

@@ -18,6 +18,7 @@ mod source;
 pub use agreement::difference;
 
 use super::classification::{Classification, Settings};
+use crate::charge;
 use crate::cif::BlockReading;
 use crate::crystal::{AsymmetricUnit, Site};
 use crate::diagnostic::{Code, Diagnostic};
@@ -83,7 +84,9 @@ pub fn recast(
         }));
     };
     let mut noticed = Vec::new();
-    let charges = work.assignment.as_ref().map(|assignment| assignment.charges.as_slice());
+    // Inferred charges are a result and not a statement of the file: a reader of the new file infers them again.
+    let settled = work.assignment.as_ref().filter(|assignment| assignment.source != charge::Source::Inferred);
+    let charges = settled.map(|assignment| assignment.charges.as_slice());
     let source = Source { unit, crystal, charges };
     let (moved, number) = match Frame::find(crystal, work, settings) {
         Ok(frame) => {

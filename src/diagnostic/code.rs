@@ -89,6 +89,7 @@ codes! {
     PoscarMode = "poscar-006", "the line before the positions says neither Direct nor Cartesian", "write Direct or Cartesian before the positions";
     PoscarAnonymous = "poscar-007", "the elements of the atoms cannot be told", "write a line of element symbols before the counts";
     PoscarLabel = "poscar-008", "the label behind a position contradicts the species line", "correct the species line or the label";
+    PoscarTitle = "poscar-009", "the elements of a POSCAR file without a species line were taken from its title", "write a line of element symbols before the counts";
     // The JSON of the OPTIMADE standard.
     OptimadeSyntax = "optimade-001", "a file or a line is not JSON that can be read", "correct the JSON at the place named";
     OptimadeNoEntries = "optimade-002", "JSON without structures of the OPTIMADE standard", "give a response with the entries in data, one entry, or one entry a line";

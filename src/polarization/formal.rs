@@ -25,6 +25,10 @@ const ELEMENTARY_CHARGE: f64 = 1.602_176_634e-19;
 /// One e/Å² in C/m².
 pub const C_PER_M2: f64 = ELEMENTARY_CHARGE * 1e20;
 
+/// A component that symmetry leaves free is no zero, whatever the tolerance, when it is further from one than this share of
+/// the modulus. In a large cell the tolerance summed over all ions exceeds the quantum and would call anything zero.
+const FREE_ZERO: f64 = 0.02;
+
 /// One component of a polarization along a primitive vector.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub enum Component {
@@ -150,7 +154,9 @@ impl FormalPolarization {
         let lengths = primitive.lattice.parameters().lengths;
         let coset = |modulus: Modulus| {
             let unit = float(modulus.value(charge_gcd));
-            let is_zero = |axis: usize, distance: f64| distance * unit * lengths[axis] <= residual_limit;
+            let is_zero = |axis: usize, distance: f64| {
+                distance <= FREE_ZERO && distance * unit * lengths[axis] <= residual_limit
+            };
             Coset::new(modulus, charge_gcd, &polarization, is_zero).map_err(overflow)
         };
         let cosets = [coset(Modulus::Electron)?, coset(Modulus::Pair)?, coset(Modulus::Ion)?];

@@ -32,7 +32,13 @@ impl Kinds<'_> {
     ) -> Result<Vec<Element>, Diagnostic> {
         let by_label = self.by_label();
         let Some(species) = self.species else {
-            return by_label.or_else(|| self.by_title()).ok_or_else(|| self.anonymous(line));
+            if let Some(elements) = by_label {
+                return Ok(elements);
+            }
+            let elements = self.by_title().ok_or_else(|| self.anonymous(line))?;
+            let message = "no species line; the elements were taken from the title, in its order";
+            noticed.push(Diagnostic::warning(Code::PoscarTitle, message).hint(self.example()));
+            return Ok(elements);
         };
         let elements = species
             .iter()

@@ -56,6 +56,23 @@ impl<'a> Source<'a> {
         self.lines.span(last, self.bytes.len())
     }
 
+    /// Refuses another position directly after the last: then the counts are not those of the file.
+    pub(super) fn refuse_surplus(&mut self, counted: usize) -> Result<(), Diagnostic> {
+        let Ok(line) = self.next("nothing") else { return Ok(()) };
+        let words = line.words();
+        if words.len() < 3 || words.iter().take(3).any(|word| word.number().is_none()) {
+            return Ok(());
+        }
+        let message = format!(
+            "the counts add up to {counted} atoms, but line {} holds another position: '{}'",
+            line.number,
+            line.excerpt()
+        );
+        Err(Diagnostic::error(Code::PoscarCounts, message)
+            .at(line.span())
+            .hint("correct the counts, or leave a blank line before velocities"))
+    }
+
     pub(super) fn next(&mut self, what: &str) -> Result<Line<'a>, Diagnostic> {
         let number = self.number();
         let Some(&(start, end)) = self.ranges.get(self.next) else {

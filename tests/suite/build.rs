@@ -195,7 +195,11 @@ fn spinel(aluminium: &str) -> String {
 
 #[test]
 fn origin_choice_1_becomes_2() {
-    let (status, text, _) = run(&["build", "setting", "-"], &spinel("1"));
+    // Charges that were only inferred are no oxidation numbers of the new file.
+    let (_, inferred, _) = run(&["build", "setting", "-"], &spinel("1"));
+    assert!(inferred.contains("_cosetta_charges_source           inferred") && !inferred.contains("Mg2+"));
+    let given = ["build", "setting", "-", "--charges", "Mg=2,Al=3,O=-2"];
+    let (status, text, _) = run(&given, &spinel("1"));
     assert_eq!(status, 0);
     // International Tables, volume A, group 227: origin 2 is at 1/8,1/8,1/8 of origin 1. Sites by hand: 0 − 1/8 = 7/8,
     // 5/8 − 1/8 = 1/2, 0.3873 − 0.125 = 0.2623.
@@ -209,7 +213,7 @@ fn origin_choice_1_becomes_2() {
         "O1  O2-  0.2623(2) 0.2623(2) 0.2623(2) 1 32",
         "_chemical_formula_sum             'Al2 Mg O4'",
         "_cell_formula_units_Z             8",
-        "_cosetta_charges_source           inferred",
+        "_cosetta_charges_source           given",
         "_publ_author_name",
     ] {
         assert!(text.lines().any(|found| found.trim() == line), "{line}\n{text}");

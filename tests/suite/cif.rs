@@ -163,7 +163,7 @@ fn places_are_those_a_person_would_count() {
     let refusal = read_bytes(text.as_bytes()).blocks.swap_remove(0).unit.expect_err("no number");
     assert_eq!(
         refusal.to_string(),
-        "error[cell-002]: _cell_length_c is 'abc', which is not a number (line 4, column 17); hint: _cell_length_c 4.000"
+        "error[cell-002]: _cell_length_c is 'abc', which is not a number (line 4, column 17); hint: _cell_length_c and its value in Å"
     );
 }
 

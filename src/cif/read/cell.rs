@@ -61,7 +61,7 @@ pub(super) fn read_cell(
     if !missing.is_empty() {
         return Err(Diagnostic::error(Code::CellMissing, format!("no value for {}", missing.join(", ")))
             .at(CELL.iter().find_map(|tags| value_of(block, tags)).map_or(block.span, |value| value.span))
-            .hint(format!("{} 4.000", missing[0])));
+            .hint(example(missing[0])));
     }
     let mut numbers = [Measured { value: 0.0, uncertainty: None, decimals: None }; 6];
     for (number, tags) in numbers.iter_mut().zip(CELL) {
@@ -83,11 +83,9 @@ fn read_parameter(block: &Block<'_, '_>, tags: Spellings) -> Result<Measured, Di
     }
     parse_number(text).ok_or_else(|| {
         let message = format!("{} is '{}', which is not a number", tags[0], shown(text));
-        Diagnostic::error(Code::CellNotFinite, message).at(span).hint(format!(
-            "{} {}",
-            tags[0],
-            meant_number(text).as_deref().unwrap_or("4.000")
-        ))
+        let hint =
+            meant_number(text).map_or_else(|| example(tags[0]), |meant| format!("{} {meant}", tags[0]));
+        Diagnostic::error(Code::CellNotFinite, message).at(span).hint(hint)
     })
 }
 
@@ -170,12 +168,21 @@ fn plain(number: f64) -> String {
     text.trim_end_matches('0').trim_end_matches('.').to_owned()
 }
 
+/// What to write where nothing can be known of the value.
+fn example(tag: &str) -> String {
+    let unit = if tag.contains("angle") { "degrees" } else { "Å" };
+    format!("{tag} and its value in {unit}")
+}
+
 /// The number somebody probably meant: a comma for the point, a unit after the number, letters for digits.
 pub(super) fn meant_number(text: &str) -> Option<String> {
     let text = text.trim().replace(',', ".").replace(['O', 'o'], "0").replace(['l', 'I'], "1");
     let end = text.rfind(|c: char| c.is_ascii_digit() || matches!(c, '.' | ')')).map_or(0, |at| at + 1);
     let text = text[..end].trim();
-    parse_number(text).map(|_| text.to_owned())
+    // A parenthesis that was forgotten.
+    let closed =
+        if text.contains('(') && !text.ends_with(')') { format!("{text})") } else { text.to_owned() };
+    parse_number(&closed).map(|_| closed)
 }
 
 fn place(name: &str) -> usize {
@@ -199,7 +206,7 @@ fn check_volume(block: &Block<'_, '_>, lattice: &Lattice, noticed: &mut Vec<Diag
                 ),
             )
             .at(span)
-            .hint(format!("{} {found:.3}", CELL_VOLUME[0])),
+            .hint(format!("{} {found:.3}, if the cell parameters are right", CELL_VOLUME[0])),
         );
     }
 }

@@ -48,8 +48,11 @@ impl Budget {
     }
 
     pub(super) fn refusal(&self) -> Diagnostic {
-        let message =
-            format!("more than {} bytes would be unpacked, the limit of --max-unpacked", self.limit);
+        let message = format!(
+            "more than {} bytes would be unpacked, the limit of --max-unpacked; this and all that follows in the archive \
+                 was not read",
+            self.limit
+        );
         Diagnostic::error(Code::ArchiveTooLarge, message)
             .hint(format!("--max-unpacked {}", self.limit.saturating_mul(4)))
     }
