@@ -10,16 +10,23 @@
 //! [`assign`] does all three and refuses with a reason where no answer can be defended.
 
 mod assignment;
+mod bond_valence;
+mod electronegativity;
+mod evidence;
 mod given;
 mod inferred;
 mod neutral;
 mod orbit;
+mod parameters;
 mod stated;
 mod states;
+mod surroundings;
 
 pub use assignment::{Assignment, Known, Source, assign, charged_formula, charges_text, infer, known};
+pub use bond_valence::{BondValences, OrbitValence, bond_valences};
 pub use given::Given;
 pub use inferred::MIN_LIKELIHOOD_RATIO;
+pub use parameters::{Origin, Pair, Parameters};
 pub use states::{State, share, states};
 
 /// Larger charges, in units of e, are taken for mistakes: 118 is the charge of the heaviest nucleus.

@@ -3,6 +3,9 @@
 use super::given::Given;
 use super::inferred::{self, Inferred, MIN_LIKELIHOOD_RATIO};
 use super::orbit::Orbit;
+use super::parameters::Parameters;
+use super::surroundings::Surroundings;
+use crate::cell::Lattice;
 use super::stated::{self, Stated};
 use crate::crystal::{Element, Formula, Site};
 use crate::diagnostic::{Code, Diagnostic};
@@ -88,7 +91,7 @@ pub struct Assignment {
 pub fn assign(sites: &[Site], orbits: &[usize], given: Option<&Given>) -> Result<Assignment, Diagnostic> {
     match known(sites, orbits, given)? {
         Known::Settled(assignment) => Ok(assignment),
-        Known::Open(remark) => infer(sites, orbits, remark),
+        Known::Open(remark) => infer(sites, orbits, None, remark),
     }
 }
 
@@ -213,8 +216,8 @@ fn propose(refusal: Diagnostic, sites: &[Site], orbits: &[Orbit]) -> Diagnostic 
     if refusal.hint.is_some() {
         return refusal;
     }
-    let found = inferred::infer(orbits).ok();
-    match found.and_then(|found| option_text(sites, &per_site(orbits, &found.best.states))) {
+    let found = inferred::infer(orbits, None).ok();
+    match found.and_then(|found| option_text(sites, &per_site(orbits, &found.best().states))) {
         Some(option) => refusal.hint(option),
         None => refusal,
     }
@@ -224,12 +227,18 @@ fn propose(refusal: Diagnostic, sites: &[Site], orbits: &[Orbit]) -> Diagnostic 
 ///
 /// # Errors
 /// As [`assign`], for the inference.
-pub fn infer(sites: &[Site], orbits: &[usize], remark: Option<Diagnostic>) -> Result<Assignment, Diagnostic> {
+pub fn infer(
+    sites: &[Site],
+    orbits: &[usize],
+    lattice: Option<&Lattice>,
+    remark: Option<Diagnostic>,
+) -> Result<Assignment, Diagnostic> {
     let orbits = &Orbit::collect(sites, orbits)?;
     check_not_metal(sites, orbits).map_err(|refusal| propose(refusal, sites, orbits))?;
-    let found = inferred::infer(orbits)?;
-    let charges = per_site(orbits, &found.best.states);
-    let runner_up = found.second.as_ref().map(|second| per_site(orbits, &second.states));
+    let surroundings = lattice.and_then(|lattice| Surroundings::find(lattice, sites, orbits, Parameters::standard()).ok());
+    let found = inferred::infer(orbits, surroundings.as_ref())?;
+    let charges = per_site(orbits, &found.best().states);
+    let runner_up = found.second().map(|second| per_site(orbits, &second.states));
     let margin = found.ratio();
     if let (Some(runner_up), Some(margin)) = (&runner_up, margin)
         && margin < MIN_LIKELIHOOD_RATIO
@@ -237,7 +246,7 @@ pub fn infer(sites: &[Site], orbits: &[usize], remark: Option<Diagnostic>) -> Re
         return Err(ambiguous(sites, &charges, runner_up, margin, &found));
     }
     let mut diagnostics: Vec<Diagnostic> = remark.into_iter().collect();
-    diagnostics.extend(inferred::remarks(orbits, &found.best));
+    diagnostics.extend(inferred::remarks(orbits, found.best()));
     Ok(Assignment { charges, source: Source::Inferred, diagnostics, runner_up, margin })
 }
 
@@ -268,8 +277,8 @@ fn ambiguous(
     } else {
         format!("only {margin:.2} times as likely as")
     };
-    let only_swapped = found.second.as_ref().is_some_and(|second| {
-        second.states.iter().sorted().eq(found.best.states.iter().sorted()) && margin < 1.005
+    let only_swapped = found.second().is_some_and(|second| {
+        second.states.iter().sorted().eq(found.best().states.iter().sorted()) && margin < 1.005
     });
     let reason =
         if only_swapped { "; the composition cannot tell which site carries which charge" } else { "" };

@@ -23,16 +23,28 @@
 
 use super::neutral::{Choice, Wanted, best_picks};
 use super::orbit::Orbit;
+use super::evidence::{kind, log_likelihood};
 use super::states::{neighbours, share, states};
+use super::surroundings::Surroundings;
 use crate::crystal::Element;
 use crate::diagnostic::{Code, Diagnostic};
 use itertools::Itertools;
+use std::collections::BTreeMap;
 
 /// The best arrangement of states must be this many times as likely as the second best.
 pub const MIN_LIKELIHOOD_RATIO: f64 = 2.0;
 
 /// Prior odds against a second state of one element; about one oxide in twenty is of mixed valence.
 const MIXED_VALENCE_ODDS: f64 = 20.0;
+
+/// Weight of the published shares against the evidence of the bonds.
+const PRIOR: f64 = 1.0;
+
+/// Weight of the evidence of the bonds of one orbit.
+const EVIDENCE: f64 = 1.0;
+
+/// The evidence of several orbits of one element grows with this power of their number: they are not independent.
+const EVIDENCE_GROWTH: f64 = 0.5;
 
 /// A state with a smaller part of its element's reports is called uncommon.
 const UNCOMMON_SHARE: f64 = 0.01;
@@ -48,17 +60,27 @@ pub(crate) struct Arrangement {
     pub(crate) states: Vec<i64>,
 }
 
-/// What the composition suggests.
+/// What composition and bonds suggest: the best arrangements, best first, each with its probability.
 #[derive(Debug, Clone, PartialEq)]
 pub(crate) struct Inferred {
-    pub(crate) best: Arrangement,
-    pub(crate) second: Option<Arrangement>,
+    pub(crate) arrangements: Vec<Arrangement>,
 }
 
+/// How many arrangements are kept. The probability of the others is left out of the sum.
+const KEPT: usize = 12;
+
 impl Inferred {
+    pub(crate) fn best(&self) -> &Arrangement {
+        &self.arrangements[0]
+    }
+
+    pub(crate) fn second(&self) -> Option<&Arrangement> {
+        self.arrangements.get(1)
+    }
+
     /// How many times as likely the best arrangement is as the second.
     pub(crate) fn ratio(&self) -> Option<f64> {
-        self.second.as_ref().map(|second| (self.best.score - second.score).exp())
+        self.second().map(|second| (self.best().score - second.score).exp())
     }
 }
 
@@ -67,11 +89,11 @@ pub(crate) fn log_share(orbit: &Orbit, state: i64) -> Option<f64> {
     share(orbit.element, state).map(f64::ln)
 }
 
-/// The best two neutral arrangements, without judging how far they are apart.
+/// The best neutral arrangements, without judging how far they are apart.
 ///
 /// # Errors
 /// An element without tabulated states; no neutral arrangement, or none without averaged charges.
-pub(crate) fn infer(orbits: &[Orbit]) -> Result<Inferred, Diagnostic> {
+pub(crate) fn infer(orbits: &[Orbit], surroundings: Option<&Surroundings>) -> Result<Inferred, Diagnostic> {
     let unknown: Vec<_> = orbits
         .iter()
         .map(|orbit| orbit.element)
@@ -82,11 +104,37 @@ pub(crate) fn infer(orbits: &[Orbit]) -> Result<Inferred, Diagnostic> {
         let message = format!("no oxidation state is tabulated for {}", unknown.iter().join(", "));
         return Err(Diagnostic::error(Code::ChargeElement, message));
     }
-    let mut found = best_arrangements(orbits, log_share, 2).into_iter();
-    match found.next() {
-        Some(best) => Ok(Inferred { best, second: found.next() }),
-        None => Err(nothing_neutral(orbits)),
+    let found = match surroundings {
+        None => best_arrangements(orbits, &[], log_share, KEPT),
+        Some(surroundings) => with_bonds(orbits, surroundings),
+    };
+    if found.is_empty() { Err(nothing_neutral(orbits)) } else { Ok(Inferred { arrangements: found }) }
+}
+
+/// The best arrangements with the evidence of the bonds.
+#[expect(clippy::cast_precision_loss, reason = "counts of sites are far below 2^52")]
+fn with_bonds(orbits: &[Orbit], surroundings: &Surroundings) -> Vec<Arrangement> {
+    let kinds: Vec<u64> = (0..orbits.len()).map(|index| kind(surroundings, orbits, index)).collect();
+    let mut evidence: BTreeMap<(usize, i64), f64> = BTreeMap::new();
+    for group in groups(orbits, &kinds) {
+        let total: i64 = group.iter().map(|&index| orbits[index].count()).sum();
+        let number = group.len() as f64;
+        for &index in &group {
+            let orbit = &orbits[index];
+            let Some(&first) = orbit.sites.first() else { continue };
+            // Undoes the weight by multiplicity: bonds are judged orbit by orbit.
+            let weight = EVIDENCE * number.powf(EVIDENCE_GROWTH - 1.0) * total as f64 / orbit.count() as f64;
+            for state in states(orbit.element) {
+                let log = log_likelihood(surroundings, orbits, index, state.charge);
+                evidence.insert((first, state.charge), weight * log);
+            }
+        }
     }
+    let score = |orbit: &Orbit, state: i64| {
+        let bonds = orbit.sites.first().and_then(|&first| evidence.get(&(first, state)));
+        Some(PRIOR * log_share(orbit, state)? + bonds.copied().unwrap_or(0.0))
+    };
+    best_arrangements(orbits, &kinds, score, KEPT)
 }
 
 /// The orbits of each element; orbits are ordered by element.
@@ -99,28 +147,45 @@ fn count(orbits: &[Orbit]) -> i64 {
 }
 
 /// The best `keep` neutral arrangements, best first. `likelihood` gives the logarithm of the likelihood that an orbit
-/// is in a state, or none if it cannot be.
+/// is in a state, or none if it cannot be. Orbits of one element and of equal number in `kinds` belong together: they
+/// are of one state, or of two neighbouring ones.
 pub(crate) fn best_arrangements(
     orbits: &[Orbit],
+    kinds: &[u64],
     likelihood: impl Fn(&Orbit, i64) -> Option<f64>,
     keep: usize,
 ) -> Vec<Arrangement> {
-    let fillings: Vec<_> = by_element(orbits).map(|group| fillings(group, &likelihood, keep)).collect();
+    let groups = groups(orbits, kinds);
+    let fillings: Vec<_> = groups
+        .iter()
+        .map(|group| {
+            let members: Vec<&Orbit> = group.iter().map(|&index| &orbits[index]).collect();
+            fillings(&members, &likelihood, keep)
+        })
+        .collect();
     let items: Vec<Vec<Choice>> =
         fillings.iter().map(|list| list.iter().map(|filling| filling.choice).collect()).collect();
     let picks = best_picks(&items, keep, Wanted::Total(0)).remove(&0).unwrap_or_default();
     picks
         .into_iter()
-        .map(|pick| Arrangement {
-            score: pick.score,
-            states: pick
-                .choices
-                .iter()
-                .zip(&fillings)
-                .flat_map(|(&choice, list)| list[choice].states.iter().copied())
-                .collect(),
+        .map(|pick| {
+            let mut states = vec![0; orbits.len()];
+            for ((group, list), &choice) in groups.iter().zip(&fillings).zip(&pick.choices) {
+                for (&index, &state) in group.iter().zip(&list[choice].states) {
+                    states[index] = state;
+                }
+            }
+            Arrangement { score: pick.score, states }
         })
         .collect()
+}
+
+/// The orbits that belong together, by index.
+fn groups(orbits: &[Orbit], kinds: &[u64]) -> Vec<Vec<usize>> {
+    let key = |index: usize| (orbits[index].element, kinds.get(index).copied().unwrap_or(0));
+    let mut order: Vec<usize> = (0..orbits.len()).collect();
+    order.sort_by_key(|&index| (key(index), index));
+    order.chunk_by(|&a, &b| key(a) == key(b)).map(<[usize]>::to_vec).collect()
 }
 
 /// States of the orbits of one element, with their total charge and score.
@@ -131,7 +196,7 @@ struct Filling {
 
 /// All fillings of an element's orbits with one state; of those with two neighbouring states the best `keep` for each
 /// total charge.
-fn fillings(group: &[Orbit], likelihood: &impl Fn(&Orbit, i64) -> Option<f64>, keep: usize) -> Vec<Filling> {
+fn fillings(group: &[&Orbit], likelihood: &impl Fn(&Orbit, i64) -> Option<f64>, keep: usize) -> Vec<Filling> {
     let Some(element) = group.first().map(|orbit| orbit.element) else { return Vec::new() };
     let mut list: Vec<Filling> = states(element)
         .iter()
@@ -162,11 +227,11 @@ fn fillings(group: &[Orbit], likelihood: &impl Fn(&Orbit, i64) -> Option<f64>, k
 /// What each state adds to charge and score of each orbit; none if an orbit cannot be in one of them.
 #[expect(clippy::cast_precision_loss, reason = "counts of sites are far below 2^52")]
 fn options(
-    group: &[Orbit],
+    group: &[&Orbit],
     states: &[i64],
     likelihood: &impl Fn(&Orbit, i64) -> Option<f64>,
 ) -> Option<Vec<Vec<Choice>>> {
-    let total = count(group) as f64;
+    let total = group.iter().fold(0_i64, |sum, orbit| sum.saturating_add(orbit.count())) as f64;
     let choice = |orbit: &Orbit, state: i64| {
         let amount = state.checked_mul(orbit.count())?;
         let score = likelihood(orbit, state)? * (orbit.count() as f64 / total);
@@ -375,8 +440,8 @@ mod tests {
                 log_share(orbit, state).map(|score| score - f64::from(digit))
             };
             let pairs = [
-                (best_arrangements(&orbits, log_share, 3), by_enumeration(&orbits, log_share)),
-                (best_arrangements(&orbits, skewed, 3), by_enumeration(&orbits, skewed)),
+                (best_arrangements(&orbits, &[], log_share, 3), by_enumeration(&orbits, log_share)),
+                (best_arrangements(&orbits, &[], skewed, 3), by_enumeration(&orbits, skewed)),
             ];
             for (found, all) in pairs {
                 prop_assert_eq!(found.len(), all.len().min(3));
@@ -395,7 +460,7 @@ mod tests {
     fn ten_elements_are_no_problem() {
         let list = ["Fe", "Mn", "Mo", "S", "N", "P", "C", "Cu", "Bi", "O", "H", "V"];
         let list: Vec<_> = list.iter().enumerate().map(|(index, symbol)| (*symbol, 7 + 3 * index)).collect();
-        assert!(infer(&orbits(&list)).is_ok());
+        assert!(infer(&orbits(&list), None).is_ok());
     }
 
     #[test]
@@ -405,7 +470,7 @@ mod tests {
             (&[("Li", 2), ("Mn", 4), ("O", 8)][..], "7/2 on Mn (1 set of equivalent sites: Mn1)"),
             (&[("Fe", 3), ("O", 4)], "8/3 on Fe (1 set of equivalent sites: Fe0)"),
         ] {
-            let refusal = infer(&orbits(list)).expect_err("averaged");
+            let refusal = infer(&orbits(list), None).expect_err("averaged");
             assert_eq!(refusal.code, Code::ChargeAveraged);
             assert!(refusal.message.contains(expected), "{}", refusal.message);
         }
@@ -413,10 +478,10 @@ mod tests {
 
     #[test]
     fn impossible_compositions_are_named() {
-        let refusal = infer(&orbits(&[("Na", 2), ("F", 1)])).expect_err("not neutral");
+        let refusal = infer(&orbits(&[("Na", 2), ("F", 1)]), None).expect_err("not neutral");
         assert_eq!(refusal.code, Code::ChargeNone);
         assert!(refusal.message.contains("F (-1), Na (+1)"), "{}", refusal.message);
-        let refusal = infer(&orbits(&[("Ar", 2), ("F", 1)])).expect_err("noble");
+        let refusal = infer(&orbits(&[("Ar", 2), ("F", 1)]), None).expect_err("noble");
         assert_eq!(refusal.code, Code::ChargeElement);
         assert!(refusal.message.ends_with("for Ar"), "{}", refusal.message);
     }
@@ -424,14 +489,14 @@ mod tests {
     #[test]
     fn uncommon_and_mixed_states_are_remarked() {
         let peroxide = orbits(&[("Na", 2), ("O", 2)]);
-        let found = infer(&peroxide).expect("Na2O2");
-        let said = remarks(&peroxide, &found.best);
+        let found = infer(&peroxide, None).expect("Na2O2");
+        let said = remarks(&peroxide, found.best());
         assert!(said[0].message.contains("O -1 (0.44 %)"), "{}", said[0].message);
         // Co3O4, normal spinel with +2 on the tetrahedral site (Greenwood & Earnshaw, from memory).
         let spinel = orbits(&[("Co", 2), ("Co", 4), ("O", 8)]);
-        let found = infer(&spinel).expect("Co3O4");
-        assert_eq!(found.best.states, [-2, 2, 3]);
-        let said = remarks(&spinel, &found.best);
+        let found = infer(&spinel, None).expect("Co3O4");
+        assert_eq!(found.best().states, [-2, 2, 3]);
+        let said = remarks(&spinel, found.best());
         assert_eq!(said[1].code, Code::ChargeMixedValence);
         assert_eq!(said[1].message, "Co was given several charges: +2 on Co0; +3 on Co1");
     }

@@ -220,7 +220,7 @@ fn run(
     work.centres = Centres::find(primitive)?;
     let assignment = match known {
         Known::Settled(assignment) => assignment,
-        Known::Open(remark) => charge::infer(&crystal.sites, &symmetry.orbits, remark)?,
+        Known::Open(remark) => charge::infer(&crystal.sites, &symmetry.orbits, Some(&crystal.lattice), remark)?,
     };
     let charges: Vec<i64> = primitive.representatives.iter().map(|&site| assignment.charges[site]).collect();
     work.diagnostics.extend(assignment.diagnostics.iter().cloned());

@@ -119,6 +119,7 @@ codes! {
     ChargeInferred = "charge-011", "charges were inferred from the composition alone", "give --charges to fix them";
     ChargeMixedValence = "charge-012", "one element carries several charges on inequivalent sites", "give --charges per site label to fix them";
     ChargeSetAside = "charge-013", "the file's oxidation numbers were not used: some are missing, all are zero, or one is beyond any nuclear charge", "complete the numbers in the file, or give --charges";
+    BondValenceTable = "charge-014", "a table of bond-valence parameters cannot be read", "give a CIF with a loop of _valence_param_atom_1, _valence_param_atom_2, _valence_param_Ro and _valence_param_B";
     // Polarization.
     PolarizationResidual = "polarization-001", "the sum of charges and positions is not at a value that symmetry permits", "check charges and positions, or lower --symmetry-tolerance";
     PolarizationRoutes = "polarization-002", "two independent routes to the offset disagree", "report this file as a fault of the program";

@@ -2,6 +2,7 @@
 
 #![allow(clippy::print_stdout, reason = "figures of a run are shown with --nocapture")]
 
+mod charges;
 mod check;
 mod cif;
 mod commands;

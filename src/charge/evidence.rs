@@ -1,0 +1,101 @@
+//! How well does a state fit the bonds of a site?
+//!
+//! *Positive states* are judged by the bond-valence sum over the coordination shell: `ln(sum / state)` is compared with
+//! its mean and width for the ion, measured on the fitted part of the labelled oxides (`bond_valence_spread.tsv`), with
+//! tails wide enough for poor structures (Student's t with four degrees of freedom).
+//!
+//! *Negative states* are judged by the electrons that the atom's shell lacks: each bond to an atom of the same element
+//! saves one electron per unit of valence, each bond to a more electronegative atom turns one around. This is −2 for
+//! oxide, −1 for peroxide (O–O of valence 1), −1, +1, −1 for azide, −3 for ammonium and amide nitrogen.
+
+use super::electronegativity::octet_need;
+use super::orbit::Orbit;
+use super::surroundings::Surroundings;
+use crate::crystal::Element;
+use std::collections::BTreeMap;
+use std::sync::LazyLock;
+
+/// Logarithm of the likelihood of what the bonds contradict.
+const FLOOR: f64 = -9.0;
+
+/// Width, in e, of the number of electrons that a shell lacks.
+const SHELL_WIDTH: f64 = 0.3;
+
+/// Degrees of freedom of the tails.
+const FREEDOM: f64 = 4.0;
+
+/// Mean and width of `ln(sum / state)` where an ion was not measured.
+const UNMEASURED: Spread = Spread { mean: 0.0, width: 0.2 };
+
+#[derive(Debug, Clone, Copy, PartialEq)]
+struct Spread {
+    mean: f64,
+    width: f64,
+}
+
+static SPREADS: LazyLock<BTreeMap<(Element, i64), Spread>> = LazyLock::new(|| {
+    let read = |line: &str| {
+        let mut fields = line.split('\t');
+        let element = Element::from_symbol(fields.next()?)?;
+        let state = fields.next()?.parse().ok()?;
+        let mean = fields.next()?.parse().ok()?;
+        let width = fields.next()?.parse().ok()?;
+        Some(((element, state), Spread { mean, width }))
+    };
+    include_str!("../data/bond_valence_spread.tsv").lines().filter_map(read).collect()
+});
+
+/// The logarithm of the likelihood of a state; 0 where the bonds say nothing.
+pub(crate) fn log_likelihood(surroundings: &Surroundings, orbits: &[Orbit], index: usize, state: i64) -> f64 {
+    let Some(environment) = surroundings.environments.get(index) else { return 0.0 };
+    let Some(element) = orbits.get(index).map(|orbit| orbit.element) else { return 0.0 };
+    let (giving, taking) = (environment.giving, environment.taking);
+    if giving <= 0.0 && taking <= 0.0 && environment.homonuclear <= 0.0 {
+        return 0.0;
+    }
+    let is_anion = taking > giving || (giving <= 0.0 && environment.homonuclear > 0.0);
+    if let (true, Some(need)) = (is_anion || (state < 0 && giving <= 0.0), octet_need(element)) {
+        let turned = if giving > 0.0 { 2.0 * giving } else { 0.0 };
+        #[expect(clippy::cast_precision_loss, reason = "states are small")]
+        let off = (state as f64 + need - environment.homonuclear - turned) / SHELL_WIDTH;
+        return softened(-0.5 * off * off);
+    }
+    if state < 0 || is_anion {
+        return FLOOR;
+    }
+    match surroundings.sum(orbits, index, state) {
+        Some(sum) if sum > 0.0 => {
+            let spread = SPREADS.get(&(element, state)).copied().unwrap_or(UNMEASURED);
+            #[expect(clippy::cast_precision_loss, reason = "states are small")]
+            let off = ((sum / state as f64).ln() - spread.mean) / spread.width;
+            let tails = -0.5 * (FREEDOM + 1.0) * (off * off / FREEDOM).ln_1p();
+            softened(tails - (spread.width / UNMEASURED.width).ln())
+        }
+        Some(_) => FLOOR,
+        None => 0.0,
+    }
+}
+
+/// Orbits of one element and of one kind are expected to share a state. Nonmetals that are bonded differently are of
+/// different kinds: the nitrogen of ammonium and of nitrate, the oxygen of oxide and of peroxide.
+pub(crate) fn kind(surroundings: &Surroundings, orbits: &[Orbit], index: usize) -> u64 {
+    let (Some(environment), Some(orbit)) = (surroundings.environments.get(index), orbits.get(index)) else {
+        return 0;
+    };
+    if octet_need(orbit.element).is_none() {
+        return 0;
+    }
+    let rounded = |value: f64| {
+        #[expect(clippy::cast_possible_truncation, clippy::cast_sign_loss, reason = "valences are small")]
+        let rounded = value.round().clamp(0.0, 99.0) as u64;
+        rounded
+    };
+    let is_giver = u64::from(environment.giving > environment.taking);
+    let given = if matches!(orbit.element.symbol(), "C" | "N") { rounded(environment.giving) } else { 0 };
+    is_giver + 2 * (rounded(environment.homonuclear) + 100 * given)
+}
+
+/// Never below the floor: a mixture with a flat distribution.
+fn softened(log: f64) -> f64 {
+    (log.exp() + FLOOR.exp()).ln()
+}
