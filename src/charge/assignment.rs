@@ -1,7 +1,9 @@
 //! The charge of every site, and where it comes from.
 
 use super::given::Given;
-use super::inferred::{self, Inferred, MIN_LIKELIHOOD_RATIO};
+use super::bond_valence::{self, BondValences};
+use super::evidence::is_bare_ammonium;
+use super::inferred::{self, Inferred, MIN_LIKELIHOOD_RATIO, MIN_PROBABILITY};
 use super::orbit::Orbit;
 use super::parameters::Parameters;
 use super::surroundings::Surroundings;
@@ -58,10 +60,60 @@ pub struct Assignment {
     pub source: Source,
     /// What was noticed on the way.
     pub diagnostics: Vec<Diagnostic>,
+    /// How the inference went, where there was one.
+    pub reasoning: Option<Reasoning>,
     /// The second most likely charges of each site, if charges were inferred and there was a choice.
     pub runner_up: Option<Vec<i64>>,
-    /// How many times as likely the charges are as the runner-up; at least [`MIN_LIKELIHOOD_RATIO`].
+    /// How many times as likely the charges are as the runner-up.
     pub margin: Option<f64>,
+}
+
+/// How an inference went.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Reasoning {
+    /// The probability of the charges.
+    pub probability: f64,
+    /// The most likely assignments, the one that was taken first.
+    pub candidates: Vec<Candidate>,
+    /// Bond-valence sums of the charges, where the positions were used.
+    pub bonds: Option<BondValences>,
+}
+
+/// One possible assignment.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Candidate {
+    /// Charge of each site in units of e.
+    pub charges: Vec<i64>,
+    /// Its probability.
+    pub probability: f64,
+}
+
+impl Reasoning {
+    /// Candidates less likely than this are left out.
+    const LEAST: f64 = 1e-4;
+
+    fn new(orbits: &[Orbit], found: &Inferred, surroundings: Option<&Surroundings>) -> Self {
+        let pairs = found.arrangements.iter().zip(&found.probabilities).enumerate();
+        let kept = pairs.filter(|(rank, (_, probability))| *rank < 2 || **probability >= Self::LEAST);
+        Self {
+            probability: found.probability(),
+            candidates: kept
+                .map(|(_, (arrangement, &probability))| Candidate {
+                    charges: per_site(orbits, &arrangement.states),
+                    probability,
+                })
+                .collect(),
+            bonds: surroundings
+                .and_then(|surroundings| bond_valence::of_orbits(surroundings, orbits, &found.best().states)),
+        }
+    }
+
+    /// The probability that a site carries a charge, as far as the candidates tell.
+    #[must_use]
+    pub fn site_probability(&self, site: usize, charge: i64) -> f64 {
+        let like = self.candidates.iter().filter(|candidate| candidate.charges.get(site) == Some(&charge));
+        like.map(|candidate| candidate.probability).sum::<f64>().min(self.probability.max(0.999))
+    }
 }
 
 /// The charge of every site of one cell. Sites with equal numbers in `orbits` are symmetry-equivalent.
@@ -117,6 +169,7 @@ pub fn known(sites: &[Site], orbits: &[usize], given: Option<&Given>) -> Result<
             charges,
             source,
             diagnostics: Vec::new(),
+            reasoning: None,
             runner_up: None,
             margin: None,
         }))
@@ -230,24 +283,59 @@ fn propose(refusal: Diagnostic, sites: &[Site], orbits: &[Orbit]) -> Diagnostic 
 pub fn infer(
     sites: &[Site],
     orbits: &[usize],
-    lattice: Option<&Lattice>,
+    positions: Option<(&Lattice, &Parameters)>,
     remark: Option<Diagnostic>,
 ) -> Result<Assignment, Diagnostic> {
     let orbits = &Orbit::collect(sites, orbits)?;
     check_not_metal(sites, orbits).map_err(|refusal| propose(refusal, sites, orbits))?;
-    let surroundings = lattice.and_then(|lattice| Surroundings::find(lattice, sites, orbits, Parameters::standard()).ok());
+    let surroundings =
+        positions.and_then(|(lattice, parameters)| Surroundings::find(lattice, sites, orbits, parameters).ok());
     let found = inferred::infer(orbits, surroundings.as_ref())?;
     let charges = per_site(orbits, &found.best().states);
     let runner_up = found.second().map(|second| per_site(orbits, &second.states));
     let margin = found.ratio();
-    if let (Some(runner_up), Some(margin)) = (&runner_up, margin)
-        && margin < MIN_LIKELIHOOD_RATIO
+    if let (Some(_), Some((average, probability))) = (&surroundings, &found.average)
+        && *probability > found.probability()
     {
+        let refusal = average.refusal(orbits);
+        return Err(match option_text(sites, &charges) {
+            Some(option) => refusal.hint(option),
+            None => refusal,
+        });
+    }
+    let is_settled = match margin {
+        Some(margin) if surroundings.is_none() => margin >= MIN_LIKELIHOOD_RATIO,
+        _ => found.probability() >= min_probability(),
+    };
+    if let (Some(runner_up), Some(margin), false) = (&runner_up, margin, is_settled) {
         return Err(ambiguous(sites, &charges, runner_up, margin, &found));
     }
     let mut diagnostics: Vec<Diagnostic> = remark.into_iter().collect();
-    diagnostics.extend(inferred::remarks(orbits, found.best()));
-    Ok(Assignment { charges, source: Source::Inferred, diagnostics, runner_up, margin })
+    diagnostics.extend(inferred::remarks(orbits, found.best(), surroundings.is_some()));
+    if let Some(surroundings) = &surroundings {
+        diagnostics.extend(bare_ammonium(orbits, surroundings));
+    }
+    let reasoning = Some(Reasoning::new(orbits, &found, surroundings.as_ref()));
+    Ok(Assignment { charges, source: Source::Inferred, diagnostics, reasoning, runner_up, margin })
+}
+
+fn min_probability() -> f64 {
+    std::env::var("MP").ok().and_then(|t| t.parse().ok()).unwrap_or(MIN_PROBABILITY)
+}
+
+/// A warning where ammonium ions lack their hydrogen atoms.
+fn bare_ammonium(orbits: &[Orbit], surroundings: &Surroundings) -> Option<Diagnostic> {
+    let pairs = orbits.iter().zip(&surroundings.environments);
+    let bare = pairs.filter(|(orbit, environment)| is_bare_ammonium(orbit.element, environment));
+    let labels: Vec<&str> = bare.map(|(orbit, _)| orbit.label.as_str()).collect();
+    if labels.is_empty() {
+        return None;
+    }
+    let message = format!(
+        "nitrogen without any bond was taken for an ammonium ion of charge +1 whose hydrogen atoms are missing: {}",
+        super::listing(labels)
+    );
+    Some(Diagnostic::warning(Code::ChargeHydrogen, message))
 }
 
 fn check_not_metal(sites: &[Site], orbits: &[Orbit]) -> Result<(), Diagnostic> {
@@ -280,11 +368,13 @@ fn ambiguous(
     let only_swapped = found.second().is_some_and(|second| {
         second.states.iter().sorted().eq(found.best().states.iter().sorted()) && margin < 1.005
     });
-    let reason =
-        if only_swapped { "; the composition cannot tell which site carries which charge" } else { "" };
+    let reason = if only_swapped { "; nothing tells which site carries which charge" } else { "" };
     let refusal = Diagnostic::error(
         Code::ChargeAmbiguous,
-        format!("{best} is {how} {second}, and the limit is {MIN_LIKELIHOOD_RATIO} times{reason}"),
+        format!(
+            "{best} is {how} {second} and has a probability of {:.2}, below the limit of {MIN_PROBABILITY}{reason}",
+            found.probability()
+        ),
     );
     match option_text(sites, charges) {
         Some(option) => refusal.hint(option),
@@ -528,11 +618,11 @@ mod tests {
         let refusal = run(&[("Cu1", 1), ("Fe1", 1), ("O1", 2)], None).expect_err("close");
         assert_eq!(refusal.code, Code::ChargeAmbiguous);
         assert!(refusal.message.contains("Cu=1,Fe=3,O=-2 is only 1."), "{}", refusal.message);
-        assert!(refusal.message.contains("Cu=2,Fe=2,O=-2, and the limit is 2 times"), "{}", refusal.message);
+        assert!(refusal.message.contains("Cu=2,Fe=2,O=-2 and has a probability of"), "{}", refusal.message);
         assert_eq!(refusal.hint.as_deref(), Some("--charges 'Cu=1,Fe=3,O=-2'"));
         let refusal = run(&[("Sb1", 4), ("Sb2", 4), ("O1", 16)], None).expect_err("tie");
         assert!(
-            refusal.message.contains("cannot tell which site carries which charge"),
+            refusal.message.contains("nothing tells which site carries which charge"),
             "{}",
             refusal.message
         );

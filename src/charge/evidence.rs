@@ -10,16 +10,22 @@
 
 use super::electronegativity::octet_need;
 use super::orbit::Orbit;
-use super::surroundings::Surroundings;
+use super::surroundings::{Environment, Surroundings};
 use crate::crystal::Element;
 use std::collections::BTreeMap;
 use std::sync::LazyLock;
 
 /// Logarithm of the likelihood of what the bonds contradict.
-const FLOOR: f64 = -9.0;
+const FLOOR: f64 = -12.0;
+
+/// Logarithm of the odds of an unpaired electron on a main-group atom.
+const UNPAIRED: f64 = -4.0;
+
+/// Logarithm of the odds of another charge than +1 for nitrogen without bonds.
+const BARE: f64 = -5.0;
 
 /// Width, in e, of the number of electrons that a shell lacks.
-const SHELL_WIDTH: f64 = 0.3;
+const SHELL_WIDTH: f64 = 0.22;
 
 /// Degrees of freedom of the tails.
 const FREEDOM: f64 = 4.0;
@@ -50,6 +56,9 @@ pub(crate) fn log_likelihood(surroundings: &Surroundings, orbits: &[Orbit], inde
     let Some(environment) = surroundings.environments.get(index) else { return 0.0 };
     let Some(element) = orbits.get(index).map(|orbit| orbit.element) else { return 0.0 };
     let (giving, taking) = (environment.giving, environment.taking);
+    if is_bare_ammonium(element, environment) {
+        return if state == 1 { 0.0 } else { BARE };
+    }
     if giving <= 0.0 && taking <= 0.0 && environment.homonuclear <= 0.0 {
         return 0.0;
     }
@@ -69,11 +78,37 @@ pub(crate) fn log_likelihood(surroundings: &Surroundings, orbits: &[Orbit], inde
             #[expect(clippy::cast_precision_loss, reason = "states are small")]
             let off = ((sum / state as f64).ln() - spread.mean) / spread.width;
             let tails = -0.5 * (FREEDOM + 1.0) * (off * off / FREEDOM).ln_1p();
-            softened(tails - (spread.width / UNMEASURED.width).ln())
+            let unpaired = if is_unpaired(element, state, environment) { UNPAIRED } else { 0.0 };
+            softened(tails - (spread.width / UNMEASURED.width).ln()) + unpaired
         }
         Some(_) => FLOOR,
         None => 0.0,
     }
+}
+
+/// A nitrogen without any bond: what is left of ammonium where the hydrogen atoms were not found. It stands for the
+/// whole ion.
+pub(crate) fn is_bare_ammonium(element: Element, environment: &Environment) -> bool {
+    element.symbol() == "N"
+        && environment.giving <= 0.0
+        && environment.taking < 0.3
+        && environment.homonuclear <= 0.0
+}
+
+/// Whether a main-group atom of this state would have an unpaired electron, beside those in bonds to its like.
+fn is_unpaired(element: Element, state: i64, environment: &Environment) -> bool {
+    let electrons = match element.symbol() {
+        "B" | "Al" | "Ga" | "In" | "Tl" => 3,
+        "Si" | "Ge" | "Sn" | "Pb" => 4,
+        "P" | "As" | "Sb" | "Bi" => 5,
+        "S" | "Se" | "Te" => 6,
+        "Cl" | "Br" | "I" => 7,
+        "Zn" | "Cd" | "Hg" => 2,
+        _ => return false,
+    };
+    #[expect(clippy::cast_possible_truncation, reason = "a small valence")]
+    let bonds = environment.homonuclear.round() as i64;
+    (electrons - state + bonds) % 2 != 0
 }
 
 /// Orbits of one element and of one kind are expected to share a state. Nonmetals that are bonded differently are of

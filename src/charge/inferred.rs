@@ -1,50 +1,56 @@
-//! Which charges does the composition suggest?
+//! Which charges do composition and bonds suggest?
 //!
 //! Every orbit (set of symmetry-equivalent sites) takes one whole state. An arrangement of states over the orbits is
 //! scored by
 //!
 //! ```text
-//! score = Σ_elements [ Σ_orbits (n_orbit / n_element) ln p(orbit, state) − ln 20 · (states of the element − 1) ]
+//! score = Σ_groups [ mean over the states of the group of ln p(state) − ln(odds) · (states − 1) ] + w Σ_orbits ln L(orbit, state)
 //! ```
 //!
-//! where p is the part of the element's published reports that have the state. The inner weights add up to one per
-//! element, not per atom: the atoms of one element in one crystal share their surroundings and are not independent
-//! witnesses. One element may carry two states, which must be neighbours (see `neighbours`); one oxide in twenty is of
-//! mixed valence, hence ln 20. Of all neutral arrangements the best two are found exactly, and the best is accepted only
-//! if it is [`MIN_LIKELIHOOD_RATIO`] times as likely as the second.
+//! where p is the part of the element's published reports that have the state, and L the likelihood of what is seen of
+//! the bonds of the orbit (see `evidence`; without positions the last sum is left out). A group is the orbits of one
+//! element, of nonmetals those that are bonded alike. Its atoms share their surroundings and are not independent
+//! witnesses of how common a state is, so each state counts once and not once for every atom. A group may carry two
+//! states, which must be neighbours (see `neighbours`), at odds of [`MIXED_VALENCE_ODDS`]; states more than one apart
+//! at longer odds where the element is known to have the one between.
 //!
-//! Measured on 3,986 oxides labelled by bond valence (George et al., CC BY 4.0; the labels are not truth): 3,758 agree,
-//! 56 differ, 172 are refused. With a limit of 1.5 instead of 2, 3,775 agree and 69 differ. A weight per atom of the
-//! formula unit does as well on these oxides (3,777 and 57) but punishes a rare state of many atoms: pyrite, Fe +2 and
-//! S −1 in textbooks, would become Fe +4 and S −2 at odds of 15, where a weight per element refuses.
-//!
-//! The composition cannot tell which of two inequivalent sets of equal size carries which state; these tie, and are
-//! refused. The place for evidence from bond lengths is the argument of `best_arrangements`.
+//! Of all neutral arrangements the best are found exactly, by dynamic programming over the total charge (see
+//! `neutral`): the work grows with orbits × states × distinct totals, and nothing is cut off but groups of more than
+//! [`MAX_MIXED_ORBITS`] orbits, which are given one state throughout. The probability of an arrangement is its share
+//! among the [`KEPT`] best, with the case that one element has no whole charge at all as one more; how well it holds
+//! is measured, see DEVELOPERS.md.
 
 use super::neutral::{Choice, Wanted, best_picks};
 use super::orbit::Orbit;
+use super::calibration;
 use super::evidence::{kind, log_likelihood};
 use super::states::{neighbours, share, states};
 use super::surroundings::Surroundings;
 use crate::crystal::Element;
 use crate::diagnostic::{Code, Diagnostic};
 use itertools::Itertools;
-use std::collections::BTreeMap;
 
-/// The best arrangement of states must be this many times as likely as the second best.
+/// An assignment is refused below this probability.
+pub const MIN_PROBABILITY: f64 = 0.4;
+
+/// Without bond lengths the best arrangement of states must be this many times as likely as the second best.
 pub const MIN_LIKELIHOOD_RATIO: f64 = 2.0;
 
 /// Prior odds against a second state of one element; about one oxide in twenty is of mixed valence.
 const MIXED_VALENCE_ODDS: f64 = 20.0;
 
-/// Weight of the published shares against the evidence of the bonds.
-const PRIOR: f64 = 1.0;
+/// Further odds against two states of a metal with a known one between them.
+const GAP_ODDS: f64 = 5.0;
 
-/// Weight of the evidence of the bonds of one orbit.
-const EVIDENCE: f64 = 1.0;
+/// Odds against a charge that is shared between equivalent sites, beside those of mixed valence.
+const AVERAGE_ODDS: f64 = 5.0;
 
-/// The evidence of several orbits of one element grows with this power of their number: they are not independent.
-const EVIDENCE_GROWTH: f64 = 0.5;
+/// Weight of the evidence of the bonds: sums of neighbouring orbits share bonds, so they count less than independent
+/// ones would. Fitted.
+const EVIDENCE: f64 = 0.7;
+
+/// How much more than their logarithm the shares below [`UNCOMMON_SHARE`] count.
+const RARE: f64 = 1.0;
 
 /// A state with a smaller part of its element's reports is called uncommon.
 const UNCOMMON_SHARE: f64 = 0.01;
@@ -60,16 +66,33 @@ pub(crate) struct Arrangement {
     pub(crate) states: Vec<i64>,
 }
 
-/// What composition and bonds suggest: the best arrangements, best first, each with its probability.
-#[derive(Debug, Clone, PartialEq)]
-pub(crate) struct Inferred {
-    pub(crate) arrangements: Vec<Arrangement>,
-}
-
 /// How many arrangements are kept. The probability of the others is left out of the sum.
 const KEPT: usize = 12;
 
+/// What composition and bonds suggest.
+#[derive(Debug, Clone, PartialEq)]
+pub(crate) struct Inferred {
+    /// The best arrangements, best first; at least one.
+    pub(crate) arrangements: Vec<Arrangement>,
+    /// The probability of each.
+    pub(crate) probabilities: Vec<f64>,
+    /// The best case with an averaged charge, if there is one, and its probability.
+    pub(crate) average: Option<(Average, f64)>,
+}
+
 impl Inferred {
+    fn new(arrangements: Vec<Arrangement>, average: Option<Average>) -> Self {
+        let top = arrangements.first().map_or(0.0, |best| best.score);
+        let weights: Vec<f64> = arrangements.iter().map(|one| (one.score - top).exp()).collect();
+        let other = average.as_ref().map_or(0.0, |average| (average.score - top).exp());
+        let total: f64 = weights.iter().sum::<f64>() + other;
+        Self {
+            arrangements,
+            probabilities: weights.iter().map(|weight| calibration::calibrated(weight / total)).collect(),
+            average: average.map(|average| (average, other / total)),
+        }
+    }
+
     pub(crate) fn best(&self) -> &Arrangement {
         &self.arrangements[0]
     }
@@ -78,15 +101,46 @@ impl Inferred {
         self.arrangements.get(1)
     }
 
+    /// The probability of the best arrangement.
+    pub(crate) fn probability(&self) -> f64 {
+        self.probabilities.first().copied().unwrap_or(0.0)
+    }
+
     /// How many times as likely the best arrangement is as the second.
     pub(crate) fn ratio(&self) -> Option<f64> {
         self.second().map(|second| (self.best().score - second.score).exp())
     }
 }
 
-/// The logarithm of the published share of a state.
-pub(crate) fn log_share(orbit: &Orbit, state: i64) -> Option<f64> {
-    share(orbit.element, state).map(f64::ln)
+fn env(name: &str, usual: f64) -> f64 {
+    std::env::var(name).ok().and_then(|text| text.parse().ok()).unwrap_or(usual)
+}
+
+/// The logarithm of the prior probability that a group of orbits has these states and no others.
+fn log_prior(element: Element, used: &[i64]) -> Option<f64> {
+    let shares: Option<Vec<f64>> = used.iter().map(|&state| share(element, state)).collect();
+    let logs: Vec<f64> = shares?.into_iter().map(discounted).collect();
+    let mean = logs.iter().sum::<f64>() / f64::from(u32::try_from(logs.len()).ok()?.max(1));
+    let odds = match used[..] {
+        [low, high] if has_gap(element, low, high) => env("MV", MIXED_VALENCE_ODDS) * env("GA", GAP_ODDS),
+        [_, _] => env("MV", MIXED_VALENCE_ODDS),
+        _ => 1.0,
+    };
+    Some(mean - odds.ln())
+}
+
+/// The logarithm of a share. Reports of very rare states are mostly errors, so they count less than their number.
+fn discounted(share: f64) -> f64 {
+    let log = share.ln();
+    log + env("RA", RARE) * (log - UNCOMMON_SHARE.ln()).min(0.0)
+}
+
+/// Whether the states skip one that the element has: +4 and +6 of tungsten. Not for main-group metals and nonmetals,
+/// whose odd states do not exist, nor for Pd, Pt, Ag and Au, which like to go in steps of two.
+fn has_gap(element: Element, low: i64, high: i64) -> bool {
+    high - low > 1
+        && super::electronegativity::octet_need(element).is_none()
+        && !matches!(element.symbol(), "Pd" | "Pt" | "Ag" | "Au" | "Tl" | "In" | "Ga")
 }
 
 /// The best neutral arrangements, without judging how far they are apart.
@@ -104,65 +158,50 @@ pub(crate) fn infer(orbits: &[Orbit], surroundings: Option<&Surroundings>) -> Re
         let message = format!("no oxidation state is tabulated for {}", unknown.iter().join(", "));
         return Err(Diagnostic::error(Code::ChargeElement, message));
     }
-    let found = match surroundings {
-        None => best_arrangements(orbits, &[], log_share, KEPT),
-        Some(surroundings) => with_bonds(orbits, surroundings),
-    };
-    if found.is_empty() { Err(nothing_neutral(orbits)) } else { Ok(Inferred { arrangements: found }) }
+    let evidence = Evidence::new(orbits, surroundings);
+    let found = best_arrangements(orbits, &evidence.kinds, |index, state| evidence.of(index, state), KEPT);
+    let average = average_of(orbits, &evidence);
+    if found.is_empty() { Err(nothing_neutral(orbits, average)) } else { Ok(Inferred::new(found, average)) }
 }
 
-/// The best arrangements with the evidence of the bonds.
-#[expect(clippy::cast_precision_loss, reason = "counts of sites are far below 2^52")]
-fn with_bonds(orbits: &[Orbit], surroundings: &Surroundings) -> Vec<Arrangement> {
-    let kinds: Vec<u64> = (0..orbits.len()).map(|index| kind(surroundings, orbits, index)).collect();
-    let mut evidence: BTreeMap<(usize, i64), f64> = BTreeMap::new();
-    for group in groups(orbits, &kinds) {
-        let total: i64 = group.iter().map(|&index| orbits[index].count()).sum();
-        let number = group.len() as f64;
-        for &index in &group {
-            let orbit = &orbits[index];
-            let Some(&first) = orbit.sites.first() else { continue };
-            // Undoes the weight by multiplicity: bonds are judged orbit by orbit.
-            let weight = EVIDENCE * number.powf(EVIDENCE_GROWTH - 1.0) * total as f64 / orbit.count() as f64;
-            for state in states(orbit.element) {
-                let log = log_likelihood(surroundings, orbits, index, state.charge);
-                evidence.insert((first, state.charge), weight * log);
-            }
+/// What the bonds say about each state of each orbit.
+struct Evidence {
+    kinds: Vec<u64>,
+    logs: Vec<Vec<(i64, f64)>>,
+}
+
+impl Evidence {
+    fn new(orbits: &[Orbit], surroundings: Option<&Surroundings>) -> Self {
+        let Some(surroundings) = surroundings else {
+            return Self { kinds: vec![0; orbits.len()], logs: vec![Vec::new(); orbits.len()] };
+        };
+        let log = |index: usize, state: i64| env("EV", EVIDENCE) * log_likelihood(surroundings, orbits, index, state);
+        let of_orbit = |index: usize| {
+            let list = states(orbits[index].element).iter();
+            list.map(|state| (state.charge, log(index, state.charge))).collect()
+        };
+        Self {
+            kinds: (0..orbits.len()).map(|index| kind(surroundings, orbits, index)).collect(),
+            logs: (0..orbits.len()).map(of_orbit).collect(),
         }
     }
-    let score = |orbit: &Orbit, state: i64| {
-        let bonds = orbit.sites.first().and_then(|&first| evidence.get(&(first, state)));
-        Some(PRIOR * log_share(orbit, state)? + bonds.copied().unwrap_or(0.0))
-    };
-    best_arrangements(orbits, &kinds, score, KEPT)
+
+    fn of(&self, index: usize, state: i64) -> f64 {
+        let known = self.logs.get(index).and_then(|list| list.iter().find(|(other, _)| *other == state));
+        known.map_or(0.0, |(_, log)| *log)
+    }
 }
 
-/// The orbits of each element; orbits are ordered by element.
-fn by_element(orbits: &[Orbit]) -> impl Iterator<Item = &[Orbit]> {
-    orbits.chunk_by(|a, b| a.element == b.element)
-}
-
-fn count(orbits: &[Orbit]) -> i64 {
-    orbits.iter().fold(0, |sum, orbit| sum.saturating_add(orbit.count()))
-}
-
-/// The best `keep` neutral arrangements, best first. `likelihood` gives the logarithm of the likelihood that an orbit
-/// is in a state, or none if it cannot be. Orbits of one element and of equal number in `kinds` belong together: they
-/// are of one state, or of two neighbouring ones.
+/// The best `keep` neutral arrangements, best first. `evidence` gives the logarithm of the likelihood of what is seen of
+/// an orbit in a state. Orbits of one element and of equal number in `kinds` belong together.
 pub(crate) fn best_arrangements(
     orbits: &[Orbit],
     kinds: &[u64],
-    likelihood: impl Fn(&Orbit, i64) -> Option<f64>,
+    evidence: impl Fn(usize, i64) -> f64,
     keep: usize,
 ) -> Vec<Arrangement> {
     let groups = groups(orbits, kinds);
-    let fillings: Vec<_> = groups
-        .iter()
-        .map(|group| {
-            let members: Vec<&Orbit> = group.iter().map(|&index| &orbits[index]).collect();
-            fillings(&members, &likelihood, keep)
-        })
-        .collect();
+    let fillings: Vec<_> = groups.iter().map(|group| fillings(orbits, group, &evidence, keep)).collect();
     let items: Vec<Vec<Choice>> =
         fillings.iter().map(|list| list.iter().map(|filling| filling.choice).collect()).collect();
     let picks = best_picks(&items, keep, Wanted::Total(0)).remove(&0).unwrap_or_default();
@@ -194,16 +233,21 @@ struct Filling {
     states: Vec<i64>,
 }
 
-/// All fillings of an element's orbits with one state; of those with two neighbouring states the best `keep` for each
-/// total charge.
-fn fillings(group: &[&Orbit], likelihood: &impl Fn(&Orbit, i64) -> Option<f64>, keep: usize) -> Vec<Filling> {
-    let Some(element) = group.first().map(|orbit| orbit.element) else { return Vec::new() };
+/// All fillings of a group with one state; of those with two neighbouring states the best `keep` for each total charge.
+fn fillings(
+    orbits: &[Orbit],
+    group: &[usize],
+    evidence: &impl Fn(usize, i64) -> f64,
+    keep: usize,
+) -> Vec<Filling> {
+    let Some(element) = group.first().map(|&index| orbits[index].element) else { return Vec::new() };
     let mut list: Vec<Filling> = states(element)
         .iter()
         .filter_map(|state| {
-            let options = options(group, &[state.charge], likelihood)?;
+            let options = options(orbits, group, &[state.charge], evidence)?;
             let amount = options.iter().try_fold(0_i64, |sum, option| sum.checked_add(option[0].amount))?;
-            let score = options.iter().map(|option| option[0].score).sum();
+            let score = options.iter().map(|option| option[0].score).sum::<f64>();
+            let score = score + log_prior(element, &[state.charge])?;
             Some(Filling { choice: Choice { amount, score }, states: vec![state.charge; group.len()] })
         })
         .collect();
@@ -211,59 +255,41 @@ fn fillings(group: &[&Orbit], likelihood: &impl Fn(&Orbit, i64) -> Option<f64>, 
         return list;
     }
     for (low, high) in neighbours(element) {
-        let Some(options) = options(group, &[low, high], likelihood) else { continue };
-        for (amount, picks) in best_picks(&options, keep, Wanted::Any) {
-            list.extend(picks.into_iter().filter(|pick| !pick.choices.iter().all_equal()).map(|pick| {
-                Filling {
-                    choice: Choice { amount, score: pick.score - MIXED_VALENCE_ODDS.ln() },
-                    states: pick.choices.iter().map(|&choice| [low, high][choice.min(1)]).collect(),
-                }
+        let prior = log_prior(element, &[low, high]);
+        let (Some(options), Some(prior)) = (options(orbits, group, &[low, high], evidence), prior) else {
+            continue;
+        };
+        for (amount, picks) in best_picks(&options, keep + 1, Wanted::Any) {
+            let mixed = picks.into_iter().filter(|pick| !pick.choices.iter().all_equal());
+            list.extend(mixed.take(keep).map(|pick| Filling {
+                choice: Choice { amount, score: pick.score + prior },
+                states: pick.choices.iter().map(|&choice| [low, high][choice.min(1)]).collect(),
             }));
         }
     }
     list
 }
 
-/// What each state adds to charge and score of each orbit; none if an orbit cannot be in one of them.
-#[expect(clippy::cast_precision_loss, reason = "counts of sites are far below 2^52")]
+/// What each state adds to charge and score of each orbit; none if a charge leaves `i64`.
 fn options(
-    group: &[&Orbit],
+    orbits: &[Orbit],
+    group: &[usize],
     states: &[i64],
-    likelihood: &impl Fn(&Orbit, i64) -> Option<f64>,
+    evidence: &impl Fn(usize, i64) -> f64,
 ) -> Option<Vec<Vec<Choice>>> {
-    let total = group.iter().fold(0_i64, |sum, orbit| sum.saturating_add(orbit.count())) as f64;
-    let choice = |orbit: &Orbit, state: i64| {
-        let amount = state.checked_mul(orbit.count())?;
-        let score = likelihood(orbit, state)? * (orbit.count() as f64 / total);
-        Some(Choice { amount, score })
+    let choice = |index: usize, state: i64| {
+        let amount = state.checked_mul(orbits[index].count())?;
+        Some(Choice { amount, score: evidence(index, state) })
     };
-    group.iter().map(|orbit| states.iter().map(|&state| choice(orbit, state)).collect()).collect()
+    group.iter().map(|&index| states.iter().map(|&state| choice(index, state)).collect()).collect()
 }
 
 /// The refusal when no arrangement is neutral: it names the element that an average would save, if there is one.
-fn nothing_neutral(orbits: &[Orbit]) -> Diagnostic {
-    let groups: Vec<&[Orbit]> = by_element(orbits).collect();
-    let averages = groups.iter().filter_map(|group| average(&groups, group));
-    if let Some(average) = averages.max_by(|a, b| a.score.total_cmp(&b.score)) {
-        let labels = average.group.iter().map(|orbit| orbit.label.as_str());
-        let (numerator, denominator) = average.value;
-        let limit = if average.group.len() > MAX_MIXED_ORBITS {
-            format!("; an element on more than {MAX_MIXED_ORBITS} sets is given one charge")
-        } else {
-            String::new()
-        };
-        return Diagnostic::error(
-            Code::ChargeAveraged,
-            format!(
-                "a neutral cell needs an average charge of {numerator}/{denominator} on {} ({} of equivalent sites: {}), \
-                 and equivalent sites must carry one whole charge{limit}",
-                average.group.first().map_or("", |orbit| orbit.element.symbol()),
-                plural(average.group.len(), "set"),
-                super::listing(labels),
-            ),
-        );
+fn nothing_neutral(orbits: &[Orbit], average: Option<Average>) -> Diagnostic {
+    if let Some(average) = average {
+        return average.refusal(orbits);
     }
-    let known = groups.iter().filter_map(|group| group.first()).map(|orbit| orbit.element);
+    let known = orbits.iter().map(|orbit| orbit.element).dedup();
     let known = known.map(|element| {
         format!("{element} ({})", states(element).iter().map(|state| format!("{:+}", state.charge)).join(" "))
     });
@@ -275,29 +301,80 @@ fn plural(count: usize, noun: &str) -> String {
     if count == 1 { format!("1 {noun}") } else { format!("{count} {noun}s") }
 }
 
-struct Average<'a> {
-    group: &'a [Orbit],
+/// A fractional charge of one element that makes the cell neutral.
+#[derive(Debug, Clone, PartialEq)]
+pub(crate) struct Average {
+    /// Indices of the orbits of the element.
+    group: Vec<usize>,
+    /// Numerator and denominator.
     value: (i64, i64),
-    score: f64,
+    pub(crate) score: f64,
 }
 
-/// The most likely fractional charge between two neighbouring states of one sign that makes the cell neutral when every other
-/// element has one whole state.
+impl Average {
+    /// The refusal that names the average.
+    pub(crate) fn refusal(&self, orbits: &[Orbit]) -> Diagnostic {
+        let labels = self.group.iter().map(|&index| orbits[index].label.as_str());
+        let (numerator, denominator) = self.value;
+        let limit = if self.group.len() > MAX_MIXED_ORBITS {
+            format!("; an element on more than {MAX_MIXED_ORBITS} sets is given one charge")
+        } else {
+            String::new()
+        };
+        Diagnostic::error(
+            Code::ChargeAveraged,
+            format!(
+                "a neutral cell needs an average charge of {numerator}/{denominator} on {} ({} of equivalent sites: {}), \
+                 and equivalent sites must carry one whole charge{limit}",
+                self.group.first().map_or("", |&index| orbits[index].element.symbol()),
+                plural(self.group.len(), "set"),
+                super::listing(labels),
+            ),
+        )
+    }
+}
+
+/// The most likely fractional charge of one group between two neighbouring states of one sign that makes the cell
+/// neutral when every other group has one whole state.
+fn average_of(orbits: &[Orbit], evidence: &Evidence) -> Option<Average> {
+    let groups = groups(orbits, &evidence.kinds);
+    let whole: Vec<Vec<Choice>> = groups.iter().map(|group| whole_choices(orbits, group, evidence)).collect();
+    let found = (0..groups.len()).filter_map(|index| average(orbits, &groups, &whole, evidence, index));
+    found.max_by(|a, b| a.score.total_cmp(&b.score))
+}
+
+fn count(orbits: &[Orbit], group: &[usize]) -> i64 {
+    group.iter().fold(0, |sum, &index| sum.saturating_add(orbits[index].count()))
+}
+
+/// The logarithm of the likelihood that a whole group is in a state.
+fn log_group(group: &[usize], evidence: &Evidence, state: i64) -> f64 {
+    group.iter().map(|&index| evidence.of(index, state)).sum()
+}
+
+fn whole_choices(orbits: &[Orbit], group: &[usize], evidence: &Evidence) -> Vec<Choice> {
+    let Some(element) = group.first().map(|&index| orbits[index].element) else { return Vec::new() };
+    let choice = |charge: i64| {
+        let amount = charge.checked_mul(count(orbits, group))?;
+        let score = log_prior(element, &[charge])? + log_group(group, evidence, charge);
+        Some(Choice { amount, score })
+    };
+    states(element).iter().filter_map(|state| choice(state.charge)).collect()
+}
+
 #[expect(clippy::cast_precision_loss, reason = "charges and counts of sites are far below 2^52")]
-fn average<'a>(groups: &[&'a [Orbit]], group: &'a [Orbit]) -> Option<Average<'a>> {
-    let element = group.first()?.element;
-    let number = count(group);
-    let others: Vec<Vec<Choice>> = groups
-        .iter()
-        .filter(|other| other.first().map(|orbit| orbit.element) != Some(element))
-        .map(|other| {
-            let first = other.first()?;
-            let choice = |charge: i64| {
-                Some(Choice { amount: charge.checked_mul(count(other))?, score: log_share(first, charge)? })
-            };
-            Some(states(first.element).iter().filter_map(|state| choice(state.charge)).collect())
-        })
-        .collect::<Option<_>>()?;
+fn average(
+    orbits: &[Orbit],
+    groups: &[Vec<usize>],
+    whole: &[Vec<Choice>],
+    evidence: &Evidence,
+    index: usize,
+) -> Option<Average> {
+    let group = groups.get(index)?;
+    let element = group.first().map(|&first| orbits[first].element)?;
+    let number = count(orbits, group);
+    let others: Vec<Vec<Choice>> =
+        whole.iter().enumerate().filter(|(other, _)| *other != index).map(|(_, list)| list.clone()).collect();
     let mut best: Option<Average> = None;
     for (sum, picks) in best_picks(&others, 1, Wanted::Any) {
         let (Some(pick), Some(needed)) = (picks.first(), sum.checked_neg()) else { continue };
@@ -311,11 +388,16 @@ fn average<'a>(groups: &[&'a [Orbit]], group: &'a [Orbit]) -> Option<Average<'a>
             if !(0.0..=1.0).contains(&part) {
                 continue;
             }
-            let (Some(low), Some(high)) = (share(element, low), share(element, high)) else { continue };
-            let score = pick.score + (1.0 - part) * low.ln() + part * high.ln();
+            let Some(prior) = log_prior(element, &[low, high]) else { continue };
+            let bonds = (1.0 - part) * log_group(group, evidence, low) + part * log_group(group, evidence, high);
+            let score = pick.score + prior + bonds - env("AV", AVERAGE_ODDS).ln();
             if best.as_ref().is_none_or(|best| score > best.score) {
                 let divisor = num_integer::gcd(needed, number);
-                best = Some(Average { group, value: (needed / divisor, number / divisor), score });
+                best = Some(Average {
+                    group: group.clone(),
+                    value: (needed / divisor, number / divisor),
+                    score,
+                });
             }
         }
     }
@@ -323,7 +405,7 @@ fn average<'a>(groups: &[&'a [Orbit]], group: &'a [Orbit]) -> Option<Average<'a>
 }
 
 /// A note that charges were inferred, a warning where a state is uncommon or an element carries several.
-pub(crate) fn remarks(orbits: &[Orbit], arrangement: &Arrangement) -> Vec<Diagnostic> {
+pub(crate) fn remarks(orbits: &[Orbit], arrangement: &Arrangement, has_bonds: bool) -> Vec<Diagnostic> {
     let pairs = || orbits.iter().zip(&arrangement.states).map(|(orbit, &state)| (orbit, state));
     let uncommon: Vec<String> = pairs()
         .map(|(orbit, state)| (orbit.element, state))
@@ -332,7 +414,11 @@ pub(crate) fn remarks(orbits: &[Orbit], arrangement: &Arrangement) -> Vec<Diagno
         .filter(|(_, _, share)| *share < UNCOMMON_SHARE)
         .map(|(element, state, share)| format!("{element} {state:+} ({:.2} %)", share * 100.0))
         .collect();
-    let inferred = "charges were inferred from the composition alone";
+    let inferred = if has_bonds {
+        "charges were inferred from composition and bond lengths"
+    } else {
+        "charges were inferred from the composition alone"
+    };
     let mut remarks = vec![if uncommon.is_empty() {
         Diagnostic::note(Code::ChargeInferred, inferred)
     } else {
@@ -385,10 +471,7 @@ mod tests {
     }
 
     /// All arrangements written out: every orbit in every state, the rules of the module applied afterwards.
-    fn by_enumeration(orbits: &[Orbit], likelihood: impl Fn(&Orbit, i64) -> Option<f64>) -> Vec<Arrangement> {
-        let total = |element: Element| -> i64 {
-            orbits.iter().filter(|orbit| orbit.element == element).map(Orbit::count).sum()
-        };
+    fn by_enumeration(orbits: &[Orbit], evidence: impl Fn(usize, i64) -> f64) -> Vec<Arrangement> {
         orbits
             .iter()
             .map(|orbit| states(orbit.element).iter().map(|state| state.charge))
@@ -397,26 +480,16 @@ mod tests {
                 orbits.iter().zip(states).map(|(orbit, state)| orbit.count() * state).sum::<i64>() == 0
             })
             .filter_map(|states| {
-                let mut score = 0.0;
-                for (orbit, &state) in orbits.iter().zip(&states) {
-                    let weight = f64::from(i32::try_from(orbit.count()).ok()?)
-                        / f64::from(i32::try_from(total(orbit.element)).ok()?);
-                    score += weight * likelihood(orbit, state)?;
-                }
+                let mut score: f64 = states.iter().enumerate().map(|(index, &state)| evidence(index, state)).sum();
                 for element in orbits.iter().map(|orbit| orbit.element).unique() {
-                    let used: Vec<i64> = orbits
-                        .iter()
-                        .zip(&states)
-                        .filter(|(orbit, _)| orbit.element == element)
-                        .map(|(_, state)| *state)
-                        .unique()
-                        .sorted()
-                        .collect();
+                    let of_element = orbits.iter().zip(&states).filter(|(orbit, _)| orbit.element == element);
+                    let used: Vec<i64> = of_element.map(|(_, state)| *state).unique().sorted().collect();
                     match used[..] {
                         [_] => {}
-                        [low, high] if neighbours(element).contains(&(low, high)) => score -= 20_f64.ln(),
+                        [low, high] if neighbours(element).contains(&(low, high)) => {}
                         _ => return None,
                     }
+                    score += log_prior(element, &used)?;
                 }
                 Some(Arrangement { score, states })
             })
@@ -433,15 +506,15 @@ mod tests {
         #![proptest_config(ProptestConfig::with_cases(64))]
         #[test]
         fn agrees_with_enumeration(orbits in crystals(), seed in 0..1000_u32) {
-            // With the published shares, and with shares that also depend on the orbit.
-            let skewed = |orbit: &Orbit, state: i64| {
-                let letters: u32 = orbit.label.bytes().map(u32::from).sum();
-                let digit = (letters * 31 + seed * 17 + u32::try_from(state.unsigned_abs()).unwrap_or(0) * 7) % 13;
-                log_share(orbit, state).map(|score| score - f64::from(digit))
+            // With nothing but the published shares, and with evidence that depends on the orbit.
+            let evidence = |index: usize, state: i64| {
+                let number = u32::try_from(index).unwrap_or(0) * 31 + seed * 17;
+                let digit = (number + u32::try_from(state.unsigned_abs()).unwrap_or(0) * 7) % 13;
+                -f64::from(digit)
             };
             let pairs = [
-                (best_arrangements(&orbits, &[], log_share, 3), by_enumeration(&orbits, log_share)),
-                (best_arrangements(&orbits, &[], skewed, 3), by_enumeration(&orbits, skewed)),
+                (best_arrangements(&orbits, &[], |_, _| 0.0, 3), by_enumeration(&orbits, |_, _| 0.0)),
+                (best_arrangements(&orbits, &[], evidence, 3), by_enumeration(&orbits, evidence)),
             ];
             for (found, all) in pairs {
                 prop_assert_eq!(found.len(), all.len().min(3));
@@ -490,13 +563,13 @@ mod tests {
     fn uncommon_and_mixed_states_are_remarked() {
         let peroxide = orbits(&[("Na", 2), ("O", 2)]);
         let found = infer(&peroxide, None).expect("Na2O2");
-        let said = remarks(&peroxide, found.best());
+        let said = remarks(&peroxide, found.best(), false);
         assert!(said[0].message.contains("O -1 (0.44 %)"), "{}", said[0].message);
         // Co3O4, normal spinel with +2 on the tetrahedral site (Greenwood & Earnshaw, from memory).
         let spinel = orbits(&[("Co", 2), ("Co", 4), ("O", 8)]);
         let found = infer(&spinel, None).expect("Co3O4");
         assert_eq!(found.best().states, [-2, 2, 3]);
-        let said = remarks(&spinel, found.best());
+        let said = remarks(&spinel, found.best(), false);
         assert_eq!(said[1].code, Code::ChargeMixedValence);
         assert_eq!(said[1].message, "Co was given several charges: +2 on Co0; +3 on Co1");
     }

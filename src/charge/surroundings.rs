@@ -189,12 +189,17 @@ fn homonuclear_bonds(
     let like = near.filter(|&(partner, _)| orbits[partner].element == element).map(|(_, distance)| distance);
     let distances: Vec<f64> = like.collect();
     environments[index].nearest_like = distances.first().copied();
-    if element == Element::HYDROGEN || octet_need(element).is_none() {
+    if element == Element::HYDROGEN || (octet_need(element).is_none() && !pairs_up(element)) {
         return;
     }
     let Some(pair) = single_bond(element) else { return };
     let valences = distances.iter().map(|&distance| pair.valence(distance));
     environments[index].homonuclear = valences.take_while(|&valence| valence >= HOMONUCLEAR).sum();
+}
+
+/// Metals that bond to their like in pairs, as in `Hg2Cl2` and `GaSe`.
+fn pairs_up(element: Element) -> bool {
+    matches!(element.symbol(), "Ga" | "In" | "Tl" | "Hg" | "Cd" | "Zn")
 }
 
 /// Finds the coordination shell of an orbit and books its bonds on both sides.

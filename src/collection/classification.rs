@@ -1,6 +1,6 @@
 //! From the content of a file to a label: reads, expands, searches symmetry, assigns charges, sums the polarization.
 
-use crate::charge::{self, Assignment, Given, Known};
+use crate::charge::{self, Assignment, Given, Known, Parameters};
 use crate::cif;
 use crate::crystal::{AsymmetricUnit, Crystal, ExpandTolerance, Formula};
 use crate::diagnostic::{Code, Diagnostic};
@@ -220,7 +220,7 @@ fn run(
     work.centres = Centres::find(primitive)?;
     let assignment = match known {
         Known::Settled(assignment) => assignment,
-        Known::Open(remark) => charge::infer(&crystal.sites, &symmetry.orbits, Some(&crystal.lattice), remark)?,
+        Known::Open(remark) => charge::infer(&crystal.sites, &symmetry.orbits, Some((&crystal.lattice, Parameters::standard())), remark)?,
     };
     let charges: Vec<i64> = primitive.representatives.iter().map(|&site| assignment.charges[site]).collect();
     work.diagnostics.extend(assignment.diagnostics.iter().cloned());
