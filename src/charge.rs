@@ -20,6 +20,7 @@ mod inferred;
 mod neutral;
 mod orbit;
 mod parameters;
+mod sense;
 mod stated;
 mod states;
 mod surroundings;

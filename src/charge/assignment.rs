@@ -6,6 +6,7 @@ use super::evidence::is_bare_ammonium;
 use super::inferred::{self, Inferred, MIN_LIKELIHOOD_RATIO, MIN_PROBABILITY};
 use super::orbit::Orbit;
 use super::parameters::Parameters;
+use super::sense;
 use super::surroundings::Surroundings;
 use crate::cell::Lattice;
 use super::stated::{self, Stated};
@@ -24,7 +25,7 @@ pub enum Source {
     /// Stated by the file.
     #[serde(rename = "file")]
     Stated,
-    /// Inferred from the composition.
+    /// Inferred from composition and bonds.
     #[serde(rename = "inferred")]
     Inferred,
 }
@@ -36,7 +37,7 @@ impl Source {
         match self {
             Self::Given => "given on the command line",
             Self::Stated => "stated by the file",
-            Self::Inferred => "inferred from the composition; --charges fixes them",
+            Self::Inferred => "inferred; --charges fixes them",
         }
     }
 }
@@ -305,7 +306,7 @@ pub fn infer(
     }
     let is_settled = match margin {
         Some(margin) if surroundings.is_none() => margin >= MIN_LIKELIHOOD_RATIO,
-        _ => found.probability() >= min_probability(),
+        _ => found.probability() >= MIN_PROBABILITY,
     };
     if let (Some(runner_up), Some(margin), false) = (&runner_up, margin, is_settled) {
         return Err(ambiguous(sites, &charges, runner_up, margin, &found));
@@ -315,12 +316,9 @@ pub fn infer(
     if let Some(surroundings) = &surroundings {
         diagnostics.extend(bare_ammonium(orbits, surroundings));
     }
+    diagnostics.extend(sense::remarks(orbits, &found.best().states));
     let reasoning = Some(Reasoning::new(orbits, &found, surroundings.as_ref()));
     Ok(Assignment { charges, source: Source::Inferred, diagnostics, reasoning, runner_up, margin })
-}
-
-fn min_probability() -> f64 {
-    std::env::var("MP").ok().and_then(|t| t.parse().ok()).unwrap_or(MIN_PROBABILITY)
 }
 
 /// A warning where ammonium ions lack their hydrogen atoms.

@@ -31,23 +31,24 @@ use crate::diagnostic::{Code, Diagnostic};
 use itertools::Itertools;
 
 /// An assignment is refused below this probability.
-pub const MIN_PROBABILITY: f64 = 0.4;
+pub const MIN_PROBABILITY: f64 = 0.5;
 
 /// Without bond lengths the best arrangement of states must be this many times as likely as the second best.
 pub const MIN_LIKELIHOOD_RATIO: f64 = 2.0;
 
-/// Prior odds against a second state of one element; about one oxide in twenty is of mixed valence.
-const MIXED_VALENCE_ODDS: f64 = 20.0;
+/// Prior odds against a second state of one element; one oxide in twenty is of mixed valence, more among
+/// those whose elements allow it. Fitted.
+const MIXED_VALENCE_ODDS: f64 = 10.0;
 
 /// Further odds against two states of a metal with a known one between them.
 const GAP_ODDS: f64 = 5.0;
 
 /// Odds against a charge that is shared between equivalent sites, beside those of mixed valence.
-const AVERAGE_ODDS: f64 = 5.0;
+const AVERAGE_ODDS: f64 = 20.0;
 
 /// Weight of the evidence of the bonds: sums of neighbouring orbits share bonds, so they count less than independent
 /// ones would. Fitted.
-const EVIDENCE: f64 = 0.7;
+const EVIDENCE: f64 = 0.8;
 
 /// How much more than their logarithm the shares below [`UNCOMMON_SHARE`] count.
 const RARE: f64 = 1.0;
@@ -112,18 +113,14 @@ impl Inferred {
     }
 }
 
-fn env(name: &str, usual: f64) -> f64 {
-    std::env::var(name).ok().and_then(|text| text.parse().ok()).unwrap_or(usual)
-}
-
 /// The logarithm of the prior probability that a group of orbits has these states and no others.
 fn log_prior(element: Element, used: &[i64]) -> Option<f64> {
     let shares: Option<Vec<f64>> = used.iter().map(|&state| share(element, state)).collect();
     let logs: Vec<f64> = shares?.into_iter().map(discounted).collect();
     let mean = logs.iter().sum::<f64>() / f64::from(u32::try_from(logs.len()).ok()?.max(1));
     let odds = match used[..] {
-        [low, high] if has_gap(element, low, high) => env("MV", MIXED_VALENCE_ODDS) * env("GA", GAP_ODDS),
-        [_, _] => env("MV", MIXED_VALENCE_ODDS),
+        [low, high] if has_gap(element, low, high) => MIXED_VALENCE_ODDS * GAP_ODDS,
+        [_, _] => MIXED_VALENCE_ODDS,
         _ => 1.0,
     };
     Some(mean - odds.ln())
@@ -132,7 +129,7 @@ fn log_prior(element: Element, used: &[i64]) -> Option<f64> {
 /// The logarithm of a share. Reports of very rare states are mostly errors, so they count less than their number.
 fn discounted(share: f64) -> f64 {
     let log = share.ln();
-    log + env("RA", RARE) * (log - UNCOMMON_SHARE.ln()).min(0.0)
+    log + RARE * (log - UNCOMMON_SHARE.ln()).min(0.0)
 }
 
 /// Whether the states skip one that the element has: +4 and +6 of tungsten. Not for main-group metals and nonmetals,
@@ -175,7 +172,7 @@ impl Evidence {
         let Some(surroundings) = surroundings else {
             return Self { kinds: vec![0; orbits.len()], logs: vec![Vec::new(); orbits.len()] };
         };
-        let log = |index: usize, state: i64| env("EV", EVIDENCE) * log_likelihood(surroundings, orbits, index, state);
+        let log = |index: usize, state: i64| EVIDENCE * log_likelihood(surroundings, orbits, index, state);
         let of_orbit = |index: usize| {
             let list = states(orbits[index].element).iter();
             list.map(|state| (state.charge, log(index, state.charge))).collect()
@@ -390,7 +387,7 @@ fn average(
             }
             let Some(prior) = log_prior(element, &[low, high]) else { continue };
             let bonds = (1.0 - part) * log_group(group, evidence, low) + part * log_group(group, evidence, high);
-            let score = pick.score + prior + bonds - env("AV", AVERAGE_ODDS).ln();
+            let score = pick.score + prior + bonds - AVERAGE_ODDS.ln();
             if best.as_ref().is_none_or(|best| score > best.score) {
                 let divisor = num_integer::gcd(needed, number);
                 best = Some(Average {
