@@ -31,7 +31,7 @@ use crate::diagnostic::{Code, Diagnostic};
 use itertools::Itertools;
 
 /// An assignment is refused below this probability.
-pub const MIN_PROBABILITY: f64 = 0.5;
+pub const MIN_PROBABILITY: f64 = 0.4;
 
 /// Without bond lengths the best arrangement of states must be this many times as likely as the second best.
 pub const MIN_LIKELIHOOD_RATIO: f64 = 2.0;

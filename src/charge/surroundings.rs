@@ -67,7 +67,7 @@ pub(crate) struct Environment {
 
 /// The bonds of all orbits of a cell.
 #[derive(Debug, Clone, PartialEq)]
-pub struct Surroundings {
+pub(crate) struct Surroundings {
     pub(crate) environments: Vec<Environment>,
     pub(crate) parameters: Parameters,
 }

@@ -14,7 +14,7 @@ use std::fs::File;
 use std::io::{BufRead, BufReader};
 use std::path::PathBuf;
 
-pub(crate) fn data() -> PathBuf {
+fn data() -> PathBuf {
     PathBuf::from(std::env::var_os("COSETTA_DATA").expect("COSETTA_DATA names the folder of the data sets"))
 }
 
@@ -24,7 +24,7 @@ pub(crate) fn data() -> PathBuf {
 pub(crate) struct Labelled {
     pub(crate) id: String,
     cell: [f64; 6],
-    elements: Vec<String>,
+    pub(crate) elements: Vec<String>,
     frac: Vec<[f64; 3]>,
     pub(crate) valence: Vec<f64>,
     pub(crate) reduced_formula: String,
