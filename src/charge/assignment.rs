@@ -313,6 +313,10 @@ pub fn infer(
     }
     let mut diagnostics: Vec<Diagnostic> = remark.into_iter().collect();
     diagnostics.extend(inferred::remarks(orbits, found.best(), surroundings.is_some()));
+    if !found.is_exact {
+        let message = "the search for charges was cut short: a better assignment may exist";
+        diagnostics.push(Diagnostic::warning(Code::ChargeSearch, message));
+    }
     if let Some(surroundings) = &surroundings {
         diagnostics.extend(bare_ammonium(orbits, surroundings));
     }

@@ -14,9 +14,10 @@
 //! states, which must be neighbours (see `neighbours`), at odds of [`MIXED_VALENCE_ODDS`]; states more than one apart
 //! at longer odds where the element is known to have the one between.
 //!
-//! Of all neutral arrangements the best are found exactly, by dynamic programming over the total charge (see
-//! `neutral`): the work grows with orbits × states × distinct totals, and nothing is cut off but groups of more than
-//! [`MAX_MIXED_ORBITS`] orbits, which are given one state throughout. The probability of an arrangement is its share
+//! Of all neutral arrangements the best are found by dynamic programming over the total charge (see `neutral`): the work
+//! grows with orbits × states × distinct totals. Groups of more than [`MAX_MIXED_ORBITS`] orbits are given one state
+//! throughout; what else is left out to bound the time is known to score below a bound, and where the best found
+//! does not reach that bound the answer says so. The probability of an arrangement is its share
 //! among the [`KEPT`] best, with the case that one element has no whole charge at all as one more; how well it holds
 //! is measured, see DEVELOPERS.md.
 
@@ -44,7 +45,7 @@ const MIXED_VALENCE_ODDS: f64 = 10.0;
 const GAP_ODDS: f64 = 5.0;
 
 /// Odds against a charge that is shared between equivalent sites, beside those of mixed valence.
-const AVERAGE_ODDS: f64 = 20.0;
+const AVERAGE_ODDS: f64 = 10.0;
 
 /// Weight of the evidence of the bonds: sums of neighbouring orbits share bonds, so they count less than independent
 /// ones would. Fitted.
@@ -79,10 +80,12 @@ pub(crate) struct Inferred {
     pub(crate) probabilities: Vec<f64>,
     /// The best case with an averaged charge, if there is one, and its probability.
     pub(crate) average: Option<(Average, f64)>,
+    /// Whether no arrangement that was not looked at can be better than the best.
+    pub(crate) is_exact: bool,
 }
 
 impl Inferred {
-    fn new(arrangements: Vec<Arrangement>, average: Option<Average>) -> Self {
+    fn new(arrangements: Vec<Arrangement>, bound: f64, average: Option<Average>) -> Self {
         let top = arrangements.first().map_or(0.0, |best| best.score);
         let weights: Vec<f64> = arrangements.iter().map(|one| (one.score - top).exp()).collect();
         let other = average.as_ref().map_or(0.0, |average| (average.score - top).exp());
@@ -91,6 +94,7 @@ impl Inferred {
             arrangements,
             probabilities: weights.iter().map(|weight| calibration::calibrated(weight / total)).collect(),
             average: average.map(|average| (average, other / total)),
+            is_exact: top >= bound,
         }
     }
 
@@ -156,9 +160,10 @@ pub(crate) fn infer(orbits: &[Orbit], surroundings: Option<&Surroundings>) -> Re
         return Err(Diagnostic::error(Code::ChargeElement, message));
     }
     let evidence = Evidence::new(orbits, surroundings);
-    let found = best_arrangements(orbits, &evidence.kinds, |index, state| evidence.of(index, state), KEPT);
+    let (found, bound) =
+        best_arrangements(orbits, &evidence.kinds, |index, state| evidence.of(index, state), KEPT);
     let average = average_of(orbits, &evidence);
-    if found.is_empty() { Err(nothing_neutral(orbits, average)) } else { Ok(Inferred::new(found, average)) }
+    if found.is_empty() { Err(nothing_neutral(orbits, average)) } else { Ok(Inferred::new(found, bound, average)) }
 }
 
 /// What the bonds say about each state of each orbit.
@@ -189,24 +194,68 @@ impl Evidence {
     }
 }
 
-/// The best `keep` neutral arrangements, best first. `evidence` gives the logarithm of the likelihood of what is seen of
-/// an orbit in a state. Orbits of one element and of equal number in `kinds` belong together.
+/// The best `keep` neutral arrangements, best first, and an upper bound of the score of all that were not looked at.
+/// `evidence` gives the logarithm of the likelihood of what is seen of an orbit in a state. Orbits of one element and of
+/// equal number in `kinds` belong together.
+///
+/// Fillings of a group that are [`SLACK`] below its best are looked at only if the arrangements found without them could
+/// be beaten; more than [`MAX_FILLINGS`] of one group never are, which keeps the time within bounds.
 pub(crate) fn best_arrangements(
     orbits: &[Orbit],
     kinds: &[u64],
     evidence: impl Fn(usize, i64) -> f64,
     keep: usize,
-) -> Vec<Arrangement> {
+) -> (Vec<Arrangement>, f64) {
     let groups = groups(orbits, kinds);
-    let fillings: Vec<_> = groups.iter().map(|group| fillings(orbits, group, &evidence, keep)).collect();
+    let mut fillings: Vec<_> = groups.iter().map(|group| fillings(orbits, group, &evidence, keep)).collect();
+    for list in &mut fillings {
+        list.sort_by(|a, b| b.choice.score.total_cmp(&a.choice.score));
+    }
+    let (near, bound) = shortened(&fillings, SLACK);
+    let found = arrangements(orbits.len(), &groups, &near, keep);
+    if found.len() == keep && found.iter().all(|one| one.score >= bound) {
+        return (found, bound);
+    }
+    let (all, bound) = shortened(&fillings, f64::INFINITY);
+    (arrangements(orbits.len(), &groups, &all, keep), bound)
+}
+
+/// Fillings this far below the best of their group are set aside at first.
+const SLACK: f64 = 25.0;
+
+/// No more fillings of one group than this are looked at.
+const MAX_FILLINGS: usize = 200;
+
+/// The fillings near the best of each group, and the highest score that an arrangement with another one can have.
+fn shortened(fillings: &[Vec<Filling>], slack: f64) -> (Vec<&[Filling]>, f64) {
+    let best = |list: &[Filling]| list.first().map_or(f64::NEG_INFINITY, |filling| filling.choice.score);
+    let sum: f64 = fillings.iter().map(|list| best(list)).sum();
+    let mut bound = f64::NEG_INFINITY;
+    let kept = fillings.iter().map(|list| {
+        let near = list.partition_point(|filling| filling.choice.score >= best(list) - slack);
+        let near = near.min(MAX_FILLINGS);
+        if let Some(next) = list.get(near) {
+            bound = bound.max(sum - best(list) + next.choice.score);
+        }
+        &list[..near]
+    });
+    (kept.collect(), bound)
+}
+
+fn arrangements(
+    number: usize,
+    groups: &[Vec<usize>],
+    fillings: &[&[Filling]],
+    keep: usize,
+) -> Vec<Arrangement> {
     let items: Vec<Vec<Choice>> =
         fillings.iter().map(|list| list.iter().map(|filling| filling.choice).collect()).collect();
     let picks = best_picks(&items, keep, Wanted::Total(0)).remove(&0).unwrap_or_default();
     picks
         .into_iter()
         .map(|pick| {
-            let mut states = vec![0; orbits.len()];
-            for ((group, list), &choice) in groups.iter().zip(&fillings).zip(&pick.choices) {
+            let mut states = vec![0; number];
+            for ((group, list), &choice) in groups.iter().zip(fillings).zip(&pick.choices) {
                 for (&index, &state) in group.iter().zip(&list[choice].states) {
                     states[index] = state;
                 }
@@ -336,7 +385,15 @@ impl Average {
 fn average_of(orbits: &[Orbit], evidence: &Evidence) -> Option<Average> {
     let groups = groups(orbits, &evidence.kinds);
     let whole: Vec<Vec<Choice>> = groups.iter().map(|group| whole_choices(orbits, group, evidence)).collect();
-    let found = (0..groups.len()).filter_map(|index| average(orbits, &groups, &whole, evidence, index));
+    let found = (0..groups.len()).flat_map(|index| {
+        let others: Vec<Vec<Choice>> =
+            (0..whole.len()).filter(|&one| one != index).map(|one| whole[one].clone()).collect();
+        let picks = best_picks(&others, 1, Wanted::Any).into_iter();
+        let sums: Vec<Choice> = picks
+            .filter_map(|(amount, picks)| picks.first().map(|pick| Choice { amount, score: pick.score }))
+            .collect();
+        averages(orbits, &groups[index], &sums, evidence)
+    });
     found.max_by(|a, b| a.score.total_cmp(&b.score))
 }
 
@@ -359,43 +416,61 @@ fn whole_choices(orbits: &[Orbit], group: &[usize], evidence: &Evidence) -> Vec<
     states(element).iter().filter_map(|state| choice(state.charge)).collect()
 }
 
+/// Groups of more orbits than this are averaged as a whole only.
+const MAX_AVERAGED_ORBITS: usize = 4;
+
+/// The averages of a whole group, and of one of its orbits while the others carry whole charges. `sums` holds the total
+/// charges of everything else.
+fn averages(orbits: &[Orbit], group: &[usize], sums: &[Choice], evidence: &Evidence) -> Vec<Average> {
+    let Some(element) = group.first().map(|&first| orbits[first].element) else { return Vec::new() };
+    let mut found = Vec::new();
+    // An average of a positive and a negative state is no mixed valence.
+    for pair in neighbours(element).into_iter().filter(|(low, high)| low.signum() == high.signum()) {
+        let nothing = Choice { amount: 0, score: 0.0 };
+        found.extend(average(orbits, group, sums, evidence, pair, nothing));
+        if !(2..=MAX_AVERAGED_ORBITS).contains(&group.len()) {
+            continue;
+        }
+        for &index in group {
+            let rest = group.iter().copied().filter(|&other| other != index);
+            for states in rest.clone().map(|_| [pair.0, pair.1]).multi_cartesian_product() {
+                let pairs = || rest.clone().zip(&states);
+                let amount = pairs()
+                    .fold(0_i64, |sum, (one, &state)| sum.saturating_add(state.saturating_mul(orbits[one].count())));
+                let score = pairs().map(|(one, &state)| evidence.of(one, state)).sum();
+                found.extend(average(orbits, &[index], sums, evidence, pair, Choice { amount, score }));
+            }
+        }
+    }
+    found
+}
+
+/// The most likely average of these orbits between two states. `sums` and `rest` are what everything else may add.
 #[expect(clippy::cast_precision_loss, reason = "charges and counts of sites are far below 2^52")]
 fn average(
     orbits: &[Orbit],
-    groups: &[Vec<usize>],
-    whole: &[Vec<Choice>],
+    group: &[usize],
+    sums: &[Choice],
     evidence: &Evidence,
-    index: usize,
+    (low, high): (i64, i64),
+    rest: Choice,
 ) -> Option<Average> {
-    let group = groups.get(index)?;
     let element = group.first().map(|&first| orbits[first].element)?;
     let number = count(orbits, group);
-    let others: Vec<Vec<Choice>> =
-        whole.iter().enumerate().filter(|(other, _)| *other != index).map(|(_, list)| list.clone()).collect();
+    let prior = log_prior(element, &[low, high])? - AVERAGE_ODDS.ln() + rest.score;
+    let (bonds_low, bonds_high) = (log_group(group, evidence, low), log_group(group, evidence, high));
     let mut best: Option<Average> = None;
-    for (sum, picks) in best_picks(&others, 1, Wanted::Any) {
-        let (Some(pick), Some(needed)) = (picks.first(), sum.checked_neg()) else { continue };
-        if needed % number == 0 {
+    for sum in sums {
+        let Some(needed) = sum.amount.checked_add(rest.amount).and_then(i64::checked_neg) else { continue };
+        let part = (needed as f64 / number as f64 - low as f64) / (high - low) as f64;
+        if needed % number == 0 || !(0.0..=1.0).contains(&part) {
             continue;
         }
-        // An average of a positive and a negative state is no mixed valence.
-        for (low, high) in neighbours(element).into_iter().filter(|(low, high)| low.signum() == high.signum())
-        {
-            let part = (needed as f64 / number as f64 - low as f64) / (high - low) as f64;
-            if !(0.0..=1.0).contains(&part) {
-                continue;
-            }
-            let Some(prior) = log_prior(element, &[low, high]) else { continue };
-            let bonds = (1.0 - part) * log_group(group, evidence, low) + part * log_group(group, evidence, high);
-            let score = pick.score + prior + bonds - AVERAGE_ODDS.ln();
-            if best.as_ref().is_none_or(|best| score > best.score) {
-                let divisor = num_integer::gcd(needed, number);
-                best = Some(Average {
-                    group: group.clone(),
-                    value: (needed / divisor, number / divisor),
-                    score,
-                });
-            }
+        let score = sum.score + prior + (1.0 - part) * bonds_low + part * bonds_high;
+        if best.as_ref().is_none_or(|best| score > best.score) {
+            let divisor = num_integer::gcd(needed, number);
+            let value = (needed / divisor, number / divisor);
+            best = Some(Average { group: group.to_vec(), value, score });
         }
     }
     best
@@ -510,8 +585,8 @@ mod tests {
                 -f64::from(digit)
             };
             let pairs = [
-                (best_arrangements(&orbits, &[], |_, _| 0.0, 3), by_enumeration(&orbits, |_, _| 0.0)),
-                (best_arrangements(&orbits, &[], evidence, 3), by_enumeration(&orbits, evidence)),
+                (best_arrangements(&orbits, &[], |_, _| 0.0, 3).0, by_enumeration(&orbits, |_, _| 0.0)),
+                (best_arrangements(&orbits, &[], evidence, 3).0, by_enumeration(&orbits, evidence)),
             ];
             for (found, all) in pairs {
                 prop_assert_eq!(found.len(), all.len().min(3));

@@ -2,9 +2,10 @@
 //!
 //! A bond runs from the less to the more electronegative partner (L. C. Allen's scale, which the IUPAC recommends for
 //! formal oxidation states: Karen, McArdle & Takats, Pure Appl. Chem. 88, 831 (2016)). The *coordination shell* of the
-//! less electronegative site holds the partners whose bond has at least 0.038 of the valence that the stronger bonds
-//! make together: the limit of Altermatt & Brown, Acta Cryst. B41, 240 (1985), from memory, there with the formal
-//! valence of the cation, which is not known yet when the shell is searched.
+//! less electronegative site holds the partners whose bond has at least 0.015 of the valence that the stronger bonds
+//! make together. This keeps all twelve oxygen atoms around calcium in tilted perovskites, the weakest at 0.016, and
+//! leaves out the second shell everywhere else (0.01 and less in rutile, calcite, quartz, spinel). Altermatt & Brown,
+//! Acta Cryst. B41, 240 (1985), draw the line at 0.038 of the formal valence (from memory), which is not known yet here.
 //!
 //! Only anions count as partners: elements that have negative states, on sites that make no bonds to still more
 //! electronegative ones. Strong bonds are covalent and count in any case, such as that of H to C in a molecule.
@@ -19,10 +20,10 @@ use itertools::Itertools;
 use std::collections::BTreeMap;
 
 /// The least part of the valence of the stronger bonds that a bond of the shell has.
-const SHELL_PART: f64 = 0.038;
+const SHELL_PART: f64 = 0.015;
 
 /// Bonds below this valence are not looked at.
-const LEAST_VALENCE: f64 = 0.03;
+const LEAST_VALENCE: f64 = 0.02;
 
 /// A contact with a site that is no anion is a covalent bond from here on.
 const COVALENT: f64 = 0.6;
@@ -194,7 +195,10 @@ fn homonuclear_bonds(
     }
     let Some(pair) = single_bond(element) else { return };
     let valences = distances.iter().map(|&distance| pair.valence(distance));
-    environments[index].homonuclear = valences.take_while(|&valence| valence >= HOMONUCLEAR).sum();
+    // Long single bonds are bonds too; only between oxygen atoms are there halves (superoxide).
+    let order = |valence: f64| if element == Element::OXYGEN { valence } else { valence.round().max(1.0) };
+    environments[index].homonuclear =
+        valences.take_while(|&valence| valence >= HOMONUCLEAR).map(order).sum();
 }
 
 /// Metals that bond to their like in pairs, as in `Hg2Cl2` and `GaSe`.
