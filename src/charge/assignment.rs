@@ -1,15 +1,15 @@
 //! The charge of every site, and where it comes from.
 
-use super::given::Given;
-use super::bond_valence::{self, BondValences};
 use super::evidence::is_bare_ammonium;
+use super::given::Given;
 use super::inferred::{self, Inferred, MIN_LIKELIHOOD_RATIO, MIN_PROBABILITY};
 use super::orbit::Orbit;
 use super::parameters::Parameters;
+use super::reasoning::Reasoning;
 use super::sense;
+use super::stated::{self, Stated};
 use super::surroundings::Surroundings;
 use crate::cell::Lattice;
-use super::stated::{self, Stated};
 use crate::crystal::{Element, Formula, Site};
 use crate::diagnostic::{Code, Diagnostic};
 use itertools::Itertools;
@@ -67,54 +67,6 @@ pub struct Assignment {
     pub runner_up: Option<Vec<i64>>,
     /// How many times as likely the charges are as the runner-up.
     pub margin: Option<f64>,
-}
-
-/// How an inference went.
-#[derive(Debug, Clone, PartialEq)]
-pub struct Reasoning {
-    /// The probability of the charges.
-    pub probability: f64,
-    /// The most likely assignments, the one that was taken first.
-    pub candidates: Vec<Candidate>,
-    /// Bond-valence sums of the charges, where the positions were used.
-    pub bonds: Option<BondValences>,
-}
-
-/// One possible assignment.
-#[derive(Debug, Clone, PartialEq)]
-pub struct Candidate {
-    /// Charge of each site in units of e.
-    pub charges: Vec<i64>,
-    /// Its probability.
-    pub probability: f64,
-}
-
-impl Reasoning {
-    /// Candidates less likely than this are left out.
-    const LEAST: f64 = 1e-4;
-
-    fn new(orbits: &[Orbit], found: &Inferred, surroundings: Option<&Surroundings>) -> Self {
-        let pairs = found.arrangements.iter().zip(&found.probabilities).enumerate();
-        let kept = pairs.filter(|(rank, (_, probability))| *rank < 2 || **probability >= Self::LEAST);
-        Self {
-            probability: found.probability(),
-            candidates: kept
-                .map(|(_, (arrangement, &probability))| Candidate {
-                    charges: per_site(orbits, &arrangement.states),
-                    probability,
-                })
-                .collect(),
-            bonds: surroundings
-                .and_then(|surroundings| bond_valence::of_orbits(surroundings, orbits, &found.best().states)),
-        }
-    }
-
-    /// The probability that a site carries a charge, as far as the candidates tell.
-    #[must_use]
-    pub fn site_probability(&self, site: usize, charge: i64) -> f64 {
-        let like = self.candidates.iter().filter(|candidate| candidate.charges.get(site) == Some(&charge));
-        like.map(|candidate| candidate.probability).sum::<f64>().min(self.probability.max(0.999))
-    }
 }
 
 /// The charge of every site of one cell. Sites with equal numbers in `orbits` are symmetry-equivalent.
@@ -246,7 +198,7 @@ fn charges_of<'a>(
     pairs.map(|(site, charge)| (site.label.as_str(), *charge))
 }
 
-fn per_site(orbits: &[Orbit], states: &[i64]) -> Vec<i64> {
+pub(super) fn per_site(orbits: &[Orbit], states: &[i64]) -> Vec<i64> {
     let mut charges = vec![0; orbits.iter().map(|orbit| orbit.sites.len()).sum()];
     for (orbit, &state) in orbits.iter().zip(states) {
         for &site in &orbit.sites {
@@ -289,8 +241,8 @@ pub fn infer(
 ) -> Result<Assignment, Diagnostic> {
     let orbits = &Orbit::collect(sites, orbits)?;
     check_not_metal(sites, orbits).map_err(|refusal| propose(refusal, sites, orbits))?;
-    let surroundings =
-        positions.and_then(|(lattice, parameters)| Surroundings::find(lattice, sites, orbits, parameters).ok());
+    let surroundings = positions
+        .and_then(|(lattice, parameters)| Surroundings::find(lattice, sites, orbits, parameters).ok());
     let found = inferred::infer(orbits, surroundings.as_ref())?;
     let charges = per_site(orbits, &found.best().states);
     let runner_up = found.second().map(|second| per_site(orbits, &second.states));
@@ -313,6 +265,12 @@ pub fn infer(
     }
     let mut diagnostics: Vec<Diagnostic> = remark.into_iter().collect();
     diagnostics.extend(inferred::remarks(orbits, found.best(), surroundings.is_some()));
+    if let (Some(_), Some((average, probability))) = (&surroundings, &found.average)
+        && *probability >= PLAUSIBLE_AVERAGE
+    {
+        let message = format!("with a probability of {probability:.2} {}", average.refusal(orbits).message);
+        diagnostics.push(Diagnostic::warning(Code::ChargeAveraged, message));
+    }
     if !found.is_exact {
         let message = "the search for charges was cut short: a better assignment may exist";
         diagnostics.push(Diagnostic::warning(Code::ChargeSearch, message));
@@ -324,6 +282,9 @@ pub fn infer(
     let reasoning = Some(Reasoning::new(orbits, &found, surroundings.as_ref()));
     Ok(Assignment { charges, source: Source::Inferred, diagnostics, reasoning, runner_up, margin })
 }
+
+/// An averaged charge is mentioned from this probability on.
+const PLAUSIBLE_AVERAGE: f64 = 0.05;
 
 /// A warning where ammonium ions lack their hydrogen atoms.
 fn bare_ammonium(orbits: &[Orbit], surroundings: &Surroundings) -> Option<Diagnostic> {

@@ -55,7 +55,11 @@ pub fn bond_valences(
 }
 
 /// The same where the bonds are known.
-pub(super) fn of_orbits(surroundings: &Surroundings, orbits: &[Orbit], states: &[i64]) -> Option<BondValences> {
+pub(super) fn of_orbits(
+    surroundings: &Surroundings,
+    orbits: &[Orbit],
+    states: &[i64],
+) -> Option<BondValences> {
     let sums = surroundings.sums(orbits, states)?;
     if sums.iter().all(|&sum| sum == 0.0) {
         return None;

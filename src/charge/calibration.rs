@@ -19,3 +19,16 @@ pub(super) fn calibrated(share: f64) -> f64 {
     let logit = A + B * (share / (1.0 - share)).ln();
     (1.0 / (1.0 + (-logit).exp())).min(MOST)
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn probabilities_rise_with_the_share() {
+        let shares = [0.0, 1e-6, 0.1, 0.5, 0.9, 0.999, 1.0];
+        let found = shares.map(calibrated);
+        assert!(found.windows(2).all(|pair| pair[0] < pair[1]), "{found:?}");
+        assert!(found.iter().all(|&probability| (0.0..=MOST).contains(&probability)), "{found:?}");
+    }
+}

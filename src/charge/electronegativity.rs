@@ -34,3 +34,29 @@ pub(crate) fn octet_need(element: Element) -> Option<f64> {
         _ => return None,
     })
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// The order that textbooks give.
+    #[test]
+    fn the_order_of_partners() {
+        let value =
+            |symbol| electronegativity(Element::from_symbol(symbol).expect("known")).expect("a value");
+        for (giver, taker) in [
+            ("Na", "Cl"),
+            ("H", "O"),
+            ("H", "N"),
+            ("B", "H"),
+            ("Li", "H"),
+            ("Ga", "As"),
+            ("S", "O"),
+            ("O", "F"),
+        ] {
+            assert!(value(giver) < value(taker), "{giver} {taker}");
+        }
+        let read = (1..=118).filter_map(Element::from_number).filter(|&one| electronegativity(one).is_some());
+        assert!(read.count() > 95);
+    }
+}

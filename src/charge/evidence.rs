@@ -10,6 +10,7 @@
 
 use super::electronegativity::octet_need;
 use super::orbit::Orbit;
+use super::states::states;
 use super::surroundings::{Environment, Surroundings};
 use crate::crystal::Element;
 use std::collections::BTreeMap;
@@ -51,8 +52,50 @@ static SPREADS: LazyLock<BTreeMap<(Element, i64), Spread>> = LazyLock::new(|| {
     include_str!("../data/bond_valence_spread.tsv").lines().filter_map(read).collect()
 });
 
+/// Weight of the evidence of the bonds: sums of neighbouring orbits share bonds, so they count less than independent
+/// ones would. Fitted.
+const EVIDENCE: f64 = 0.8;
+
+/// What the bonds say about each state of each orbit.
+pub(crate) struct Evidence<'a> {
+    surroundings: Option<&'a Surroundings>,
+    pub(crate) kinds: Vec<u64>,
+    logs: Vec<Vec<(i64, f64)>>,
+}
+
+impl<'a> Evidence<'a> {
+    pub(crate) fn new(orbits: &[Orbit], surroundings: Option<&'a Surroundings>) -> Self {
+        let Some(surroundings) = surroundings else {
+            let logs = vec![Vec::new(); orbits.len()];
+            return Self { surroundings: None, kinds: vec![0; orbits.len()], logs };
+        };
+        let log = |index: usize, state: i64| EVIDENCE * log_likelihood(surroundings, orbits, index, state);
+        let of_orbit = |index: usize| {
+            let list = states(orbits[index].element).iter();
+            list.map(|state| (state.charge, log(index, state.charge))).collect()
+        };
+        Self {
+            surroundings: Some(surroundings),
+            kinds: (0..orbits.len()).map(|index| kind(surroundings, orbits, index)).collect(),
+            logs: (0..orbits.len()).map(of_orbit).collect(),
+        }
+    }
+
+    /// What the bonds say about a charge of a group between two states.
+    pub(crate) fn between(&self, orbits: &[Orbit], group: &[usize], pair: (i64, i64), part: f64) -> f64 {
+        let Some(surroundings) = self.surroundings else { return 0.0 };
+        let of_orbit = |&index: &usize| log_likelihood_between(surroundings, orbits, index, pair, part);
+        EVIDENCE * group.iter().map(of_orbit).sum::<f64>()
+    }
+
+    pub(crate) fn of(&self, index: usize, state: i64) -> f64 {
+        let known = self.logs.get(index).and_then(|list| list.iter().find(|(other, _)| *other == state));
+        known.map_or(0.0, |(_, log)| *log)
+    }
+}
+
 /// The logarithm of the likelihood of a state; 0 where the bonds say nothing.
-pub(crate) fn log_likelihood(surroundings: &Surroundings, orbits: &[Orbit], index: usize, state: i64) -> f64 {
+fn log_likelihood(surroundings: &Surroundings, orbits: &[Orbit], index: usize, state: i64) -> f64 {
     let Some(environment) = surroundings.environments.get(index) else { return 0.0 };
     let Some(element) = orbits.get(index).map(|orbit| orbit.element) else { return 0.0 };
     let (giving, taking) = (environment.giving, environment.taking);
@@ -72,18 +115,48 @@ pub(crate) fn log_likelihood(surroundings: &Surroundings, orbits: &[Orbit], inde
     if state < 0 || is_anion {
         return FLOOR;
     }
-    match surroundings.sum(orbits, index, state) {
-        Some(sum) if sum > 0.0 => {
-            let spread = SPREADS.get(&(element, state)).copied().unwrap_or(UNMEASURED);
+    let unpaired = if is_unpaired(element, state, environment) { UNPAIRED } else { 0.0 };
+    #[expect(clippy::cast_precision_loss, reason = "states are small")]
+    let fit = |sum: f64| of_sum(sum, state as f64, spread(element, state)) + unpaired;
+    surroundings.sum(orbits, index, state).map_or(0.0, fit)
+}
+
+/// The logarithm of the likelihood of a charge between two states, `part` of the way from `low` to `high`.
+fn log_likelihood_between(
+    surroundings: &Surroundings,
+    orbits: &[Orbit],
+    index: usize,
+    (low, high): (i64, i64),
+    part: f64,
+) -> f64 {
+    let at = |state: i64| log_likelihood(surroundings, orbits, index, state);
+    let between = |low: f64, high: f64| (1.0 - part) * low + part * high;
+    let sums = (surroundings.sum(orbits, index, low), surroundings.sum(orbits, index, high));
+    let is_giver = surroundings.environments.get(index).is_some_and(|one| one.giving > one.taking);
+    match (sums, orbits.get(index)) {
+        ((Some(a), Some(b)), Some(orbit)) if low > 0 && is_giver => {
+            let (one, other) = (spread(orbit.element, low), spread(orbit.element, high));
+            let spread =
+                Spread { mean: between(one.mean, other.mean), width: between(one.width, other.width) };
             #[expect(clippy::cast_precision_loss, reason = "states are small")]
-            let off = ((sum / state as f64).ln() - spread.mean) / spread.width;
-            let tails = -0.5 * (FREEDOM + 1.0) * (off * off / FREEDOM).ln_1p();
-            let unpaired = if is_unpaired(element, state, environment) { UNPAIRED } else { 0.0 };
-            softened(tails - (spread.width / UNMEASURED.width).ln()) + unpaired
+            let state = between(low as f64, high as f64);
+            of_sum(between(a, b), state, spread)
         }
-        Some(_) => FLOOR,
-        None => 0.0,
+        _ => between(at(low), at(high)),
     }
+}
+
+fn spread(element: Element, state: i64) -> Spread {
+    SPREADS.get(&(element, state)).copied().unwrap_or(UNMEASURED)
+}
+
+fn of_sum(sum: f64, state: f64, spread: Spread) -> f64 {
+    if sum <= 0.0 {
+        return FLOOR;
+    }
+    let off = ((sum / state).ln() - spread.mean) / spread.width;
+    let tails = -0.5 * (FREEDOM + 1.0) * (off * off / FREEDOM).ln_1p();
+    softened(tails - (spread.width / UNMEASURED.width).ln())
 }
 
 /// A nitrogen without any bond: what is left of ammonium where the hydrogen atoms were not found. It stands for the
@@ -95,7 +168,7 @@ pub(crate) fn is_bare_ammonium(element: Element, environment: &Environment) -> b
         && environment.homonuclear <= 0.0
 }
 
-/// Whether a main-group atom of this state would have an unpaired electron, beside those in bonds to its like.
+/// Whether a main-group atom (or gold, of which the same is true) of this state would have an unpaired electron, beside those in bonds to its like.
 fn is_unpaired(element: Element, state: i64, environment: &Environment) -> bool {
     let electrons = match element.symbol() {
         "B" | "Al" | "Ga" | "In" | "Tl" => 3,
@@ -104,6 +177,7 @@ fn is_unpaired(element: Element, state: i64, environment: &Environment) -> bool 
         "S" | "Se" | "Te" => 6,
         "Cl" | "Br" | "I" => 7,
         "Zn" | "Cd" | "Hg" => 2,
+        "Au" => 11,
         _ => return false,
     };
     #[expect(clippy::cast_possible_truncation, reason = "a small valence")]
@@ -113,7 +187,7 @@ fn is_unpaired(element: Element, state: i64, environment: &Environment) -> bool 
 
 /// Orbits of one element and of one kind are expected to share a state. Nonmetals that are bonded differently are of
 /// different kinds: the nitrogen of ammonium and of nitrate, the oxygen of oxide and of peroxide.
-pub(crate) fn kind(surroundings: &Surroundings, orbits: &[Orbit], index: usize) -> u64 {
+fn kind(surroundings: &Surroundings, orbits: &[Orbit], index: usize) -> u64 {
     let (Some(environment), Some(orbit)) = (surroundings.environments.get(index), orbits.get(index)) else {
         return 0;
     };

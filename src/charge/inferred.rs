@@ -21,10 +21,12 @@
 //! among the [`KEPT`] best, with the case that one element has no whole charge at all as one more; how well it holds
 //! is measured, see DEVELOPERS.md.
 
+use super::average::{Average, average_of};
+use super::calibration;
+use super::evidence::Evidence;
 use super::neutral::{Choice, Wanted, best_picks};
 use super::orbit::Orbit;
-use super::calibration;
-use super::evidence::{kind, log_likelihood};
+use super::prior::{UNCOMMON_SHARE, log_prior};
 use super::states::{neighbours, share, states};
 use super::surroundings::Surroundings;
 use crate::crystal::Element;
@@ -37,28 +39,8 @@ pub const MIN_PROBABILITY: f64 = 0.4;
 /// Without bond lengths the best arrangement of states must be this many times as likely as the second best.
 pub const MIN_LIKELIHOOD_RATIO: f64 = 2.0;
 
-/// Prior odds against a second state of one element; one oxide in twenty is of mixed valence, more among
-/// those whose elements allow it. Fitted.
-const MIXED_VALENCE_ODDS: f64 = 10.0;
-
-/// Further odds against two states of a metal with a known one between them.
-const GAP_ODDS: f64 = 5.0;
-
-/// Odds against a charge that is shared between equivalent sites, beside those of mixed valence.
-const AVERAGE_ODDS: f64 = 10.0;
-
-/// Weight of the evidence of the bonds: sums of neighbouring orbits share bonds, so they count less than independent
-/// ones would. Fitted.
-const EVIDENCE: f64 = 0.8;
-
-/// How much more than their logarithm the shares below [`UNCOMMON_SHARE`] count.
-const RARE: f64 = 1.0;
-
-/// A state with a smaller part of its element's reports is called uncommon.
-const UNCOMMON_SHARE: f64 = 0.01;
-
 /// Elements with more orbits than this are given one state throughout.
-const MAX_MIXED_ORBITS: usize = 64;
+pub(super) const MAX_MIXED_ORBITS: usize = 64;
 
 /// States of all orbits, with the logarithm of their likelihood.
 #[derive(Debug, Clone, PartialEq)]
@@ -117,33 +99,6 @@ impl Inferred {
     }
 }
 
-/// The logarithm of the prior probability that a group of orbits has these states and no others.
-fn log_prior(element: Element, used: &[i64]) -> Option<f64> {
-    let shares: Option<Vec<f64>> = used.iter().map(|&state| share(element, state)).collect();
-    let logs: Vec<f64> = shares?.into_iter().map(discounted).collect();
-    let mean = logs.iter().sum::<f64>() / f64::from(u32::try_from(logs.len()).ok()?.max(1));
-    let odds = match used[..] {
-        [low, high] if has_gap(element, low, high) => MIXED_VALENCE_ODDS * GAP_ODDS,
-        [_, _] => MIXED_VALENCE_ODDS,
-        _ => 1.0,
-    };
-    Some(mean - odds.ln())
-}
-
-/// The logarithm of a share. Reports of very rare states are mostly errors, so they count less than their number.
-fn discounted(share: f64) -> f64 {
-    let log = share.ln();
-    log + RARE * (log - UNCOMMON_SHARE.ln()).min(0.0)
-}
-
-/// Whether the states skip one that the element has: +4 and +6 of tungsten. Not for main-group metals and nonmetals,
-/// whose odd states do not exist, nor for Pd, Pt, Ag and Au, which like to go in steps of two.
-fn has_gap(element: Element, low: i64, high: i64) -> bool {
-    high - low > 1
-        && super::electronegativity::octet_need(element).is_none()
-        && !matches!(element.symbol(), "Pd" | "Pt" | "Ag" | "Au" | "Tl" | "In" | "Ga")
-}
-
 /// The best neutral arrangements, without judging how far they are apart.
 ///
 /// # Errors
@@ -162,36 +117,11 @@ pub(crate) fn infer(orbits: &[Orbit], surroundings: Option<&Surroundings>) -> Re
     let evidence = Evidence::new(orbits, surroundings);
     let (found, bound) =
         best_arrangements(orbits, &evidence.kinds, |index, state| evidence.of(index, state), KEPT);
-    let average = average_of(orbits, &evidence);
-    if found.is_empty() { Err(nothing_neutral(orbits, average)) } else { Ok(Inferred::new(found, bound, average)) }
-}
-
-/// What the bonds say about each state of each orbit.
-struct Evidence {
-    kinds: Vec<u64>,
-    logs: Vec<Vec<(i64, f64)>>,
-}
-
-impl Evidence {
-    fn new(orbits: &[Orbit], surroundings: Option<&Surroundings>) -> Self {
-        let Some(surroundings) = surroundings else {
-            return Self { kinds: vec![0; orbits.len()], logs: vec![Vec::new(); orbits.len()] };
-        };
-        let log = |index: usize, state: i64| EVIDENCE * log_likelihood(surroundings, orbits, index, state);
-        let of_orbit = |index: usize| {
-            let list = states(orbits[index].element).iter();
-            list.map(|state| (state.charge, log(index, state.charge))).collect()
-        };
-        Self {
-            kinds: (0..orbits.len()).map(|index| kind(surroundings, orbits, index)).collect(),
-            logs: (0..orbits.len()).map(of_orbit).collect(),
-        }
+    if found.is_empty() {
+        return Err(nothing_neutral(orbits, average_of(orbits, &evidence, 0.0)));
     }
-
-    fn of(&self, index: usize, state: i64) -> f64 {
-        let known = self.logs.get(index).and_then(|list| list.iter().find(|(other, _)| *other == state));
-        known.map_or(0.0, |(_, log)| *log)
-    }
+    let average = average_of(orbits, &evidence, UNCOMMON_SHARE);
+    Ok(Inferred::new(found, bound, average))
 }
 
 /// The best `keep` neutral arrangements, best first, and an upper bound of the score of all that were not looked at.
@@ -221,7 +151,7 @@ pub(crate) fn best_arrangements(
 }
 
 /// Fillings this far below the best of their group are set aside at first.
-const SLACK: f64 = 25.0;
+pub(super) const SLACK: f64 = 25.0;
 
 /// No more fillings of one group than this are looked at.
 const MAX_FILLINGS: usize = 200;
@@ -266,7 +196,7 @@ fn arrangements(
 }
 
 /// The orbits that belong together, by index.
-fn groups(orbits: &[Orbit], kinds: &[u64]) -> Vec<Vec<usize>> {
+pub(super) fn groups(orbits: &[Orbit], kinds: &[u64]) -> Vec<Vec<usize>> {
     let key = |index: usize| (orbits[index].element, kinds.get(index).copied().unwrap_or(0));
     let mut order: Vec<usize> = (0..orbits.len()).collect();
     order.sort_by_key(|&index| (key(index), index));
@@ -341,139 +271,6 @@ fn nothing_neutral(orbits: &[Orbit], average: Option<Average>) -> Diagnostic {
     });
     let message = format!("no combination of tabulated states is neutral: {}", super::listing(known));
     Diagnostic::error(Code::ChargeNone, message)
-}
-
-fn plural(count: usize, noun: &str) -> String {
-    if count == 1 { format!("1 {noun}") } else { format!("{count} {noun}s") }
-}
-
-/// A fractional charge of one element that makes the cell neutral.
-#[derive(Debug, Clone, PartialEq)]
-pub(crate) struct Average {
-    /// Indices of the orbits of the element.
-    group: Vec<usize>,
-    /// Numerator and denominator.
-    value: (i64, i64),
-    pub(crate) score: f64,
-}
-
-impl Average {
-    /// The refusal that names the average.
-    pub(crate) fn refusal(&self, orbits: &[Orbit]) -> Diagnostic {
-        let labels = self.group.iter().map(|&index| orbits[index].label.as_str());
-        let (numerator, denominator) = self.value;
-        let limit = if self.group.len() > MAX_MIXED_ORBITS {
-            format!("; an element on more than {MAX_MIXED_ORBITS} sets is given one charge")
-        } else {
-            String::new()
-        };
-        Diagnostic::error(
-            Code::ChargeAveraged,
-            format!(
-                "a neutral cell needs an average charge of {numerator}/{denominator} on {} ({} of equivalent sites: {}), \
-                 and equivalent sites must carry one whole charge{limit}",
-                self.group.first().map_or("", |&index| orbits[index].element.symbol()),
-                plural(self.group.len(), "set"),
-                super::listing(labels),
-            ),
-        )
-    }
-}
-
-/// The most likely fractional charge of one group between two neighbouring states of one sign that makes the cell
-/// neutral when every other group has one whole state.
-fn average_of(orbits: &[Orbit], evidence: &Evidence) -> Option<Average> {
-    let groups = groups(orbits, &evidence.kinds);
-    let whole: Vec<Vec<Choice>> = groups.iter().map(|group| whole_choices(orbits, group, evidence)).collect();
-    let found = (0..groups.len()).flat_map(|index| {
-        let others: Vec<Vec<Choice>> =
-            (0..whole.len()).filter(|&one| one != index).map(|one| whole[one].clone()).collect();
-        let picks = best_picks(&others, 1, Wanted::Any).into_iter();
-        let sums: Vec<Choice> = picks
-            .filter_map(|(amount, picks)| picks.first().map(|pick| Choice { amount, score: pick.score }))
-            .collect();
-        averages(orbits, &groups[index], &sums, evidence)
-    });
-    found.max_by(|a, b| a.score.total_cmp(&b.score))
-}
-
-fn count(orbits: &[Orbit], group: &[usize]) -> i64 {
-    group.iter().fold(0, |sum, &index| sum.saturating_add(orbits[index].count()))
-}
-
-/// The logarithm of the likelihood that a whole group is in a state.
-fn log_group(group: &[usize], evidence: &Evidence, state: i64) -> f64 {
-    group.iter().map(|&index| evidence.of(index, state)).sum()
-}
-
-fn whole_choices(orbits: &[Orbit], group: &[usize], evidence: &Evidence) -> Vec<Choice> {
-    let Some(element) = group.first().map(|&index| orbits[index].element) else { return Vec::new() };
-    let choice = |charge: i64| {
-        let amount = charge.checked_mul(count(orbits, group))?;
-        let score = log_prior(element, &[charge])? + log_group(group, evidence, charge);
-        Some(Choice { amount, score })
-    };
-    states(element).iter().filter_map(|state| choice(state.charge)).collect()
-}
-
-/// Groups of more orbits than this are averaged as a whole only.
-const MAX_AVERAGED_ORBITS: usize = 4;
-
-/// The averages of a whole group, and of one of its orbits while the others carry whole charges. `sums` holds the total
-/// charges of everything else.
-fn averages(orbits: &[Orbit], group: &[usize], sums: &[Choice], evidence: &Evidence) -> Vec<Average> {
-    let Some(element) = group.first().map(|&first| orbits[first].element) else { return Vec::new() };
-    let mut found = Vec::new();
-    // An average of a positive and a negative state is no mixed valence.
-    for pair in neighbours(element).into_iter().filter(|(low, high)| low.signum() == high.signum()) {
-        let nothing = Choice { amount: 0, score: 0.0 };
-        found.extend(average(orbits, group, sums, evidence, pair, nothing));
-        if !(2..=MAX_AVERAGED_ORBITS).contains(&group.len()) {
-            continue;
-        }
-        for &index in group {
-            let rest = group.iter().copied().filter(|&other| other != index);
-            for states in rest.clone().map(|_| [pair.0, pair.1]).multi_cartesian_product() {
-                let pairs = || rest.clone().zip(&states);
-                let amount = pairs()
-                    .fold(0_i64, |sum, (one, &state)| sum.saturating_add(state.saturating_mul(orbits[one].count())));
-                let score = pairs().map(|(one, &state)| evidence.of(one, state)).sum();
-                found.extend(average(orbits, &[index], sums, evidence, pair, Choice { amount, score }));
-            }
-        }
-    }
-    found
-}
-
-/// The most likely average of these orbits between two states. `sums` and `rest` are what everything else may add.
-#[expect(clippy::cast_precision_loss, reason = "charges and counts of sites are far below 2^52")]
-fn average(
-    orbits: &[Orbit],
-    group: &[usize],
-    sums: &[Choice],
-    evidence: &Evidence,
-    (low, high): (i64, i64),
-    rest: Choice,
-) -> Option<Average> {
-    let element = group.first().map(|&first| orbits[first].element)?;
-    let number = count(orbits, group);
-    let prior = log_prior(element, &[low, high])? - AVERAGE_ODDS.ln() + rest.score;
-    let (bonds_low, bonds_high) = (log_group(group, evidence, low), log_group(group, evidence, high));
-    let mut best: Option<Average> = None;
-    for sum in sums {
-        let Some(needed) = sum.amount.checked_add(rest.amount).and_then(i64::checked_neg) else { continue };
-        let part = (needed as f64 / number as f64 - low as f64) / (high - low) as f64;
-        if needed % number == 0 || !(0.0..=1.0).contains(&part) {
-            continue;
-        }
-        let score = sum.score + prior + (1.0 - part) * bonds_low + part * bonds_high;
-        if best.as_ref().is_none_or(|best| score > best.score) {
-            let divisor = num_integer::gcd(needed, number);
-            let value = (needed / divisor, number / divisor);
-            best = Some(Average { group: group.to_vec(), value, score });
-        }
-    }
-    best
 }
 
 /// A note that charges were inferred, a warning where a state is uncommon or an element carries several.
@@ -552,7 +349,8 @@ mod tests {
                 orbits.iter().zip(states).map(|(orbit, state)| orbit.count() * state).sum::<i64>() == 0
             })
             .filter_map(|states| {
-                let mut score: f64 = states.iter().enumerate().map(|(index, &state)| evidence(index, state)).sum();
+                let mut score: f64 =
+                    states.iter().enumerate().map(|(index, &state)| evidence(index, state)).sum();
                 for element in orbits.iter().map(|orbit| orbit.element).unique() {
                     let of_element = orbits.iter().zip(&states).filter(|(orbit, _)| orbit.element == element);
                     let used: Vec<i64> = of_element.map(|(_, state)| *state).unique().sorted().collect();

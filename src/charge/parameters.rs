@@ -188,7 +188,11 @@ fn cif_rows(bytes: &[u8]) -> Result<Vec<LoadedRow>, Diagnostic> {
                 let shown: Vec<&str> = (0..COLUMNS.len()).map(|column| text(column).unwrap_or("?")).collect();
                 Diagnostic::error(
                     Code::BondValenceTable,
-                    format!("row {} of the bond-valence parameters cannot be read: {}", row + 1, shown.join(" ")),
+                    format!(
+                        "row {} of the bond-valence parameters cannot be read: {}",
+                        row + 1,
+                        shown.join(" ")
+                    ),
                 )
             };
             found.push(read.ok_or_else(bad)?);
@@ -214,4 +218,42 @@ fn cif_row<'a>(text: &impl Fn(usize) -> Option<&'a str>) -> Option<LoadedRow> {
     let pair = Pair { r0, b, origin: Origin::User };
     let (state, partner) = (whole(1)?, whole(3).unwrap_or(-1));
     if state < 0 { Some(((other, one), partner, pair)) } else { Some(((one, other), state, pair)) }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn every_row_is_read() {
+        let table = include_str!("../data/bond_valence.tsv");
+        assert!(rows(table).all(|row| published_row(&row).is_some()));
+        let read: usize = published().values().map(Vec::len).sum();
+        assert_eq!(read, rows(table).count(), "a pair is there twice");
+        assert_eq!(element_parameters().len(), rows(include_str!("../data/element_parameters.tsv")).count());
+        for row in rows(table) {
+            assert!(
+                row[6].starts_with("Brown & Altermatt") || row[6].starts_with("Brese & O'Keeffe"),
+                "{row:?}"
+            );
+            assert!(matches!(row[7], "checked" | "from memory"), "{row:?}");
+        }
+    }
+
+    #[test]
+    fn valence_and_length_are_inverse() {
+        let pair = Pair { r0: 1.815, b: 0.37, origin: Origin::Published };
+        assert!((pair.valence(1.815) - 1.0).abs() < 1e-12);
+        assert!((pair.length(pair.valence(2.0)) - 2.0).abs() < 1e-12);
+    }
+
+    #[test]
+    fn the_nearest_state_stands_in() {
+        let element = |symbol| Element::from_symbol(symbol).expect("known");
+        let pair = Parameters::standard().pair(element("Mo"), 5, element("O")).expect("Mo +6");
+        assert_eq!(pair.origin, Origin::OtherState);
+        let rule = Parameters::standard().pair(element("Mo"), 5, element("S")).expect("by rule");
+        assert_eq!(rule.origin, Origin::Rule);
+        assert_eq!(Parameters::standard().pair(element("Ar"), 1, element("O")), None);
+    }
 }

@@ -69,20 +69,20 @@ pub(super) fn remarks(orbits: &[Orbit], states: &[i64]) -> Vec<Diagnostic> {
     });
     let metallic: Vec<String> = metallic.collect();
     let open = ions.iter().filter(|&&(element, state)| is_open_shell(element, state));
-    let open = open.filter(|&&(element, state)| example(element, state).is_none()).map(|&(element, state)| {
-        format!("{element} {state:+} (d{})", d_electrons(element, state).unwrap_or_default())
-    });
+    let open =
+        open.filter(|&&(element, state)| example(element, state).is_none()).map(|&(element, state)| {
+            format!("{element} {state:+} (d{})", d_electrons(element, state).unwrap_or_default())
+        });
     let open: Vec<String> = open.collect();
     let mut found = Vec::new();
     if !metallic.is_empty() {
-        let message = format!("this may be a metal: {} is known mostly from metals", super::listing(metallic));
+        let message =
+            format!("this may be a metal: {} is known mostly from metals", super::listing(metallic));
         found.push(Diagnostic::warning(Code::ChargeLikelyMetal, message));
     }
     if !open.is_empty() {
-        let message = format!(
-            "open d shells: {}; an insulator only if its electrons localise",
-            super::listing(open)
-        );
+        let message =
+            format!("open d shells: {}; an insulator only if its electrons localise", super::listing(open));
         found.push(Diagnostic::note(Code::ChargeOpenShell, message));
     }
     found

@@ -1,7 +1,7 @@
 //! Which bonds does a site of each orbit make, and how strong are they?
 //!
 //! A bond runs from the less to the more electronegative partner (L. C. Allen's scale, which the IUPAC recommends for
-//! formal oxidation states: Karen, McArdle & Takats, Pure Appl. Chem. 88, 831 (2016)). The *coordination shell* of the
+//! formal oxidation states: Karen et al., Pure Appl. Chem. 88, 831 (2016)). The *coordination shell* of the
 //! less electronegative site holds the partners whose bond has at least 0.015 of the valence that the stronger bonds
 //! make together. This keeps all twelve oxygen atoms around calcium in tilted perovskites, the weakest at 0.016, and
 //! leaves out the second shell everywhere else (0.01 and less in rutile, calcite, quartz, spinel). Altermatt & Brown,
@@ -127,7 +127,8 @@ impl Surroundings {
             let state = charges.get(index)?.abs();
             for bond in &environment.shell {
                 let partner = orbits.get(bond.partner)?;
-                let valence = self.parameters.pair(orbit.element, state, partner.element)?.valence(bond.distance);
+                let valence =
+                    self.parameters.pair(orbit.element, state, partner.element)?.valence(bond.distance);
                 sums[index] += valence;
                 sums[bond.partner] -= valence * orbit.count() as f64 / partner.count().max(1) as f64;
             }
@@ -197,8 +198,7 @@ fn homonuclear_bonds(
     let valences = distances.iter().map(|&distance| pair.valence(distance));
     // Long single bonds are bonds too; only between oxygen atoms are there halves (superoxide).
     let order = |valence: f64| if element == Element::OXYGEN { valence } else { valence.round().max(1.0) };
-    environments[index].homonuclear =
-        valences.take_while(|&valence| valence >= HOMONUCLEAR).map(order).sum();
+    environments[index].homonuclear = valences.take_while(|&valence| valence >= HOMONUCLEAR).map(order).sum();
 }
 
 /// Metals that bond to their like in pairs, as in `Hg2Cl2` and `GaSe`.

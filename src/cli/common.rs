@@ -14,7 +14,7 @@ pub(super) struct StructureOptions {
     /// Formal charges in e by element or site label, such as 'Ta=5,K=1,O=-2'
     #[arg(long, value_name = "CHARGES", allow_hyphen_values = true, help_heading = "Structure")]
     charges: Option<Given>,
-    /// Bond-valence parameters of your own: a CIF with the items _valence_param_...; they go before the built-in ones
+    /// Bond-valence parameters of your own: a CIF with the items of the bond-valence dictionary; they go before the built-in ones
     #[arg(long, value_name = "FILE", value_parser = bond_valence, help_heading = "Structure")]
     bond_valence: Option<Arc<Parameters>>,
     /// Only the data block of this name

@@ -34,8 +34,11 @@ pub(super) fn alternatives(
     others
         .filter(|candidate| candidate.probability >= PLAUSIBLE)
         .map(|candidate| {
-            let charges: Vec<i64> =
-                primitive.representatives.iter().filter_map(|&site| candidate.charges.get(site).copied()).collect();
+            let charges: Vec<i64> = primitive
+                .representatives
+                .iter()
+                .filter_map(|&site| candidate.charges.get(site).copied())
+                .collect();
             let other = FormalPolarization::new(primitive, centres, &charges).ok();
             let is_same = other.as_ref().is_some_and(|other| {
                 other.label == formal.label

@@ -39,7 +39,10 @@ fn write_reasons(out: &mut String, material: &Material, parameters: &Parameters)
     let Some(assignment) = &work.assignment else { return Ok(()) };
     let reasoning = assignment.reasoning.as_ref();
     let Some(bonds) = bonds_of(material, parameters) else {
-        return writeln!(out, "\nNo bond valences: parameters are missing, or there are no bonds between unlike elements.");
+        return writeln!(
+            out,
+            "\nNo bond valences: parameters are missing, or there are no bonds between unlike elements."
+        );
     };
     writeln!(out, "\nBonds and charges ({}):", assignment.source.describe())?;
     let mut table = Table::new(COLUMNS);
@@ -47,8 +50,11 @@ fn write_reasons(out: &mut String, material: &Material, parameters: &Parameters)
         let site = orbit.sites.first().copied().unwrap_or(0);
         let likely = |state: i64| reasoning.map(|reasoning| reasoning.site_probability(site, state));
         let others: Vec<String> = reasoning.map_or_else(Vec::new, |reasoning| {
-            let mut states: Vec<i64> =
-                reasoning.candidates.iter().filter_map(|candidate| candidate.charges.get(site).copied()).collect();
+            let mut states: Vec<i64> = reasoning
+                .candidates
+                .iter()
+                .filter_map(|candidate| candidate.charges.get(site).copied())
+                .collect();
             states.sort_unstable();
             states.dedup();
             states
@@ -69,7 +75,12 @@ fn write_reasons(out: &mut String, material: &Material, parameters: &Parameters)
         ]);
     }
     out.push_str(&table.to_text(None));
-    writeln!(out, "\nGlobal instability index {:.3} valence units{}", bonds.global_instability, judged(&bonds))?;
+    writeln!(
+        out,
+        "\nGlobal instability index {:.3} valence units{}",
+        bonds.global_instability,
+        judged(&bonds)
+    )?;
     write_alternatives(out, &work.alternatives)
 }
 

@@ -6,8 +6,8 @@ use cosetta::cif;
 use cosetta::collection::{Settings, classify_bytes, classify_unit, find_inputs};
 use cosetta::crystal::{Crystal, Element, Site};
 use cosetta::symmetry::find_symmetry;
-use nalgebra::{Matrix3, Vector3};
 use divan::Bencher;
+use nalgebra::{Matrix3, Vector3};
 
 fn main() {
     divan::main();
@@ -91,7 +91,8 @@ fn infer(crystal: &Crystal, orbits: &[usize]) -> bool {
 #[divan::bench]
 fn charges_at_worst(bencher: Bencher) {
     let symbols = ["Fe", "Mn", "Mo", "V", "O", "S", "Cr", "O"];
-    let place = |index: u32| Vector3::new(index % 6, index / 6 % 6, index / 36).map(|step| f64::from(step) / 6.0);
+    let place =
+        |index: u32| Vector3::new(index % 6, index / 6 % 6, index / 36).map(|step| f64::from(step) / 6.0);
     let sites: Vec<Site> = (0..200)
         .map(|index| {
             let symbol = symbols[(index % 6 + index / 6 + index / 36) as usize % symbols.len()];

@@ -23,11 +23,14 @@ fn bonds(name: &str, parameters: &Parameters) -> BondValences {
 const OWN_TABLE: &str = "data_own\nloop_\n_valence_param_atom_1\n_valence_param_atom_1_valence\n_valence_param_atom_2\n\
     _valence_param_atom_2_valence\n_valence_param_Ro\n_valence_param_B\n_valence_param_ref_id\nCu 1 O -2 1.610 0.37 own\n";
 
+/// A crystal, the sums of some of its elements, and its global instability index.
+type Sums = (&'static str, &'static [(&'static str, f64)], f64);
+
 /// Sums over the first shell and global instability indices, computed elsewhere from the structures of
 /// `published.json` with b = 0.37 Å and the values of Brown & Altermatt and Brese & O'Keeffe.
 #[test]
 fn worked_sums_to_the_printed_digits() {
-    const SUMS: &[(&str, &[(&str, f64)], f64)] = &[
+    const SUMS: &[Sums] = &[
         ("TiO2-rutile", &[("Ti", 4.069), ("O", 2.034)], 0.0485),
         ("TiO2-anatase", &[("Ti", 4.183), ("O", 2.092)], 0.1295),
         ("SnO2", &[("Sn", 4.008), ("O", 2.004)], 0.0054),
@@ -87,7 +90,9 @@ fn parameters_come_from_the_best_source() {
     let own = Parameters::from_cif(OWN_TABLE.as_bytes()).expect("a table");
     let copper = own.pair(element("Cu"), 1, element("O")).expect("own");
     assert!((copper.r0 - 1.610).abs() < 1e-9);
-    for bad in ["data_x\n_cell_length_a 3\n", &OWN_TABLE.replace("1.610", "far"), &OWN_TABLE.replace("Cu 1", "Qq 1")] {
+    for bad in
+        ["data_x\n_cell_length_a 3\n", &OWN_TABLE.replace("1.610", "far"), &OWN_TABLE.replace("Cu 1", "Qq 1")]
+    {
         let refusal = Parameters::from_cif(bad.as_bytes()).expect_err("no table");
         assert_eq!(refusal.code.as_str(), "charge-014");
     }
@@ -156,7 +161,12 @@ fn hard_cases() {
             }
         }
     }
-    println!("{right} of {} right\nwrong:\n{}\nrefused:\n{}", cases.len(), wrong.join("\n"), refused.join("\n"));
+    println!(
+        "{right} of {} right\nwrong:\n{}\nrefused:\n{}",
+        cases.len(),
+        wrong.join("\n"),
+        refused.join("\n")
+    );
     assert!(right * 100 >= cases.len() * 90, "{right} of {}", cases.len());
     assert!(wrong.len() * 100 <= cases.len() * 3, "{}", wrong.join("\n"));
 }
@@ -286,7 +296,10 @@ fn labels_of_the_held_out_oxides() {
         let right_f = *right as f64;
         println!("  {:.3}  {count:5}  {:.3}", sum / count_f, right_f / count_f);
     }
-    println!("of {sure} at 0.99 and more whose composition fixes the states {} differ: {sure_differ:?}", sure_differ.len());
+    println!(
+        "of {sure} at 0.99 and more whose composition fixes the states {} differ: {sure_differ:?}",
+        sure_differ.len()
+    );
     assert!(sure_differ.len() * 200 <= sure, "more than 0.5 % of {sure}");
 }
 
@@ -301,7 +314,8 @@ fn write_what_the_widths_are_fitted_to() {
             continue;
         }
         let work = classify_unit(&unit(&record), &settings);
-        let (Some(crystal), Some(symmetry), Some(assignment)) = (work.crystal, work.symmetry, work.assignment)
+        let (Some(crystal), Some(symmetry), Some(assignment)) =
+            (work.crystal, work.symmetry, work.assignment)
         else {
             continue;
         };
@@ -329,6 +343,9 @@ fn explained_charges() {
     assert!(text.contains("The label is the same under all plausible charges."), "{text}");
     assert!(text.contains("Global instability index"), "{text}");
     for element in ["K", "Ta", "O"] {
-        assert!(text.lines().any(|line| line.split_whitespace().nth(1) == Some(element)), "{element}\n{text}");
+        assert!(
+            text.lines().any(|line| line.split_whitespace().nth(1) == Some(element)),
+            "{element}\n{text}"
+        );
     }
 }
