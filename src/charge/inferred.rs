@@ -32,6 +32,7 @@ use super::surroundings::Surroundings;
 use crate::crystal::Element;
 use crate::diagnostic::{Code, Diagnostic};
 use itertools::Itertools;
+use std::collections::BTreeSet;
 
 /// An assignment is refused below this probability.
 pub const MIN_PROBABILITY: f64 = 0.4;
@@ -129,7 +130,7 @@ pub(crate) fn infer(orbits: &[Orbit], surroundings: Option<&Surroundings>) -> Re
 /// equal number in `kinds` belong together.
 ///
 /// Fillings of a group that are [`SLACK`] below its best are looked at only if the arrangements found without them could
-/// be beaten; more than [`MAX_FILLINGS`] of one group never are, which keeps the time within bounds.
+/// be beaten; of more than [`MAX_FILLINGS`] of one group only the best for each total charge are, which bounds the time.
 pub(crate) fn best_arrangements(
     orbits: &[Orbit],
     kinds: &[u64],
@@ -157,17 +158,24 @@ pub(super) const SLACK: f64 = 25.0;
 const MAX_FILLINGS: usize = 200;
 
 /// The fillings near the best of each group, and the highest score that an arrangement with another one can have.
-fn shortened(fillings: &[Vec<Filling>], slack: f64) -> (Vec<&[Filling]>, f64) {
+/// Without slack the best filling of every total charge is there, so that whatever can be neutral is found.
+fn shortened(fillings: &[Vec<Filling>], slack: f64) -> (Vec<Vec<&Filling>>, f64) {
     let best = |list: &[Filling]| list.first().map_or(f64::NEG_INFINITY, |filling| filling.choice.score);
     let sum: f64 = fillings.iter().map(|list| best(list)).sum();
     let mut bound = f64::NEG_INFINITY;
     let kept = fillings.iter().map(|list| {
-        let near = list.partition_point(|filling| filling.choice.score >= best(list) - slack);
-        let near = near.min(MAX_FILLINGS);
-        if let Some(next) = list.get(near) {
-            bound = bound.max(sum - best(list) + next.choice.score);
+        let mut amounts = BTreeSet::new();
+        let mut kept: Vec<&Filling> = Vec::new();
+        for filling in list {
+            let is_first = amounts.insert(filling.choice.amount) && slack.is_infinite();
+            let is_near = kept.len() < MAX_FILLINGS && filling.choice.score >= best(list) - slack;
+            if is_first || is_near {
+                kept.push(filling);
+            } else {
+                bound = bound.max(sum - best(list) + filling.choice.score);
+            }
         }
-        &list[..near]
+        kept
     });
     (kept.collect(), bound)
 }
@@ -175,7 +183,7 @@ fn shortened(fillings: &[Vec<Filling>], slack: f64) -> (Vec<&[Filling]>, f64) {
 fn arrangements(
     number: usize,
     groups: &[Vec<usize>],
-    fillings: &[&[Filling]],
+    fillings: &[Vec<&Filling>],
     keep: usize,
 ) -> Vec<Arrangement> {
     let items: Vec<Vec<Choice>> =
