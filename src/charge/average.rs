@@ -23,6 +23,11 @@ pub(crate) struct Average {
 }
 
 impl Average {
+    /// Indices of the sites that share the charge.
+    pub(crate) fn sites(&self, orbits: &[Orbit]) -> Vec<usize> {
+        self.group.iter().flat_map(|&index| orbits[index].sites.iter().copied()).collect()
+    }
+
     /// The refusal that names the average.
     pub(crate) fn refusal(&self, orbits: &[Orbit]) -> Diagnostic {
         let labels = self.group.iter().map(|&index| orbits[index].label.as_str());

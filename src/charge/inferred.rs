@@ -71,12 +71,16 @@ impl Inferred {
     fn new(arrangements: Vec<Arrangement>, bound: f64, average: Option<Average>) -> Self {
         let top = arrangements.first().map_or(0.0, |best| best.score);
         let weights: Vec<f64> = arrangements.iter().map(|one| (one.score - top).exp()).collect();
-        let other = average.as_ref().map_or(0.0, |average| (average.score - top).exp());
-        let total: f64 = weights.iter().sum::<f64>() + other;
+        let shared = average.as_ref().map_or(0.0, |average| (average.score - top).exp());
+        let total: f64 = weights.iter().sum::<f64>() + shared;
+        let best = calibration::calibrated(1.0 / total);
+        // What is not the best's is shared among the others in proportion.
+        let rest = |weight: f64| (1.0 - best) * weight / (total - 1.0).max(1e-12);
+        let probability = |(rank, &weight): (usize, &f64)| if rank == 0 { best } else { rest(weight) };
         Self {
             arrangements,
-            probabilities: weights.iter().map(|weight| calibration::calibrated(weight / total)).collect(),
-            average: average.map(|average| (average, other / total)),
+            probabilities: weights.iter().enumerate().map(probability).collect(),
+            average: average.map(|average| (average, rest(shared))),
             is_exact: top >= bound,
         }
     }

@@ -13,6 +13,8 @@ pub struct Reasoning {
     pub probability: f64,
     /// The most likely assignments, the one that was taken first.
     pub candidates: Vec<Candidate>,
+    /// The probability that some sites share an averaged charge, and those sites.
+    pub averaged: Option<(f64, Vec<usize>)>,
     /// Bond-valence sums of the charges, where the positions were used.
     pub bonds: Option<BondValences>,
 }
@@ -41,15 +43,25 @@ impl Reasoning {
                     probability,
                 })
                 .collect(),
+            averaged: found
+                .average
+                .as_ref()
+                .map(|(average, probability)| (*probability, average.sites(orbits))),
             bonds: surroundings
                 .and_then(|surroundings| bond_valence::of_orbits(surroundings, orbits, &found.best().states)),
         }
     }
 
-    /// The probability that a site carries a charge, as far as the candidates tell.
+    /// The probability that a site carries a charge, as far as the candidates tell. Where other sites share an averaged
+    /// charge, this one is taken to carry what it carries in the best candidate.
     #[must_use]
     pub fn site_probability(&self, site: usize, charge: i64) -> f64 {
         let like = self.candidates.iter().filter(|candidate| candidate.charges.get(site) == Some(&charge));
-        like.map(|candidate| candidate.probability).sum::<f64>().min(self.probability.max(0.999))
+        let sum: f64 = like.map(|candidate| candidate.probability).sum();
+        let is_best = self.candidates.first().is_some_and(|best| best.charges.get(site) == Some(&charge));
+        match &self.averaged {
+            Some((probability, sites)) if is_best && !sites.contains(&site) => (sum + probability).min(1.0),
+            _ => sum.min(1.0),
+        }
     }
 }

@@ -81,7 +81,7 @@ fn write_reasons(out: &mut String, material: &Material, parameters: &Parameters)
         bonds.global_instability,
         judged(&bonds)
     )?;
-    write_alternatives(out, &work.alternatives)
+    if reasoning.is_some() { write_alternatives(out, &work.alternatives) } else { Ok(()) }
 }
 
 /// What the index means (Lufaso & Woodward, Acta Cryst. B57, 725 (2001)).
