@@ -61,24 +61,53 @@ pub(crate) struct Evidence<'a> {
     surroundings: Option<&'a Surroundings>,
     pub(crate) kinds: Vec<u64>,
     logs: Vec<Vec<(i64, f64)>>,
+    /// Bond-valence sums of the orbits that can be in positive states, for each state.
+    sums: Vec<(Element, Vec<(i64, f64)>)>,
 }
 
 impl<'a> Evidence<'a> {
     pub(crate) fn new(orbits: &[Orbit], surroundings: Option<&'a Surroundings>) -> Self {
         let Some(surroundings) = surroundings else {
             let logs = vec![Vec::new(); orbits.len()];
-            return Self { surroundings: None, kinds: vec![0; orbits.len()], logs };
+            return Self { surroundings: None, kinds: vec![0; orbits.len()], logs, sums: Vec::new() };
         };
         let log = |index: usize, state: i64| EVIDENCE * log_likelihood(surroundings, orbits, index, state);
         let of_orbit = |index: usize| {
             let list = states(orbits[index].element).iter();
             list.map(|state| (state.charge, log(index, state.charge))).collect()
         };
+        let sums_of = |index: usize| {
+            let element = orbits[index].element;
+            let is_giver = surroundings.environments[index].giving > surroundings.environments[index].taking;
+            // Sites of main-group elements in two states are bonded differently and judged each by itself.
+            if !is_giver || octet_need(element).is_some() {
+                return (element, Vec::new());
+            }
+            let positive = states(element).iter().filter(|state| state.charge > 0);
+            let sum = |state: i64| surroundings.sum(orbits, index, state).filter(|&sum| sum > 0.0);
+            (element, positive.filter_map(|state| Some((state.charge, sum(state.charge)?))).collect())
+        };
         Self {
             surroundings: Some(surroundings),
             kinds: (0..orbits.len()).map(|index| kind(surroundings, orbits, index)).collect(),
             logs: (0..orbits.len()).map(of_orbit).collect(),
+            sums: (0..orbits.len()).map(sums_of).collect(),
         }
+    }
+
+    /// The same where the group carries two states. Then both are judged by one mean and one width, without tails, so
+    /// that among like sites the higher state always goes to the higher sum.
+    pub(crate) fn beside(&self, index: usize, state: i64, pair: Option<(i64, i64)>) -> f64 {
+        let (Some((low, high)), Some((element, sums))) = (pair, self.sums.get(index)) else {
+            return self.of(index, state);
+        };
+        let sum_of = |state: i64| sums.iter().find(|(known, _)| *known == state).map(|(_, sum)| *sum);
+        let (Some(a), Some(b)) = (sum_of(low), sum_of(high)) else { return self.of(index, state) };
+        let (one, other) = (spread(*element, low), spread(*element, high));
+        let spread = Spread { mean: 0.5 * (one.mean + other.mean), width: 0.5 * (one.width + other.width) };
+        #[expect(clippy::cast_precision_loss, reason = "states are small")]
+        let off = ((0.5 * (a + b) / state as f64).ln() - spread.mean) / spread.width;
+        EVIDENCE * softened(-0.5 * off * off - (spread.width / UNMEASURED.width).ln())
     }
 
     /// What the bonds say about a charge of a group between two states.

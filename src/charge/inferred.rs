@@ -24,7 +24,7 @@
 use super::average::{Average, average_of};
 use super::calibration;
 use super::evidence::Evidence;
-use super::neutral::{Choice, Wanted, best_picks};
+use super::neutral::{Choice, Pick, Wanted, best_picks};
 use super::orbit::Orbit;
 use super::prior::{UNCOMMON_SHARE, log_prior};
 use super::states::{neighbours, share, states};
@@ -120,8 +120,12 @@ pub(crate) fn infer(orbits: &[Orbit], surroundings: Option<&Surroundings>) -> Re
         return Err(Diagnostic::error(Code::ChargeElement, message));
     }
     let evidence = Evidence::new(orbits, surroundings);
-    let (found, bound) =
-        best_arrangements(orbits, &evidence.kinds, |index, state| evidence.of(index, state), KEPT);
+    let (found, bound) = best_arrangements(
+        orbits,
+        &evidence.kinds,
+        |index, state, pair| evidence.beside(index, state, pair),
+        KEPT,
+    );
     if found.is_empty() {
         return Err(nothing_neutral(orbits, average_of(orbits, &evidence, 0.0)));
     }
@@ -129,8 +133,12 @@ pub(crate) fn infer(orbits: &[Orbit], surroundings: Option<&Surroundings>) -> Re
     Ok(Inferred::new(found, bound, average))
 }
 
+/// The two states of a group of mixed valence.
+type Pair = Option<(i64, i64)>;
+
 /// The best `keep` neutral arrangements, best first, and an upper bound of the score of all that were not looked at.
-/// `evidence` gives the logarithm of the likelihood of what is seen of an orbit in a state. Orbits of one element and of
+/// `evidence` gives the logarithm of the likelihood of what is seen of an orbit in a state, where it is one of two also
+/// with those two. Orbits of one element and of
 /// equal number in `kinds` belong together.
 ///
 /// Fillings of a group that are [`SLACK`] below its best are looked at only if the arrangements found without them could
@@ -138,7 +146,7 @@ pub(crate) fn infer(orbits: &[Orbit], surroundings: Option<&Surroundings>) -> Re
 pub(crate) fn best_arrangements(
     orbits: &[Orbit],
     kinds: &[u64],
-    evidence: impl Fn(usize, i64) -> f64,
+    evidence: impl Fn(usize, i64, Pair) -> f64,
     keep: usize,
 ) -> (Vec<Arrangement>, f64) {
     let groups = groups(orbits, kinds);
@@ -225,7 +233,7 @@ struct Filling {
 fn fillings(
     orbits: &[Orbit],
     group: &[usize],
-    evidence: &impl Fn(usize, i64) -> f64,
+    evidence: &impl Fn(usize, i64, Pair) -> f64,
     keep: usize,
 ) -> Vec<Filling> {
     let Some(element) = group.first().map(|&index| orbits[index].element) else { return Vec::new() };
@@ -248,14 +256,36 @@ fn fillings(
             continue;
         };
         for (amount, picks) in best_picks(&options, keep + 1, Wanted::Any) {
-            let mixed = picks.into_iter().filter(|pick| !pick.choices.iter().all_equal());
-            list.extend(mixed.take(keep).map(|pick| Filling {
-                choice: Choice { amount, score: pick.score + prior },
-                states: pick.choices.iter().map(|&choice| [low, high][choice.min(1)]).collect(),
-            }));
+            let mixed: Vec<Pick> =
+                picks.into_iter().filter(|pick| !pick.choices.iter().all_equal()).take(keep).collect();
+            list.extend(
+                rescored(group, (low, high), &mixed, evidence).map(|(score, states)| Filling {
+                    choice: Choice { amount, score: score + prior },
+                    states,
+                }),
+            );
         }
     }
     list
+}
+
+/// Scores of ways to spread two states over a group, best first. Which site has which state is decided by comparing the
+/// sites with each other; how well the best way fits is judged site by site, as for a group with one state.
+fn rescored(
+    group: &[usize],
+    (low, high): (i64, i64),
+    picks: &[Pick],
+    evidence: &impl Fn(usize, i64, Pair) -> f64,
+) -> impl Iterator<Item = (f64, Vec<i64>)> {
+    let states = move |pick: &Pick| -> Vec<i64> {
+        pick.choices.iter().map(|&choice| [low, high][choice.min(1)]).collect()
+    };
+    let alone = |pick: &Pick| -> f64 {
+        group.iter().zip(states(pick)).map(|(&index, state)| evidence(index, state, None)).sum()
+    };
+    let best = picks.iter().map(alone).fold(f64::NEG_INFINITY, f64::max);
+    let first = picks.first().map_or(0.0, |pick| pick.score);
+    picks.iter().map(move |pick| (best + pick.score - first, states(pick)))
 }
 
 /// What each state adds to charge and score of each orbit; none if a charge leaves `i64`.
@@ -263,11 +293,12 @@ fn options(
     orbits: &[Orbit],
     group: &[usize],
     states: &[i64],
-    evidence: &impl Fn(usize, i64) -> f64,
+    evidence: &impl Fn(usize, i64, Pair) -> f64,
 ) -> Option<Vec<Vec<Choice>>> {
     let choice = |index: usize, state: i64| {
         let amount = state.checked_mul(orbits[index].count())?;
-        Some(Choice { amount, score: evidence(index, state) })
+        let pair = states.first().copied().zip(states.get(1).copied());
+        Some(Choice { amount, score: evidence(index, state, pair) })
     };
     group.iter().map(|&index| states.iter().map(|&state| choice(index, state)).collect()).collect()
 }
@@ -395,8 +426,8 @@ mod tests {
                 -f64::from(digit)
             };
             let pairs = [
-                (best_arrangements(&orbits, &[], |_, _| 0.0, 3).0, by_enumeration(&orbits, |_, _| 0.0)),
-                (best_arrangements(&orbits, &[], evidence, 3).0, by_enumeration(&orbits, evidence)),
+                (best_arrangements(&orbits, &[], |_, _, _| 0.0, 3).0, by_enumeration(&orbits, |_, _| 0.0)),
+                (best_arrangements(&orbits, &[], |index, state, _| evidence(index, state), 3).0, by_enumeration(&orbits, evidence)),
             ];
             for (found, all) in pairs {
                 prop_assert_eq!(found.len(), all.len().min(3));
