@@ -7,5 +7,5 @@ mod reduce;
 
 pub(crate) use cyclic::group_cyclic;
 pub use lattice::{CellParameters, Lattice, LatticeError};
-pub use neighbours::{Contact, closest_contact, contacts_up_to, contacts_within};
+pub use neighbours::{Contact, Neighbours, closest_contact, contacts_up_to, contacts_within, neighbours_of};
 pub use reduce::Reduced;

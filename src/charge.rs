@@ -5,21 +5,35 @@
 //!
 //! 1. *given* by the user, as in `Ta=5,K=1,O=-2` ([`Given`]);
 //! 2. *stated* by the file;
-//! 3. *inferred* from the composition and the published frequencies of oxidation states ([`states`]).
+//! 3. *inferred* from the composition, the published frequencies of oxidation states ([`states`]) and the lengths of
+//!    the bonds ([`bond_valences`]).
 //!
 //! [`assign`] does all three and refuses with a reason where no answer can be defended.
 
 mod assignment;
+mod average;
+mod bond_valence;
+mod calibration;
+mod electronegativity;
+mod evidence;
 mod given;
 mod inferred;
 mod neutral;
 mod orbit;
+mod parameters;
+mod prior;
+mod reasoning;
+mod sense;
 mod stated;
 mod states;
+mod surroundings;
 
 pub use assignment::{Assignment, Known, Source, assign, charged_formula, charges_text, infer, known};
+pub use bond_valence::{BondValences, OrbitValence, bond_valences};
 pub use given::Given;
-pub use inferred::MIN_LIKELIHOOD_RATIO;
+pub use inferred::{MIN_LIKELIHOOD_RATIO, MIN_PROBABILITY};
+pub use parameters::{Origin, Pair, Parameters};
+pub use reasoning::{Candidate, Reasoning};
 pub use states::{State, share, states};
 
 /// Larger charges, in units of e, are taken for mistakes: 118 is the charge of the heaviest nucleus.

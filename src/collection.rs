@@ -1,5 +1,6 @@
 //! Many inputs: which files a list of paths names, what they hold, and their structures, classified in a stable order.
 
+mod alternatives;
 mod archive;
 mod classification;
 mod contents;
@@ -7,6 +8,7 @@ mod door;
 mod input;
 mod setting;
 
+pub use alternatives::{Alternative, PLAUSIBLE};
 pub use classification::{
     Classification, Material, PARENT_TOLERANCE, ParentLevel, Settings, classify_bytes, classify_input,
     classify_member, classify_unit,

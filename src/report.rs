@@ -3,6 +3,7 @@
 pub mod facets;
 pub mod ladder;
 pub mod materials;
+pub mod reasoning;
 pub mod record;
 pub mod setting;
 pub mod table;

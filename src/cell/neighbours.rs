@@ -74,6 +74,38 @@ pub fn contacts_up_to(
     Ok(Ok(contacts))
 }
 
+/// The neighbours of one point: index and distance in Å of every point at most `cutoff` Å away, nearest first.
+pub type Neighbours = Vec<(usize, f64)>;
+
+/// The neighbours of some of the points, in the order of `centres`. Own images count; a point itself does not.
+///
+/// # Errors
+/// As [`contacts_within`].
+pub fn neighbours_of(
+    lattice: &Lattice,
+    positions: &[Vector3<f64>],
+    centres: &[usize],
+    cutoff: f64,
+) -> Result<Vec<Neighbours>, LatticeError> {
+    let reduced = Reduced::new(lattice)?;
+    let frame = reduced.lattice();
+    let grid = Grid::new(frame, lattice, positions, cutoff);
+    let around = |&centre: &usize| {
+        let mut found = Neighbours::new();
+        let Some(home) = grid.points.get(centre) else { return found };
+        grid.visit(home, |other, vector| {
+            let squared = vector.norm_squared();
+            if squared <= cutoff * cutoff && (other != centre || squared >= 1e-12) {
+                found.push((other, squared.sqrt()));
+            }
+            true
+        });
+        found.sort_by(|a, b| a.1.total_cmp(&b.1).then(a.0.cmp(&b.0)));
+        found
+    };
+    Ok(centres.iter().map(around).collect())
+}
+
 /// The nearest pair of points no further apart than `cutoff` Å, if there is one.
 ///
 /// # Errors
@@ -193,6 +225,9 @@ mod tests {
             }}
             let found = contacts_within(&lattice, &positions, cutoff).expect("a good lattice");
             prop_assert_eq!(found.len() * 2, directed);
+            let all: Vec<usize> = (0..positions.len()).collect();
+            let around = neighbours_of(&lattice, &positions, &all, cutoff).expect("a good lattice");
+            prop_assert_eq!(around.iter().map(Vec::len).sum::<usize>(), directed);
         }
     }
 }

@@ -1,9 +1,15 @@
 //! The charge of every site, and where it comes from.
 
+use super::evidence::is_bare_ammonium;
 use super::given::Given;
-use super::inferred::{self, Inferred, MIN_LIKELIHOOD_RATIO};
+use super::inferred::{self, Inferred, MIN_LIKELIHOOD_RATIO, MIN_PROBABILITY};
 use super::orbit::Orbit;
+use super::parameters::Parameters;
+use super::reasoning::Reasoning;
+use super::sense;
 use super::stated::{self, Stated};
+use super::surroundings::Surroundings;
+use crate::cell::Lattice;
 use crate::crystal::{Element, Formula, Site};
 use crate::diagnostic::{Code, Diagnostic};
 use itertools::Itertools;
@@ -19,7 +25,7 @@ pub enum Source {
     /// Stated by the file.
     #[serde(rename = "file")]
     Stated,
-    /// Inferred from the composition.
+    /// Inferred from composition and bonds.
     #[serde(rename = "inferred")]
     Inferred,
 }
@@ -31,7 +37,7 @@ impl Source {
         match self {
             Self::Given => "given on the command line",
             Self::Stated => "stated by the file",
-            Self::Inferred => "inferred from the composition; --charges fixes them",
+            Self::Inferred => "inferred; --charges fixes them",
         }
     }
 }
@@ -55,9 +61,11 @@ pub struct Assignment {
     pub source: Source,
     /// What was noticed on the way.
     pub diagnostics: Vec<Diagnostic>,
+    /// How the inference went, where there was one.
+    pub reasoning: Option<Reasoning>,
     /// The second most likely charges of each site, if charges were inferred and there was a choice.
     pub runner_up: Option<Vec<i64>>,
-    /// How many times as likely the charges are as the runner-up; at least [`MIN_LIKELIHOOD_RATIO`].
+    /// How many times as likely the charges are as the runner-up.
     pub margin: Option<f64>,
 }
 
@@ -88,7 +96,7 @@ pub struct Assignment {
 pub fn assign(sites: &[Site], orbits: &[usize], given: Option<&Given>) -> Result<Assignment, Diagnostic> {
     match known(sites, orbits, given)? {
         Known::Settled(assignment) => Ok(assignment),
-        Known::Open(remark) => infer(sites, orbits, remark),
+        Known::Open(remark) => infer(sites, orbits, None, remark),
     }
 }
 
@@ -114,6 +122,7 @@ pub fn known(sites: &[Site], orbits: &[usize], given: Option<&Given>) -> Result<
             charges,
             source,
             diagnostics: Vec::new(),
+            reasoning: None,
             runner_up: None,
             margin: None,
         }))
@@ -189,7 +198,7 @@ fn charges_of<'a>(
     pairs.map(|(site, charge)| (site.label.as_str(), *charge))
 }
 
-fn per_site(orbits: &[Orbit], states: &[i64]) -> Vec<i64> {
+pub(super) fn per_site(orbits: &[Orbit], states: &[i64]) -> Vec<i64> {
     let mut charges = vec![0; orbits.iter().map(|orbit| orbit.sites.len()).sum()];
     for (orbit, &state) in orbits.iter().zip(states) {
         for &site in &orbit.sites {
@@ -213,8 +222,8 @@ fn propose(refusal: Diagnostic, sites: &[Site], orbits: &[Orbit]) -> Diagnostic 
     if refusal.hint.is_some() {
         return refusal;
     }
-    let found = inferred::infer(orbits).ok();
-    match found.and_then(|found| option_text(sites, &per_site(orbits, &found.best.states))) {
+    let found = inferred::infer(orbits, None).ok();
+    match found.and_then(|found| option_text(sites, &per_site(orbits, &found.best().states))) {
         Some(option) => refusal.hint(option),
         None => refusal,
     }
@@ -224,21 +233,72 @@ fn propose(refusal: Diagnostic, sites: &[Site], orbits: &[Orbit]) -> Diagnostic 
 ///
 /// # Errors
 /// As [`assign`], for the inference.
-pub fn infer(sites: &[Site], orbits: &[usize], remark: Option<Diagnostic>) -> Result<Assignment, Diagnostic> {
+pub fn infer(
+    sites: &[Site],
+    orbits: &[usize],
+    positions: Option<(&Lattice, &Parameters)>,
+    remark: Option<Diagnostic>,
+) -> Result<Assignment, Diagnostic> {
     let orbits = &Orbit::collect(sites, orbits)?;
     check_not_metal(sites, orbits).map_err(|refusal| propose(refusal, sites, orbits))?;
-    let found = inferred::infer(orbits)?;
-    let charges = per_site(orbits, &found.best.states);
-    let runner_up = found.second.as_ref().map(|second| per_site(orbits, &second.states));
+    let surroundings = positions
+        .and_then(|(lattice, parameters)| Surroundings::find(lattice, sites, orbits, parameters).ok());
+    let found = inferred::infer(orbits, surroundings.as_ref())?;
+    let charges = per_site(orbits, &found.best().states);
+    let runner_up = found.second().map(|second| per_site(orbits, &second.states));
     let margin = found.ratio();
-    if let (Some(runner_up), Some(margin)) = (&runner_up, margin)
-        && margin < MIN_LIKELIHOOD_RATIO
+    if let (Some(_), Some((average, probability))) = (&surroundings, &found.average)
+        && *probability > found.probability()
     {
+        let refusal = average.refusal(orbits);
+        return Err(match option_text(sites, &charges) {
+            Some(option) => refusal.hint(option),
+            None => refusal,
+        });
+    }
+    let is_settled = match margin {
+        Some(margin) if surroundings.is_none() => margin >= MIN_LIKELIHOOD_RATIO,
+        _ => found.probability() >= MIN_PROBABILITY,
+    };
+    if let (Some(runner_up), Some(margin), false) = (&runner_up, margin, is_settled) {
         return Err(ambiguous(sites, &charges, runner_up, margin, &found));
     }
     let mut diagnostics: Vec<Diagnostic> = remark.into_iter().collect();
-    diagnostics.extend(inferred::remarks(orbits, &found.best));
-    Ok(Assignment { charges, source: Source::Inferred, diagnostics, runner_up, margin })
+    diagnostics.extend(inferred::remarks(orbits, found.best(), surroundings.is_some()));
+    if let (Some(_), Some((average, probability))) = (&surroundings, &found.average)
+        && *probability >= PLAUSIBLE_AVERAGE
+    {
+        let message = format!("with a probability of {probability:.2} {}", average.refusal(orbits).message);
+        diagnostics.push(Diagnostic::warning(Code::ChargeAveraged, message));
+    }
+    if !found.is_exact {
+        let message = "the search for charges was cut short: a better assignment may exist";
+        diagnostics.push(Diagnostic::warning(Code::ChargeSearch, message));
+    }
+    if let Some(surroundings) = &surroundings {
+        diagnostics.extend(bare_ammonium(orbits, surroundings));
+    }
+    diagnostics.extend(sense::remarks(orbits, &found.best().states));
+    let reasoning = Some(Reasoning::new(orbits, &found, surroundings.as_ref()));
+    Ok(Assignment { charges, source: Source::Inferred, diagnostics, reasoning, runner_up, margin })
+}
+
+/// An averaged charge is mentioned from this probability on.
+const PLAUSIBLE_AVERAGE: f64 = 0.05;
+
+/// A warning where ammonium ions lack their hydrogen atoms.
+fn bare_ammonium(orbits: &[Orbit], surroundings: &Surroundings) -> Option<Diagnostic> {
+    let pairs = orbits.iter().zip(&surroundings.environments);
+    let bare = pairs.filter(|(orbit, environment)| is_bare_ammonium(orbit.element, environment));
+    let labels: Vec<&str> = bare.map(|(orbit, _)| orbit.label.as_str()).collect();
+    if labels.is_empty() {
+        return None;
+    }
+    let message = format!(
+        "nitrogen without any bond was taken for an ammonium ion of charge +1 whose hydrogen atoms are missing: {}",
+        super::listing(labels)
+    );
+    Some(Diagnostic::warning(Code::ChargeHydrogen, message))
 }
 
 fn check_not_metal(sites: &[Site], orbits: &[Orbit]) -> Result<(), Diagnostic> {
@@ -268,14 +328,16 @@ fn ambiguous(
     } else {
         format!("only {margin:.2} times as likely as")
     };
-    let only_swapped = found.second.as_ref().is_some_and(|second| {
-        second.states.iter().sorted().eq(found.best.states.iter().sorted()) && margin < 1.005
+    let only_swapped = found.second().is_some_and(|second| {
+        second.states.iter().sorted().eq(found.best().states.iter().sorted()) && margin < 1.005
     });
-    let reason =
-        if only_swapped { "; the composition cannot tell which site carries which charge" } else { "" };
+    let reason = if only_swapped { "; nothing tells which site carries which charge" } else { "" };
     let refusal = Diagnostic::error(
         Code::ChargeAmbiguous,
-        format!("{best} is {how} {second}, and the limit is {MIN_LIKELIHOOD_RATIO} times{reason}"),
+        format!(
+            "{best} is {how} {second} and has a probability of {:.2}, below the limit of {MIN_PROBABILITY}{reason}",
+            found.probability()
+        ),
     );
     match option_text(sites, charges) {
         Some(option) => refusal.hint(option),
@@ -519,11 +581,11 @@ mod tests {
         let refusal = run(&[("Cu1", 1), ("Fe1", 1), ("O1", 2)], None).expect_err("close");
         assert_eq!(refusal.code, Code::ChargeAmbiguous);
         assert!(refusal.message.contains("Cu=1,Fe=3,O=-2 is only 1."), "{}", refusal.message);
-        assert!(refusal.message.contains("Cu=2,Fe=2,O=-2, and the limit is 2 times"), "{}", refusal.message);
+        assert!(refusal.message.contains("Cu=2,Fe=2,O=-2 and has a probability of"), "{}", refusal.message);
         assert_eq!(refusal.hint.as_deref(), Some("--charges 'Cu=1,Fe=3,O=-2'"));
         let refusal = run(&[("Sb1", 4), ("Sb2", 4), ("O1", 16)], None).expect_err("tie");
         assert!(
-            refusal.message.contains("cannot tell which site carries which charge"),
+            refusal.message.contains("nothing tells which site carries which charge"),
             "{}",
             refusal.message
         );

@@ -1,44 +1,47 @@
-//! Which charges does the composition suggest?
+//! Which charges do composition and bonds suggest?
 //!
 //! Every orbit (set of symmetry-equivalent sites) takes one whole state. An arrangement of states over the orbits is
 //! scored by
 //!
 //! ```text
-//! score = Σ_elements [ Σ_orbits (n_orbit / n_element) ln p(orbit, state) − ln 20 · (states of the element − 1) ]
+//! score = Σ_groups [ mean over the states of the group of ln p(state) − ln(odds) · (states − 1) ] + w Σ_orbits ln L(orbit, state)
 //! ```
 //!
-//! where p is the part of the element's published reports that have the state. The inner weights add up to one per
-//! element, not per atom: the atoms of one element in one crystal share their surroundings and are not independent
-//! witnesses. One element may carry two states, which must be neighbours (see `neighbours`); one oxide in twenty is of
-//! mixed valence, hence ln 20. Of all neutral arrangements the best two are found exactly, and the best is accepted only
-//! if it is [`MIN_LIKELIHOOD_RATIO`] times as likely as the second.
+//! where p is the part of the element's published reports that have the state, and L the likelihood of what is seen of
+//! the bonds of the orbit (see `evidence`; without positions the last sum is left out). A group is the orbits of one
+//! element, of nonmetals those that are bonded alike. Its atoms share their surroundings and are not independent
+//! witnesses of how common a state is, so each state counts once and not once for every atom. A group may carry two
+//! states, which must be neighbours (see `neighbours`), at odds of [`MIXED_VALENCE_ODDS`]; states more than one apart
+//! at longer odds where the element is known to have the one between.
 //!
-//! Measured on 3,986 oxides labelled by bond valence (George et al., CC BY 4.0; the labels are not truth): 3,758 agree,
-//! 56 differ, 172 are refused. With a limit of 1.5 instead of 2, 3,775 agree and 69 differ. A weight per atom of the
-//! formula unit does as well on these oxides (3,777 and 57) but punishes a rare state of many atoms: pyrite, Fe +2 and
-//! S −1 in textbooks, would become Fe +4 and S −2 at odds of 15, where a weight per element refuses.
-//!
-//! The composition cannot tell which of two inequivalent sets of equal size carries which state; these tie, and are
-//! refused. The place for evidence from bond lengths is the argument of `best_arrangements`.
+//! Of all neutral arrangements the best are found by dynamic programming over the total charge (see `neutral`): the work
+//! grows with orbits × states × distinct totals. Groups of more than [`MAX_MIXED_ORBITS`] orbits are given one state
+//! throughout; what else is left out to bound the time is known to score below a bound, and where the best found
+//! does not reach that bound the answer says so. The probability of an arrangement is its share
+//! among the [`KEPT`] best, with the case that one element has no whole charge at all as one more; how well it holds
+//! is measured, see DEVELOPERS.md.
 
-use super::neutral::{Choice, Wanted, best_picks};
+use super::average::{Average, average_of};
+use super::calibration;
+use super::evidence::Evidence;
+use super::neutral::{Choice, Pick, Wanted, best_picks};
 use super::orbit::Orbit;
+use super::prior::{UNCOMMON_SHARE, log_prior};
 use super::states::{neighbours, share, states};
+use super::surroundings::Surroundings;
 use crate::crystal::Element;
 use crate::diagnostic::{Code, Diagnostic};
 use itertools::Itertools;
+use std::collections::BTreeSet;
 
-/// The best arrangement of states must be this many times as likely as the second best.
+/// An assignment is refused below this probability.
+pub const MIN_PROBABILITY: f64 = 0.4;
+
+/// Without bond lengths the best arrangement of states must be this many times as likely as the second best.
 pub const MIN_LIKELIHOOD_RATIO: f64 = 2.0;
 
-/// Prior odds against a second state of one element; about one oxide in twenty is of mixed valence.
-const MIXED_VALENCE_ODDS: f64 = 20.0;
-
-/// A state with a smaller part of its element's reports is called uncommon.
-const UNCOMMON_SHARE: f64 = 0.01;
-
 /// Elements with more orbits than this are given one state throughout.
-const MAX_MIXED_ORBITS: usize = 64;
+pub(super) const MAX_MIXED_ORBITS: usize = 64;
 
 /// States of all orbits, with the logarithm of their likelihood.
 #[derive(Debug, Clone, PartialEq)]
@@ -48,30 +51,64 @@ pub(crate) struct Arrangement {
     pub(crate) states: Vec<i64>,
 }
 
-/// What the composition suggests.
+/// How many arrangements are kept. The probability of the others is left out of the sum.
+const KEPT: usize = 12;
+
+/// What composition and bonds suggest.
 #[derive(Debug, Clone, PartialEq)]
 pub(crate) struct Inferred {
-    pub(crate) best: Arrangement,
-    pub(crate) second: Option<Arrangement>,
+    /// The best arrangements, best first; at least one.
+    pub(crate) arrangements: Vec<Arrangement>,
+    /// The probability of each.
+    pub(crate) probabilities: Vec<f64>,
+    /// The best case with an averaged charge, if there is one, and its probability.
+    pub(crate) average: Option<(Average, f64)>,
+    /// Whether no arrangement that was not looked at can be better than the best.
+    pub(crate) is_exact: bool,
 }
 
 impl Inferred {
+    fn new(arrangements: Vec<Arrangement>, bound: f64, average: Option<Average>) -> Self {
+        let top = arrangements.first().map_or(0.0, |best| best.score);
+        let weights: Vec<f64> = arrangements.iter().map(|one| (one.score - top).exp()).collect();
+        let shared = average.as_ref().map_or(0.0, |average| (average.score - top).exp());
+        let total: f64 = weights.iter().sum::<f64>() + shared;
+        let best = calibration::calibrated(1.0 / total);
+        // What is not the best's is shared among the others in proportion.
+        let rest = |weight: f64| (1.0 - best) * weight / (total - 1.0).max(1e-12);
+        let probability = |(rank, &weight): (usize, &f64)| if rank == 0 { best } else { rest(weight) };
+        Self {
+            arrangements,
+            probabilities: weights.iter().enumerate().map(probability).collect(),
+            average: average.map(|average| (average, rest(shared))),
+            is_exact: top >= bound,
+        }
+    }
+
+    pub(crate) fn best(&self) -> &Arrangement {
+        &self.arrangements[0]
+    }
+
+    pub(crate) fn second(&self) -> Option<&Arrangement> {
+        self.arrangements.get(1)
+    }
+
+    /// The probability of the best arrangement.
+    pub(crate) fn probability(&self) -> f64 {
+        self.probabilities.first().copied().unwrap_or(0.0)
+    }
+
     /// How many times as likely the best arrangement is as the second.
     pub(crate) fn ratio(&self) -> Option<f64> {
-        self.second.as_ref().map(|second| (self.best.score - second.score).exp())
+        self.second().map(|second| (self.best().score - second.score).exp())
     }
 }
 
-/// The logarithm of the published share of a state.
-pub(crate) fn log_share(orbit: &Orbit, state: i64) -> Option<f64> {
-    share(orbit.element, state).map(f64::ln)
-}
-
-/// The best two neutral arrangements, without judging how far they are apart.
+/// The best neutral arrangements, without judging how far they are apart.
 ///
 /// # Errors
 /// An element without tabulated states; no neutral arrangement, or none without averaged charges.
-pub(crate) fn infer(orbits: &[Orbit]) -> Result<Inferred, Diagnostic> {
+pub(crate) fn infer(orbits: &[Orbit], surroundings: Option<&Surroundings>) -> Result<Inferred, Diagnostic> {
     let unknown: Vec<_> = orbits
         .iter()
         .map(|orbit| orbit.element)
@@ -82,45 +119,108 @@ pub(crate) fn infer(orbits: &[Orbit]) -> Result<Inferred, Diagnostic> {
         let message = format!("no oxidation state is tabulated for {}", unknown.iter().join(", "));
         return Err(Diagnostic::error(Code::ChargeElement, message));
     }
-    let mut found = best_arrangements(orbits, log_share, 2).into_iter();
-    match found.next() {
-        Some(best) => Ok(Inferred { best, second: found.next() }),
-        None => Err(nothing_neutral(orbits)),
+    let evidence = Evidence::new(orbits, surroundings);
+    let (found, bound) = best_arrangements(
+        orbits,
+        &evidence.kinds,
+        |index, state, pair| evidence.beside(index, state, pair),
+        KEPT,
+    );
+    if found.is_empty() {
+        return Err(nothing_neutral(orbits, average_of(orbits, &evidence, 0.0)));
     }
+    let average = average_of(orbits, &evidence, UNCOMMON_SHARE);
+    Ok(Inferred::new(found, bound, average))
 }
 
-/// The orbits of each element; orbits are ordered by element.
-fn by_element(orbits: &[Orbit]) -> impl Iterator<Item = &[Orbit]> {
-    orbits.chunk_by(|a, b| a.element == b.element)
-}
+/// The two states of a group of mixed valence.
+type Pair = Option<(i64, i64)>;
 
-fn count(orbits: &[Orbit]) -> i64 {
-    orbits.iter().fold(0, |sum, orbit| sum.saturating_add(orbit.count()))
-}
-
-/// The best `keep` neutral arrangements, best first. `likelihood` gives the logarithm of the likelihood that an orbit
-/// is in a state, or none if it cannot be.
+/// The best `keep` neutral arrangements, best first, and an upper bound of the score of all that were not looked at.
+/// `evidence` gives the logarithm of the likelihood of what is seen of an orbit in a state, where it is one of two also
+/// with those two. Orbits of one element and of
+/// equal number in `kinds` belong together.
+///
+/// Fillings of a group that are [`SLACK`] below its best are looked at only if the arrangements found without them could
+/// be beaten; of more than [`MAX_FILLINGS`] of one group only the best for each total charge are, which bounds the time.
 pub(crate) fn best_arrangements(
     orbits: &[Orbit],
-    likelihood: impl Fn(&Orbit, i64) -> Option<f64>,
+    kinds: &[u64],
+    evidence: impl Fn(usize, i64, Pair) -> f64,
+    keep: usize,
+) -> (Vec<Arrangement>, f64) {
+    let groups = groups(orbits, kinds);
+    let mut fillings: Vec<_> = groups.iter().map(|group| fillings(orbits, group, &evidence, keep)).collect();
+    for list in &mut fillings {
+        list.sort_by(|a, b| b.choice.score.total_cmp(&a.choice.score));
+    }
+    let (near, bound) = shortened(&fillings, SLACK);
+    let found = arrangements(orbits.len(), &groups, &near, keep);
+    if found.len() == keep && found.iter().all(|one| one.score >= bound) {
+        return (found, bound);
+    }
+    let (all, bound) = shortened(&fillings, f64::INFINITY);
+    (arrangements(orbits.len(), &groups, &all, keep), bound)
+}
+
+/// Fillings this far below the best of their group are set aside at first.
+pub(super) const SLACK: f64 = 25.0;
+
+/// No more fillings of one group than this are looked at.
+const MAX_FILLINGS: usize = 200;
+
+/// The fillings near the best of each group, and the highest score that an arrangement with another one can have.
+/// Without slack the best filling of every total charge is there, so that whatever can be neutral is found.
+fn shortened(fillings: &[Vec<Filling>], slack: f64) -> (Vec<Vec<&Filling>>, f64) {
+    let best = |list: &[Filling]| list.first().map_or(f64::NEG_INFINITY, |filling| filling.choice.score);
+    let sum: f64 = fillings.iter().map(|list| best(list)).sum();
+    let mut bound = f64::NEG_INFINITY;
+    let kept = fillings.iter().map(|list| {
+        let mut amounts = BTreeSet::new();
+        let mut kept: Vec<&Filling> = Vec::new();
+        for filling in list {
+            let is_first = amounts.insert(filling.choice.amount) && slack.is_infinite();
+            let is_near = kept.len() < MAX_FILLINGS && filling.choice.score >= best(list) - slack;
+            if is_first || is_near {
+                kept.push(filling);
+            } else {
+                bound = bound.max(sum - best(list) + filling.choice.score);
+            }
+        }
+        kept
+    });
+    (kept.collect(), bound)
+}
+
+fn arrangements(
+    number: usize,
+    groups: &[Vec<usize>],
+    fillings: &[Vec<&Filling>],
     keep: usize,
 ) -> Vec<Arrangement> {
-    let fillings: Vec<_> = by_element(orbits).map(|group| fillings(group, &likelihood, keep)).collect();
     let items: Vec<Vec<Choice>> =
         fillings.iter().map(|list| list.iter().map(|filling| filling.choice).collect()).collect();
     let picks = best_picks(&items, keep, Wanted::Total(0)).remove(&0).unwrap_or_default();
     picks
         .into_iter()
-        .map(|pick| Arrangement {
-            score: pick.score,
-            states: pick
-                .choices
-                .iter()
-                .zip(&fillings)
-                .flat_map(|(&choice, list)| list[choice].states.iter().copied())
-                .collect(),
+        .map(|pick| {
+            let mut states = vec![0; number];
+            for ((group, list), &choice) in groups.iter().zip(fillings).zip(&pick.choices) {
+                for (&index, &state) in group.iter().zip(&list[choice].states) {
+                    states[index] = state;
+                }
+            }
+            Arrangement { score: pick.score, states }
         })
         .collect()
+}
+
+/// The orbits that belong together, by index.
+pub(super) fn groups(orbits: &[Orbit], kinds: &[u64]) -> Vec<Vec<usize>> {
+    let key = |index: usize| (orbits[index].element, kinds.get(index).copied().unwrap_or(0));
+    let mut order: Vec<usize> = (0..orbits.len()).collect();
+    order.sort_by_key(|&index| (key(index), index));
+    order.chunk_by(|&a, &b| key(a) == key(b)).map(<[usize]>::to_vec).collect()
 }
 
 /// States of the orbits of one element, with their total charge and score.
@@ -129,16 +229,21 @@ struct Filling {
     states: Vec<i64>,
 }
 
-/// All fillings of an element's orbits with one state; of those with two neighbouring states the best `keep` for each
-/// total charge.
-fn fillings(group: &[Orbit], likelihood: &impl Fn(&Orbit, i64) -> Option<f64>, keep: usize) -> Vec<Filling> {
-    let Some(element) = group.first().map(|orbit| orbit.element) else { return Vec::new() };
+/// All fillings of a group with one state; of those with two neighbouring states the best `keep` for each total charge.
+fn fillings(
+    orbits: &[Orbit],
+    group: &[usize],
+    evidence: &impl Fn(usize, i64, Pair) -> f64,
+    keep: usize,
+) -> Vec<Filling> {
+    let Some(element) = group.first().map(|&index| orbits[index].element) else { return Vec::new() };
     let mut list: Vec<Filling> = states(element)
         .iter()
         .filter_map(|state| {
-            let options = options(group, &[state.charge], likelihood)?;
+            let options = options(orbits, group, &[state.charge], evidence)?;
             let amount = options.iter().try_fold(0_i64, |sum, option| sum.checked_add(option[0].amount))?;
-            let score = options.iter().map(|option| option[0].score).sum();
+            let score = options.iter().map(|option| option[0].score).sum::<f64>();
+            let score = score + log_prior(element, &[state.charge])?;
             Some(Filling { choice: Choice { amount, score }, states: vec![state.charge; group.len()] })
         })
         .collect();
@@ -146,59 +251,64 @@ fn fillings(group: &[Orbit], likelihood: &impl Fn(&Orbit, i64) -> Option<f64>, k
         return list;
     }
     for (low, high) in neighbours(element) {
-        let Some(options) = options(group, &[low, high], likelihood) else { continue };
-        for (amount, picks) in best_picks(&options, keep, Wanted::Any) {
-            list.extend(picks.into_iter().filter(|pick| !pick.choices.iter().all_equal()).map(|pick| {
-                Filling {
-                    choice: Choice { amount, score: pick.score - MIXED_VALENCE_ODDS.ln() },
-                    states: pick.choices.iter().map(|&choice| [low, high][choice.min(1)]).collect(),
-                }
-            }));
+        let prior = log_prior(element, &[low, high]);
+        let (Some(options), Some(prior)) = (options(orbits, group, &[low, high], evidence), prior) else {
+            continue;
+        };
+        for (amount, picks) in best_picks(&options, keep + 1, Wanted::Any) {
+            let mixed: Vec<Pick> =
+                picks.into_iter().filter(|pick| !pick.choices.iter().all_equal()).take(keep).collect();
+            list.extend(
+                rescored(group, (low, high), &mixed, evidence).map(|(score, states)| Filling {
+                    choice: Choice { amount, score: score + prior },
+                    states,
+                }),
+            );
         }
     }
     list
 }
 
-/// What each state adds to charge and score of each orbit; none if an orbit cannot be in one of them.
-#[expect(clippy::cast_precision_loss, reason = "counts of sites are far below 2^52")]
-fn options(
-    group: &[Orbit],
-    states: &[i64],
-    likelihood: &impl Fn(&Orbit, i64) -> Option<f64>,
-) -> Option<Vec<Vec<Choice>>> {
-    let total = count(group) as f64;
-    let choice = |orbit: &Orbit, state: i64| {
-        let amount = state.checked_mul(orbit.count())?;
-        let score = likelihood(orbit, state)? * (orbit.count() as f64 / total);
-        Some(Choice { amount, score })
+/// Scores of ways to spread two states over a group, best first. Which site has which state is decided by comparing the
+/// sites with each other; how well the best way fits is judged site by site, as for a group with one state.
+fn rescored(
+    group: &[usize],
+    (low, high): (i64, i64),
+    picks: &[Pick],
+    evidence: &impl Fn(usize, i64, Pair) -> f64,
+) -> impl Iterator<Item = (f64, Vec<i64>)> {
+    let states = move |pick: &Pick| -> Vec<i64> {
+        pick.choices.iter().map(|&choice| [low, high][choice.min(1)]).collect()
     };
-    group.iter().map(|orbit| states.iter().map(|&state| choice(orbit, state)).collect()).collect()
+    let alone = |pick: &Pick| -> f64 {
+        group.iter().zip(states(pick)).map(|(&index, state)| evidence(index, state, None)).sum()
+    };
+    let best = picks.iter().map(alone).fold(f64::NEG_INFINITY, f64::max);
+    let first = picks.first().map_or(0.0, |pick| pick.score);
+    picks.iter().map(move |pick| (best + pick.score - first, states(pick)))
+}
+
+/// What each state adds to charge and score of each orbit; none if a charge leaves `i64`.
+fn options(
+    orbits: &[Orbit],
+    group: &[usize],
+    states: &[i64],
+    evidence: &impl Fn(usize, i64, Pair) -> f64,
+) -> Option<Vec<Vec<Choice>>> {
+    let choice = |index: usize, state: i64| {
+        let amount = state.checked_mul(orbits[index].count())?;
+        let pair = states.first().copied().zip(states.get(1).copied());
+        Some(Choice { amount, score: evidence(index, state, pair) })
+    };
+    group.iter().map(|&index| states.iter().map(|&state| choice(index, state)).collect()).collect()
 }
 
 /// The refusal when no arrangement is neutral: it names the element that an average would save, if there is one.
-fn nothing_neutral(orbits: &[Orbit]) -> Diagnostic {
-    let groups: Vec<&[Orbit]> = by_element(orbits).collect();
-    let averages = groups.iter().filter_map(|group| average(&groups, group));
-    if let Some(average) = averages.max_by(|a, b| a.score.total_cmp(&b.score)) {
-        let labels = average.group.iter().map(|orbit| orbit.label.as_str());
-        let (numerator, denominator) = average.value;
-        let limit = if average.group.len() > MAX_MIXED_ORBITS {
-            format!("; an element on more than {MAX_MIXED_ORBITS} sets is given one charge")
-        } else {
-            String::new()
-        };
-        return Diagnostic::error(
-            Code::ChargeAveraged,
-            format!(
-                "a neutral cell needs an average charge of {numerator}/{denominator} on {} ({} of equivalent sites: {}), \
-                 and equivalent sites must carry one whole charge{limit}",
-                average.group.first().map_or("", |orbit| orbit.element.symbol()),
-                plural(average.group.len(), "set"),
-                super::listing(labels),
-            ),
-        );
+fn nothing_neutral(orbits: &[Orbit], average: Option<Average>) -> Diagnostic {
+    if let Some(average) = average {
+        return average.refusal(orbits);
     }
-    let known = groups.iter().filter_map(|group| group.first()).map(|orbit| orbit.element);
+    let known = orbits.iter().map(|orbit| orbit.element).dedup();
     let known = known.map(|element| {
         format!("{element} ({})", states(element).iter().map(|state| format!("{:+}", state.charge)).join(" "))
     });
@@ -206,59 +316,8 @@ fn nothing_neutral(orbits: &[Orbit]) -> Diagnostic {
     Diagnostic::error(Code::ChargeNone, message)
 }
 
-fn plural(count: usize, noun: &str) -> String {
-    if count == 1 { format!("1 {noun}") } else { format!("{count} {noun}s") }
-}
-
-struct Average<'a> {
-    group: &'a [Orbit],
-    value: (i64, i64),
-    score: f64,
-}
-
-/// The most likely fractional charge between two neighbouring states of one sign that makes the cell neutral when every other
-/// element has one whole state.
-#[expect(clippy::cast_precision_loss, reason = "charges and counts of sites are far below 2^52")]
-fn average<'a>(groups: &[&'a [Orbit]], group: &'a [Orbit]) -> Option<Average<'a>> {
-    let element = group.first()?.element;
-    let number = count(group);
-    let others: Vec<Vec<Choice>> = groups
-        .iter()
-        .filter(|other| other.first().map(|orbit| orbit.element) != Some(element))
-        .map(|other| {
-            let first = other.first()?;
-            let choice = |charge: i64| {
-                Some(Choice { amount: charge.checked_mul(count(other))?, score: log_share(first, charge)? })
-            };
-            Some(states(first.element).iter().filter_map(|state| choice(state.charge)).collect())
-        })
-        .collect::<Option<_>>()?;
-    let mut best: Option<Average> = None;
-    for (sum, picks) in best_picks(&others, 1, Wanted::Any) {
-        let (Some(pick), Some(needed)) = (picks.first(), sum.checked_neg()) else { continue };
-        if needed % number == 0 {
-            continue;
-        }
-        // An average of a positive and a negative state is no mixed valence.
-        for (low, high) in neighbours(element).into_iter().filter(|(low, high)| low.signum() == high.signum())
-        {
-            let part = (needed as f64 / number as f64 - low as f64) / (high - low) as f64;
-            if !(0.0..=1.0).contains(&part) {
-                continue;
-            }
-            let (Some(low), Some(high)) = (share(element, low), share(element, high)) else { continue };
-            let score = pick.score + (1.0 - part) * low.ln() + part * high.ln();
-            if best.as_ref().is_none_or(|best| score > best.score) {
-                let divisor = num_integer::gcd(needed, number);
-                best = Some(Average { group, value: (needed / divisor, number / divisor), score });
-            }
-        }
-    }
-    best
-}
-
 /// A note that charges were inferred, a warning where a state is uncommon or an element carries several.
-pub(crate) fn remarks(orbits: &[Orbit], arrangement: &Arrangement) -> Vec<Diagnostic> {
+pub(crate) fn remarks(orbits: &[Orbit], arrangement: &Arrangement, has_bonds: bool) -> Vec<Diagnostic> {
     let pairs = || orbits.iter().zip(&arrangement.states).map(|(orbit, &state)| (orbit, state));
     let uncommon: Vec<String> = pairs()
         .map(|(orbit, state)| (orbit.element, state))
@@ -267,7 +326,11 @@ pub(crate) fn remarks(orbits: &[Orbit], arrangement: &Arrangement) -> Vec<Diagno
         .filter(|(_, _, share)| *share < UNCOMMON_SHARE)
         .map(|(element, state, share)| format!("{element} {state:+} ({:.2} %)", share * 100.0))
         .collect();
-    let inferred = "charges were inferred from the composition alone";
+    let inferred = if has_bonds {
+        "charges were inferred from composition and bond lengths"
+    } else {
+        "charges were inferred from the composition alone"
+    };
     let mut remarks = vec![if uncommon.is_empty() {
         Diagnostic::note(Code::ChargeInferred, inferred)
     } else {
@@ -320,10 +383,7 @@ mod tests {
     }
 
     /// All arrangements written out: every orbit in every state, the rules of the module applied afterwards.
-    fn by_enumeration(orbits: &[Orbit], likelihood: impl Fn(&Orbit, i64) -> Option<f64>) -> Vec<Arrangement> {
-        let total = |element: Element| -> i64 {
-            orbits.iter().filter(|orbit| orbit.element == element).map(Orbit::count).sum()
-        };
+    fn by_enumeration(orbits: &[Orbit], evidence: impl Fn(usize, i64) -> f64) -> Vec<Arrangement> {
         orbits
             .iter()
             .map(|orbit| states(orbit.element).iter().map(|state| state.charge))
@@ -332,26 +392,17 @@ mod tests {
                 orbits.iter().zip(states).map(|(orbit, state)| orbit.count() * state).sum::<i64>() == 0
             })
             .filter_map(|states| {
-                let mut score = 0.0;
-                for (orbit, &state) in orbits.iter().zip(&states) {
-                    let weight = f64::from(i32::try_from(orbit.count()).ok()?)
-                        / f64::from(i32::try_from(total(orbit.element)).ok()?);
-                    score += weight * likelihood(orbit, state)?;
-                }
+                let mut score: f64 =
+                    states.iter().enumerate().map(|(index, &state)| evidence(index, state)).sum();
                 for element in orbits.iter().map(|orbit| orbit.element).unique() {
-                    let used: Vec<i64> = orbits
-                        .iter()
-                        .zip(&states)
-                        .filter(|(orbit, _)| orbit.element == element)
-                        .map(|(_, state)| *state)
-                        .unique()
-                        .sorted()
-                        .collect();
+                    let of_element = orbits.iter().zip(&states).filter(|(orbit, _)| orbit.element == element);
+                    let used: Vec<i64> = of_element.map(|(_, state)| *state).unique().sorted().collect();
                     match used[..] {
                         [_] => {}
-                        [low, high] if neighbours(element).contains(&(low, high)) => score -= 20_f64.ln(),
+                        [low, high] if neighbours(element).contains(&(low, high)) => {}
                         _ => return None,
                     }
+                    score += log_prior(element, &used)?;
                 }
                 Some(Arrangement { score, states })
             })
@@ -368,15 +419,15 @@ mod tests {
         #![proptest_config(ProptestConfig::with_cases(64))]
         #[test]
         fn agrees_with_enumeration(orbits in crystals(), seed in 0..1000_u32) {
-            // With the published shares, and with shares that also depend on the orbit.
-            let skewed = |orbit: &Orbit, state: i64| {
-                let letters: u32 = orbit.label.bytes().map(u32::from).sum();
-                let digit = (letters * 31 + seed * 17 + u32::try_from(state.unsigned_abs()).unwrap_or(0) * 7) % 13;
-                log_share(orbit, state).map(|score| score - f64::from(digit))
+            // With nothing but the published shares, and with evidence that depends on the orbit.
+            let evidence = |index: usize, state: i64| {
+                let number = u32::try_from(index).unwrap_or(0) * 31 + seed * 17;
+                let digit = (number + u32::try_from(state.unsigned_abs()).unwrap_or(0) * 7) % 13;
+                -f64::from(digit)
             };
             let pairs = [
-                (best_arrangements(&orbits, log_share, 3), by_enumeration(&orbits, log_share)),
-                (best_arrangements(&orbits, skewed, 3), by_enumeration(&orbits, skewed)),
+                (best_arrangements(&orbits, &[], |_, _, _| 0.0, 3).0, by_enumeration(&orbits, |_, _| 0.0)),
+                (best_arrangements(&orbits, &[], |index, state, _| evidence(index, state), 3).0, by_enumeration(&orbits, evidence)),
             ];
             for (found, all) in pairs {
                 prop_assert_eq!(found.len(), all.len().min(3));
@@ -395,7 +446,7 @@ mod tests {
     fn ten_elements_are_no_problem() {
         let list = ["Fe", "Mn", "Mo", "S", "N", "P", "C", "Cu", "Bi", "O", "H", "V"];
         let list: Vec<_> = list.iter().enumerate().map(|(index, symbol)| (*symbol, 7 + 3 * index)).collect();
-        assert!(infer(&orbits(&list)).is_ok());
+        assert!(infer(&orbits(&list), None).is_ok());
     }
 
     #[test]
@@ -405,7 +456,7 @@ mod tests {
             (&[("Li", 2), ("Mn", 4), ("O", 8)][..], "7/2 on Mn (1 set of equivalent sites: Mn1)"),
             (&[("Fe", 3), ("O", 4)], "8/3 on Fe (1 set of equivalent sites: Fe0)"),
         ] {
-            let refusal = infer(&orbits(list)).expect_err("averaged");
+            let refusal = infer(&orbits(list), None).expect_err("averaged");
             assert_eq!(refusal.code, Code::ChargeAveraged);
             assert!(refusal.message.contains(expected), "{}", refusal.message);
         }
@@ -413,10 +464,10 @@ mod tests {
 
     #[test]
     fn impossible_compositions_are_named() {
-        let refusal = infer(&orbits(&[("Na", 2), ("F", 1)])).expect_err("not neutral");
+        let refusal = infer(&orbits(&[("Na", 2), ("F", 1)]), None).expect_err("not neutral");
         assert_eq!(refusal.code, Code::ChargeNone);
         assert!(refusal.message.contains("F (-1), Na (+1)"), "{}", refusal.message);
-        let refusal = infer(&orbits(&[("Ar", 2), ("F", 1)])).expect_err("noble");
+        let refusal = infer(&orbits(&[("Ar", 2), ("F", 1)]), None).expect_err("noble");
         assert_eq!(refusal.code, Code::ChargeElement);
         assert!(refusal.message.ends_with("for Ar"), "{}", refusal.message);
     }
@@ -424,14 +475,14 @@ mod tests {
     #[test]
     fn uncommon_and_mixed_states_are_remarked() {
         let peroxide = orbits(&[("Na", 2), ("O", 2)]);
-        let found = infer(&peroxide).expect("Na2O2");
-        let said = remarks(&peroxide, &found.best);
+        let found = infer(&peroxide, None).expect("Na2O2");
+        let said = remarks(&peroxide, found.best(), false);
         assert!(said[0].message.contains("O -1 (0.44 %)"), "{}", said[0].message);
         // Co3O4, normal spinel with +2 on the tetrahedral site (Greenwood & Earnshaw, from memory).
         let spinel = orbits(&[("Co", 2), ("Co", 4), ("O", 8)]);
-        let found = infer(&spinel).expect("Co3O4");
-        assert_eq!(found.best.states, [-2, 2, 3]);
-        let said = remarks(&spinel, &found.best);
+        let found = infer(&spinel, None).expect("Co3O4");
+        assert_eq!(found.best().states, [-2, 2, 3]);
+        let said = remarks(&spinel, found.best(), false);
         assert_eq!(said[1].code, Code::ChargeMixedValence);
         assert_eq!(said[1].message, "Co was given several charges: +2 on Co0; +3 on Co1");
     }

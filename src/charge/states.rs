@@ -45,12 +45,21 @@ pub(crate) fn neighbours(element: Element) -> Vec<(i64, i64)> {
     for (i, low) in states.iter().enumerate() {
         for (j, high) in states.iter().enumerate().skip(i + 1) {
             let rarer = low.reports.min(high.reports);
-            if states[i + 1..j].iter().all(|between| between.reports <= rarer) {
+            let skips_odd = goes_by_twos(element) && (high.charge - low.charge) == 2;
+            if skips_odd || states[i + 1..j].iter().all(|between| between.reports <= rarer) {
                 pairs.push((low.charge, high.charge));
             }
         }
     }
     pairs
+}
+
+/// Elements whose states of odd electron count do not exist or are rare, whatever is reported: those between are
+/// averages. Main-group elements, and Ag, Au, Pd and Pt (Greenwood & Earnshaw, from memory).
+fn goes_by_twos(element: Element) -> bool {
+    const SYMBOLS: [&str; 14] =
+        ["Ga", "In", "Tl", "Ge", "Sn", "Pb", "As", "Sb", "Bi", "Te", "Au", "Ag", "Pt", "Pd"];
+    SYMBOLS.contains(&element.symbol())
 }
 
 /// Rows that cannot be read are left out; a test makes sure that there are none.

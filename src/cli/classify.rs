@@ -7,7 +7,7 @@ use crate::collection::{Contents, Material, Member, Settings, classify_member, f
 use crate::diagnostic::Code;
 use crate::report::record::MaterialRecord;
 use crate::report::table::Table;
-use crate::report::{materials, words};
+use crate::report::{materials, reasoning, words};
 use anyhow::Context;
 use clap::{Args, ValueEnum};
 use indicatif::{ProgressBar, ProgressDrawTarget, ProgressStyle};
@@ -45,6 +45,9 @@ pub(super) struct Arguments {
     /// Describe every material in words, also when there are several
     #[arg(long)]
     details: bool,
+    /// Show why the charges are what they are: bonds, bond-valence sums and probabilities of every site
+    #[arg(long)]
+    explain: bool,
     /// Form of the answer
     #[arg(long, value_enum, default_value_t = Format::Text, help_heading = "Output")]
     format: Format,
@@ -77,7 +80,8 @@ pub(super) fn run(arguments: Arguments) -> anyhow::Result<Exit> {
     let sink = Sink {
         output: Output::open(arguments.output.output.as_deref(), &arguments.paths)?,
         format: arguments.format,
-        details: arguments.details,
+        details: arguments.details || arguments.explain,
+        explain: arguments.explain,
         plane: arguments.plane,
         settings: &settings,
         table: materials::table(arguments.format == Format::Csv),
@@ -209,6 +213,7 @@ struct Sink<'a> {
     output: Output,
     format: Format,
     details: bool,
+    explain: bool,
     plane: Option<[i64; 3]>,
     settings: &'a Settings,
     table: Table,
@@ -223,7 +228,12 @@ impl Sink<'_> {
             Format::Text if self.details => {
                 let gap = if self.written > 0 { "\n" } else { "" };
                 let text = words::describe(&material, self.settings, self.plane);
-                self.output.write(&output::plain(&format!("{gap}{text}")))?;
+                let reasons = if self.explain {
+                    reasoning::explain(&material, self.settings.parameters())
+                } else {
+                    String::new()
+                };
+                self.output.write(&output::plain(&format!("{gap}{text}{reasons}")))?;
             }
             Format::Text => {
                 let record = MaterialRecord::new(&material, self.settings);

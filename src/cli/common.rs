@@ -2,13 +2,14 @@
 
 use super::exit::Exit;
 use super::output;
-use crate::charge::Given;
+use crate::charge::{Given, Parameters};
 use crate::collection::{Input, Material, PARENT_TOLERANCE, Settings, classify_input};
 use crate::crystal::ExpandTolerance;
 use crate::diagnostic::Code;
 use crate::symmetry::Engine;
 use clap::Args;
 use std::path::{Path, PathBuf};
+use std::sync::Arc;
 
 /// How a structure is read and searched.
 #[derive(Debug, Args)]
@@ -16,6 +17,9 @@ pub(super) struct StructureOptions {
     /// Formal charges in e by element or site label, such as 'Ta=5,K=1,O=-2'
     #[arg(long, value_name = "CHARGES", allow_hyphen_values = true, help_heading = "Structure")]
     charges: Option<Given>,
+    /// Bond-valence parameters of your own: a CIF with the items of the bond-valence dictionary; they go before the built-in ones
+    #[arg(long, value_name = "FILE", value_parser = bond_valence, help_heading = "Structure")]
+    bond_valence: Option<Arc<Parameters>>,
     /// Only the data block or entry of this name
     #[arg(long, value_name = "NAME", help_heading = "Structure")]
     block: Option<String>,
@@ -55,6 +59,7 @@ impl StructureOptions {
                 ..ExpandTolerance::default()
             },
             parent_tolerance: (!self.no_parent).then_some(self.parent_tolerance),
+            parameters: self.bond_valence,
             block: self.block,
             max_unpacked: self.max_unpacked,
         }
@@ -73,6 +78,12 @@ pub(super) struct OutputOptions {
     /// Say more on stderr: every diagnostic of every material
     #[arg(short, long, conflicts_with = "quiet", help_heading = "Output")]
     pub(super) verbose: bool,
+}
+
+/// Reads a table of bond-valence parameters.
+fn bond_valence(path: &str) -> Result<Arc<Parameters>, String> {
+    let bytes = std::fs::read(path).map_err(|error| error.to_string())?;
+    Parameters::from_cif(&bytes).map(Arc::new).map_err(|fault| format!("{}: {}", fault.code, fault.message))
 }
 
 pub(super) fn positive(text: &str) -> Result<f64, String> {

@@ -1,13 +1,15 @@
 //! From an input to a label: reads, expands, searches symmetry, assigns charges, sums the polarization.
 
+use super::alternatives::{Alternative, alternatives};
 use super::{Contents, Input, Member};
-use crate::charge::{self, Assignment, Given, Known};
+use crate::charge::{self, Assignment, Given, Known, Parameters};
 use crate::crystal::{AsymmetricUnit, Crystal, ExpandTolerance, Formula};
 use crate::diagnostic::{Code, Diagnostic};
 use crate::polarization::FormalPolarization;
 use crate::symmetry::{Centres, Engine, Parent, Primitive, Symmetry, analyse};
 use std::collections::BTreeSet;
 use std::convert::Infallible;
+use std::sync::Arc;
 
 /// What a classification is asked to use. Printed in every report.
 #[derive(Debug, Clone)]
@@ -22,10 +24,20 @@ pub struct Settings {
     pub expand: ExpandTolerance,
     /// Largest distance in Å of an atom from its place in the parent structure; without it no parent is searched.
     pub parent_tolerance: Option<f64>,
+    /// Bond-valence parameters; the built-in ones without it.
+    pub parameters: Option<Arc<Parameters>>,
     /// Only the data block or entry of this name.
     pub block: Option<String>,
     /// The largest number of bytes that may come out of one archive.
     pub max_unpacked: u64,
+}
+
+impl Settings {
+    /// The bond-valence parameters to use.
+    #[must_use]
+    pub fn parameters(&self) -> &Parameters {
+        self.parameters.as_deref().unwrap_or(Parameters::standard())
+    }
 }
 
 impl Default for Settings {
@@ -38,6 +50,7 @@ impl Default for Settings {
             symmetry_tolerance: 0.01,
             expand: ExpandTolerance::default(),
             parent_tolerance: Some(PARENT_TOLERANCE),
+            parameters: None,
             block: None,
             max_unpacked: MAX_UNPACKED,
         }
@@ -79,6 +92,8 @@ pub struct Classification {
     pub centres: Option<Centres>,
     /// The charges used.
     pub assignment: Option<Assignment>,
+    /// Other plausible charges, where the charges were inferred, and what they would change.
+    pub alternatives: Vec<Alternative>,
     /// The parent cell, where there is one and it was searched for.
     pub parent: Option<ParentLevel>,
     /// The answer, or why there is none.
@@ -116,6 +131,7 @@ impl Classification {
             primitive: None,
             centres: None,
             assignment: None,
+            alternatives: Vec::new(),
             parent: None,
             outcome: Err(refusal),
             diagnostics: Vec::new(),
@@ -213,12 +229,20 @@ fn run(
     work.centres = Centres::find(primitive)?;
     let assignment = match known {
         Known::Settled(assignment) => assignment,
-        Known::Open(remark) => charge::infer(&crystal.sites, &symmetry.orbits, remark)?,
+        Known::Open(remark) => charge::infer(
+            &crystal.sites,
+            &symmetry.orbits,
+            Some((&crystal.lattice, settings.parameters())),
+            remark,
+        )?,
     };
     let charges: Vec<i64> = primitive.representatives.iter().map(|&site| assignment.charges[site]).collect();
     work.diagnostics.extend(assignment.diagnostics.iter().cloned());
     work.assignment = Some(assignment);
     let formal = FormalPolarization::new(primitive, work.centres.as_ref(), &charges)?;
+    if let Some(assignment) = &work.assignment {
+        work.alternatives = alternatives(crystal, primitive, work.centres.as_ref(), assignment, &formal);
+    }
     if let Some(tolerance) = settings.parent_tolerance {
         work.parent = parent_level(crystal, primitive, &charges, settings, tolerance, &mut work.diagnostics);
     }

@@ -152,9 +152,14 @@ codes! {
     ChargeAmbiguous = "charge-008", "two assignments of oxidation states are about equally likely", "type one of the assignments the message lists into --charges";
     ChargeElement = "charge-009", "no oxidation state is tabulated for an element", "give --charges";
     ChargeBroken = "charge-010", "symmetry-equivalent sites carry different charges", "lower the symmetry of the file, or correct the charges";
-    ChargeInferred = "charge-011", "charges were inferred from the composition alone", "give --charges to fix them";
+    ChargeInferred = "charge-011", "charges were inferred", "give --charges to fix them";
     ChargeMixedValence = "charge-012", "one element carries several charges on inequivalent sites", "give --charges per site label to fix them";
     ChargeSetAside = "charge-013", "the file's oxidation numbers were not used: some are missing, all are zero, or one is beyond any nuclear charge", "complete the numbers in the file, or give --charges";
+    BondValenceTable = "charge-014", "a table of bond-valence parameters cannot be read", "give a CIF with a loop of _valence_param_atom_1, _valence_param_atom_2, _valence_param_Ro and _valence_param_B";
+    ChargeHydrogen = "charge-015", "hydrogen atoms are missing, and what they belong to was taken for a whole ion", "add the hydrogen atoms, or give --charges";
+    ChargeOpenShell = "charge-016", "cations have open shells, so a band gap depends on how strongly their electrons interact", "make sure that the crystal is an insulator";
+    ChargeLikelyMetal = "charge-017", "a state is known mostly from metals", "make sure that the crystal is an insulator; formal polarization is not defined for a metal";
+    ChargeSearch = "charge-018", "the search for charges was cut short to bound its time", "give --charges";
     // Polarization.
     PolarizationResidual = "polarization-001", "the sum of charges and positions is not at a value that symmetry permits", "check charges and positions, or lower --symmetry-tolerance";
     PolarizationRoutes = "polarization-002", "two independent routes to the offset disagree", "report this file as a fault of the program";

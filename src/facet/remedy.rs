@@ -49,7 +49,7 @@ impl Remedy {
     /// The remedies of a termination. `ions` gives element and charge of each atom of the primitive cell.
     #[must_use]
     pub fn list(stacking: &Stacking, termination: &Termination, ions: &[(Element, i64)]) -> Vec<Self> {
-        if termination.is_neutral() {
+        if termination.is_neutral {
             return Vec::new();
         }
         let sigma = termination.charge;

@@ -9,8 +9,10 @@ use crate::symmetry::Primitive;
 use nalgebra::Vector3;
 use std::fmt;
 
-/// Bound charges below this, in e per surface cell, count as zero where symmetry leaves the value free.
-const NO_CHARGE: f64 = 1e-4;
+/// Layers of the parent that overlap by more than this, in Å, are no layers of the crystal.
+const OVERLAP: f64 = 0.1;
+/// The finest grouping in Å.
+const FINEST: f64 = 1e-3;
 
 /// A layer of atoms parallel to a facet. Grouping is for naming and for where a cut is allowed; every sum keeps each
 /// atom's own height.
@@ -37,6 +39,9 @@ pub struct Termination {
     pub charge: Component,
     /// The first termination that a symmetry operation takes to this one: itself, or one before it.
     pub same_as: usize,
+    /// Whether it carries no bound charge: exactly none, or none within the uncertainty of the positions where symmetry
+    /// leaves the value free.
+    pub is_neutral: bool,
 }
 
 /// Charged layers and dipoles of a stack (Tasker, J. Phys. C 12, 4977 (1979)).
@@ -79,14 +84,20 @@ pub struct Stacking {
     pub kind: StackingType,
     /// The facet offset `h · p` modulo one, which every termination shares.
     pub offset: Component,
+    /// Whether zero is one of the values of the polarization lattice along the normal; see [`Termination::is_neutral`].
+    pub contains_zero: bool,
     /// Whether a symmetry operation turns the normal round, so that a slab can end alike on both sides.
     pub is_reversible: bool,
+    /// Whether the layers are those of the parent.
+    pub follows_parent: bool,
 }
 
 impl Stacking {
     /// Groups the atoms of a primitive cell into layers closer than `tolerance` Å and cuts below each of them. Where the
     /// crystal has a parent, `ideal` gives the places of the atoms in it, and the layers are those of the parent; heights
-    /// and sums are of the atoms themselves.
+    /// and sums are of the atoms themselves. Layers of the parent that are none of the crystal, because they overlap or hold
+    /// the widest gap inside, are not used. A tolerance that leaves a single layer of several heights is halved until
+    /// there are two, since a cut through that layer would be as good as any other.
     ///
     /// # Errors
     /// `polarization-003` when a number leaves the exact range.
@@ -100,10 +111,12 @@ impl Stacking {
     ) -> Result<Self, Diagnostic> {
         let overflow = |_: Overflow| Diagnostic::error(Code::PolarizationOverflow, Overflow.to_string());
         let heights = facet.heights(&primitive.positions);
-        let grouped = ideal.map_or_else(|| heights.clone(), |ideal| facet.heights(ideal));
-        let (groups, lifts) = group_cyclic(&grouped, tolerance / facet.spacing);
-        let lifted: Vec<f64> =
-            heights.iter().zip(&lifts).map(|(height, &lift)| height + float(lift)).collect();
+        let of_parent = ideal
+            .map(|ideal| group_cyclic(&facet.heights(ideal), tolerance / facet.spacing))
+            .filter(|(groups, lifts)| are_layers(groups, &lifted_by(&heights, lifts), facet.spacing));
+        let follows_parent = of_parent.is_some();
+        let (groups, lifts) = of_parent.unwrap_or_else(|| group_by_gaps(&heights, tolerance, facet.spacing));
+        let lifted = lifted_by(&heights, &lifts);
 
         // The tile that starts with the first group: h · p plus the charges that were lifted by whole spacings. Each
         // further cut takes one layer from the bottom of the tile to its top, one spacing higher.
@@ -139,12 +152,14 @@ impl Stacking {
         let terminations: Vec<Termination> = (0..count)
             .map(|top| {
                 let bottom = (top + 1) % count;
-                Termination { top, bottom, charge: cuts[bottom], same_as: equals[top] }
+                let charge = cuts[bottom];
+                let is_neutral = formal.is_zero(charge, facet.spacing);
+                Termination { top, bottom, charge, same_as: equals[top], is_neutral }
             })
             .collect();
         let kind = if layers.iter().all(|layer| layer.charge == 0) {
             StackingType::One
-        } else if terminations.iter().any(Termination::is_neutral) {
+        } else if terminations.iter().any(|termination| termination.is_neutral) {
             StackingType::Two
         } else {
             StackingType::Three
@@ -153,19 +168,55 @@ impl Stacking {
             .operations
             .iter()
             .any(|operation| facet.image(operation) == facet.indices.map(|index| -index));
-        Ok(Self { layers, terminations, kind, offset: unreduced.modulo(1).map_err(overflow)?, is_reversible })
+        let offset = unreduced.modulo(1).map_err(overflow)?;
+        let nearest = match offset {
+            Component::Free(value) => Component::Free(value - value.round()),
+            exact @ Component::Exact(_) => exact,
+        };
+        let contains_zero = formal.is_zero(nearest, facet.spacing);
+        Ok(Self { layers, terminations, kind, offset, contains_zero, is_reversible, follows_parent })
     }
 }
 
-impl Termination {
-    /// Whether the termination carries no bound charge.
-    #[must_use]
-    pub fn is_neutral(&self) -> bool {
-        match self.charge {
-            Component::Exact(ratio) => ratio.is_zero(),
-            Component::Free(value) => value.abs() < NO_CHARGE,
+fn lifted_by(heights: &[f64], lifts: &[i64]) -> Vec<f64> {
+    heights.iter().zip(lifts).map(|(height, &lift)| height + float(lift)).collect()
+}
+
+/// Groups by gaps in the heights themselves, at the tolerance or the first half, quarter, … of it that gives two layers.
+fn group_by_gaps(heights: &[f64], tolerance: f64, spacing: f64) -> (Vec<Vec<usize>>, Vec<i64>) {
+    let mut tolerance = tolerance;
+    loop {
+        let found = group_cyclic(heights, tolerance / spacing);
+        if found.0.len() != 1 || heights.len() < 2 || tolerance <= FINEST {
+            return found;
         }
+        tolerance /= 2.0;
     }
+}
+
+/// Whether groups, in the order of the stack, are layers of the atoms at these heights: none reaches into the next, and
+/// no gap inside one is wider than all gaps between them.
+fn are_layers(groups: &[Vec<usize>], lifted: &[f64], spacing: f64) -> bool {
+    let sorted: Vec<Vec<f64>> = groups
+        .iter()
+        .map(|atoms| {
+            let mut own: Vec<f64> = atoms.iter().map(|&atom| lifted[atom]).collect();
+            own.sort_by(f64::total_cmp);
+            own
+        })
+        .collect();
+    let (mut inside, mut between) = (0.0_f64, f64::NEG_INFINITY);
+    for (number, own) in sorted.iter().enumerate() {
+        inside = own.windows(2).fold(inside, |widest, pair| widest.max(pair[1] - pair[0]));
+        let (next, turn) = sorted.get(number + 1).map_or((&sorted[0], 1.0), |next| (next, 0.0));
+        let (Some(high), Some(low)) = (own.last(), next.first()) else { return false };
+        let gap = low + turn - high;
+        if gap * spacing < -OVERLAP {
+            return false;
+        }
+        between = between.max(gap);
+    }
+    inside <= between + 1e-9
 }
 
 /// For each layer, the first layer that an operation keeping the normal takes to it. Such an operation moves every

@@ -26,7 +26,7 @@ const ELEMENTARY_CHARGE: f64 = 1.602_176_634e-19;
 pub const C_PER_M2: f64 = ELEMENTARY_CHARGE * 1e20;
 
 /// A component that symmetry leaves free is no zero, whatever the tolerance, when it is further from one than this share of
-/// the modulus. In a large cell the tolerance summed over all ions exceeds the quantum and would call anything zero.
+/// the modulus. In a large cell the uncertainty of the positions exceeds the quantum and would call anything zero.
 const FREE_ZERO: f64 = 0.02;
 
 /// One component of a polarization along a primitive vector.
@@ -100,6 +100,9 @@ pub struct FormalPolarization {
     pub runner_up: f64,
     /// The residual above which the answer is refused, in e·Å: the symmetry tolerance times `Σ |Z_i|`.
     pub residual_limit: f64,
+    /// Uncertainty of the sum in e·Å when the ions are misplaced by the symmetry tolerance independently of each other:
+    /// `tolerance × √Σ Z²`. It decides whether a value that symmetry leaves free counts as zero.
+    pub uncertainty: f64,
     /// Volume of the primitive cell in Å³.
     pub volume: f64,
     /// Lengths of the primitive vectors in Å.
@@ -135,6 +138,8 @@ impl FormalPolarization {
         let (residual, runner_up) = distances(primitive, &permitted, &sum).map_err(overflow)?;
         let weight: i64 = charges.iter().map(|charge| charge.abs()).sum();
         let residual_limit = primitive.tolerance * float(weight);
+        let squares: i64 = charges.iter().map(|charge| charge * charge).sum();
+        let uncertainty = primitive.tolerance * float(squares).sqrt();
         if residual > residual_limit || residual > 0.5 * runner_up {
             return Err(Diagnostic::error(
                 Code::PolarizationResidual,
@@ -155,7 +160,7 @@ impl FormalPolarization {
         let coset = |modulus: Modulus| {
             let unit = float(modulus.value(charge_gcd));
             let is_zero = |axis: usize, distance: f64| {
-                distance <= FREE_ZERO && distance * unit * lengths[axis] <= residual_limit
+                distance <= FREE_ZERO && distance * unit * lengths[axis] <= uncertainty
             };
             Coset::new(modulus, charge_gcd, &polarization, is_zero).map_err(overflow)
         };
@@ -178,6 +183,7 @@ impl FormalPolarization {
             residual,
             runner_up,
             residual_limit,
+            uncertainty,
             volume: primitive.lattice.volume(),
             lengths,
         })
@@ -199,6 +205,16 @@ impl FormalPolarization {
     #[must_use]
     pub fn ion(&self) -> &Coset {
         &self.cosets[2]
+    }
+
+    /// Whether a normal polarization, in e per surface cell of a plane with this spacing in Å, is zero: exactly, or within
+    /// [`FormalPolarization::uncertainty`] and 2 % of the quantum where symmetry leaves it free.
+    #[must_use]
+    pub fn is_zero(&self, value: Component, spacing: f64) -> bool {
+        match value {
+            Component::Exact(ratio) => ratio.is_zero(),
+            Component::Free(value) => value.abs() <= FREE_ZERO && value.abs() * spacing <= self.uncertainty,
+        }
     }
 
     /// Residual over the distance to the next permitted value: 0 is certain, ½ would be a toss.

@@ -147,10 +147,6 @@ impl Parts<'_> {
     #[must_use]
     pub fn plane(&self, facet: &Facet, stacking: &Stacking) -> PlaneRecord {
         let (surface_lengths, surface_angle) = facet.surface_cell(&self.primitive.lattice);
-        let contains_zero = match stacking.offset {
-            Component::Exact(ratio) => ratio.is_zero(),
-            Component::Free(value) => value.abs() < 1e-9,
-        };
         let distinct = stacking.terminations.iter().enumerate().filter(|(index, t)| t.same_as == *index);
         PlaneRecord {
             miller: facet.miller,
@@ -159,10 +155,10 @@ impl Parts<'_> {
             surface_lengths,
             surface_angle,
             offset: stacking.offset.into(),
-            contains_zero,
+            contains_zero: stacking.contains_zero,
             stacking_type: stacking.kind.number(),
             polar_stack: stacking.kind.number() == 1
-                && !stacking.terminations.iter().any(Termination::is_neutral),
+                && !stacking.terminations.iter().any(|termination| termination.is_neutral),
             reversible: stacking.is_reversible,
             terminations: distinct
                 .map(|(_, termination)| self.termination(facet, stacking, termination))

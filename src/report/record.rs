@@ -1,6 +1,7 @@
 //! One object per material for machines. The field names are a contract: they are documented by the generated schema
 //! `man/classify.schema.json` and only ever added to. A field that does not apply is absent.
 
+use super::reasoning::bonds_of;
 use crate::charge::charges_text;
 use crate::collection::{Material, ParentLevel, Settings};
 use crate::crystal::Operation;
@@ -135,6 +136,34 @@ pub struct ChargesRecord {
     pub text: String,
     /// One entry for each orbit of sites.
     pub sites: Vec<ChargeRecord>,
+    /// The probability of inferred charges.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub probability: Option<f64>,
+    /// How many times as likely inferred charges are as the runner-up.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub margin: Option<f64>,
+    /// Root mean square difference of bond-valence sums and charges, in valence units.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub global_instability: Option<f64>,
+    /// Other plausible charges, where charges were inferred.
+    #[serde(skip_serializing_if = "Vec::is_empty")]
+    pub alternatives: Vec<AlternativeRecord>,
+    /// Whether label and offset are the same under all plausible charges.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub label_is_certain: Option<bool>,
+}
+
+/// Other plausible charges.
+#[derive(Debug, Clone, Serialize, JsonSchema)]
+pub struct AlternativeRecord {
+    /// In the form of `--charges`.
+    pub text: String,
+    /// Their probability.
+    pub probability: f64,
+    /// The label they would lead to.
+    pub label: Label,
+    /// Whether label and offset would be the same.
+    pub is_same: bool,
 }
 
 /// The charge of one orbit of sites.
@@ -148,6 +177,15 @@ pub struct ChargeRecord {
     pub charge: i64,
     /// Atoms of the orbit in the primitive cell.
     pub count: usize,
+    /// Bond-valence sum, positive for valence given, negative for valence taken.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub bond_valence_sum: Option<f64>,
+    /// Number of bonds to sites of the other sign.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub coordination: Option<f64>,
+    /// The probability of an inferred charge.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub probability: Option<f64>,
 }
 
 /// The answer at one level.
@@ -276,7 +314,7 @@ impl MaterialRecord {
                 .map(|primitive| primitive.operations.iter().any(Operation::is_inversion)),
             primitive: work.primitive.as_ref().map(PrimitiveRecord::new),
             inversion_centres: CentreRecord::all(material),
-            charges: ChargesRecord::new(material),
+            charges: ChargesRecord::new(material, settings),
             strict: formal.map(LevelRecord::new),
             parent: work.parent.as_ref().map(ParentRecord::new),
             permitted: formal.map(PermittedRecord::new),
@@ -367,10 +405,12 @@ pub fn centre_position(primitive: &Primitive, position: Vector3<f64>) -> [f64; 3
 }
 
 impl ChargesRecord {
-    fn new(material: &Material) -> Option<Self> {
+    fn new(material: &Material, settings: &Settings) -> Option<Self> {
         let work = &material.classification;
         let (crystal, assignment) = (work.crystal.as_ref()?, work.assignment.as_ref()?);
         let (symmetry, primitive) = (work.symmetry.as_ref()?, work.primitive.as_ref()?);
+        let bonds = bonds_of(material, settings.parameters());
+        let reasoning = assignment.reasoning.as_ref();
         let mut sites: Vec<(usize, ChargeRecord)> = Vec::new();
         for &site in &primitive.representatives {
             let orbit = symmetry.orbits[site];
@@ -379,15 +419,41 @@ impl ChargesRecord {
             } else {
                 let label = crystal.sites[orbit].label.clone();
                 let element = crystal.sites[orbit].element.to_string();
-                sites.push((
-                    orbit,
-                    ChargeRecord { label, element, charge: assignment.charges[orbit], count: 1 },
-                ));
+                let charge = assignment.charges[orbit];
+                let of_orbit = bonds
+                    .as_ref()
+                    .and_then(|bonds| bonds.orbits.iter().find(|known| known.sites.contains(&orbit)));
+                let record = ChargeRecord {
+                    label,
+                    element,
+                    charge,
+                    count: 1,
+                    bond_valence_sum: of_orbit.map(|found| found.sum),
+                    coordination: of_orbit.map(|found| found.coordination),
+                    probability: reasoning.map(|reasoning| reasoning.site_probability(orbit, charge)),
+                };
+                sites.push((orbit, record));
             }
         }
         let sites = sites.into_iter().map(|(_, record)| record).collect();
         let text = charges_text(&crystal.sites, &assignment.charges);
-        Some(Self { source: assignment.source.to_string(), text, sites })
+        let alternatives = work.alternatives.iter().map(|other| AlternativeRecord {
+            text: other.text.clone(),
+            probability: other.probability,
+            label: other.label,
+            is_same: other.is_same,
+        });
+        let is_certain = || work.alternatives.iter().all(|other| other.is_same);
+        Some(Self {
+            source: assignment.source.to_string(),
+            text,
+            sites,
+            probability: reasoning.map(|reasoning| reasoning.probability),
+            margin: assignment.margin.filter(|margin| margin.is_finite()),
+            global_instability: bonds.map(|bonds| bonds.global_instability),
+            alternatives: alternatives.collect(),
+            label_is_certain: reasoning.filter(|_| work.outcome.is_ok()).map(|_| is_certain()),
+        })
     }
 }
 

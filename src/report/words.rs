@@ -1,6 +1,7 @@
 //! One material in words.
 
 use super::ladder::ladder;
+use super::reasoning;
 use super::record::{EnumerationRecord, centre_position, primitive_vectors};
 use crate::charge::charges_text;
 use crate::collection::{Material, ParentLevel, Settings};
@@ -80,6 +81,7 @@ fn write_description(
             assignment.source.describe()
         )?;
     }
+    write_certainty(out, material, settings)?;
     for diagnostic in &work.diagnostics {
         writeln!(
             out,
@@ -100,6 +102,24 @@ fn write_description(
                 writeln!(out, "  hint               {hint}")?;
             }
         }
+    }
+    Ok(())
+}
+
+/// How sure the charges are, and whether they matter.
+fn write_certainty(out: &mut String, material: &Material, settings: &Settings) -> std::fmt::Result {
+    let work = &material.classification;
+    let Some(reasoning) = work.assignment.as_ref().and_then(|assignment| assignment.reasoning.as_ref())
+    else {
+        return Ok(());
+    };
+    let bonds = reasoning::bonds_of(material, settings.parameters());
+    let index = bonds.map_or_else(String::new, |bonds| {
+        format!(", global instability index {:.2}", bonds.global_instability)
+    });
+    writeln!(out, "  how sure           probability {:.3}{index}", reasoning.probability)?;
+    if work.outcome.is_ok() {
+        writeln!(out, "                     {}", reasoning::verdict(&work.alternatives))?;
     }
     Ok(())
 }

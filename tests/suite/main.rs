@@ -3,6 +3,7 @@
 #![allow(clippy::print_stdout, reason = "figures of a run are shown with --nocapture")]
 
 mod build;
+mod charges;
 mod check;
 mod cif;
 mod commands;

@@ -21,15 +21,17 @@ fn data() -> PathBuf {
 /// One structure of the labelled oxides (J. George et al., "The Limited Predictive Power of the Pauling Rules",
 /// CC BY 4.0).
 #[derive(serde::Deserialize)]
-struct Labelled {
-    id: String,
+pub(crate) struct Labelled {
+    pub(crate) id: String,
     cell: [f64; 6],
-    elements: Vec<String>,
+    pub(crate) elements: Vec<String>,
     frac: Vec<[f64; 3]>,
-    valence: Vec<f64>,
+    pub(crate) valence: Vec<f64>,
+    pub(crate) reduced_formula: String,
+    pub(crate) mixed_valence: bool,
 }
 
-fn labelled(name: &str) -> Vec<Labelled> {
+pub(crate) fn labelled(name: &str) -> Vec<Labelled> {
     let file = File::open(data().join("oxides-with-valences").join(name)).expect("the data set");
     BufReader::new(GzDecoder::new(file))
         .lines()
@@ -37,7 +39,7 @@ fn labelled(name: &str) -> Vec<Labelled> {
         .collect()
 }
 
-fn unit(record: &Labelled) -> AsymmetricUnit {
+pub(crate) fn unit(record: &Labelled) -> AsymmetricUnit {
     let [a, b, c, alpha, beta, gamma] = record.cell;
     let parameters = CellParameters { lengths: [a, b, c], angles: [alpha, beta, gamma] };
     let sites = record
