@@ -1,5 +1,6 @@
 //! The charge of every site, and where it comes from.
 
+use super::bond_valence::OrbitValence;
 use super::evidence::is_bare_ammonium;
 use super::given::Given;
 use super::inferred::{self, Inferred, MIN_LIKELIHOOD_RATIO, MIN_PROBABILITY};
@@ -279,12 +280,32 @@ pub fn infer(
         diagnostics.extend(bare_ammonium(orbits, surroundings));
     }
     diagnostics.extend(sense::remarks(orbits, &found.best().states));
-    let reasoning = Some(Reasoning::new(orbits, &found, surroundings.as_ref()));
+    let reasoning = Reasoning::new(orbits, &found, surroundings.as_ref());
+    diagnostics.extend(poor_fit(&reasoning));
+    let reasoning = Some(reasoning);
     Ok(Assignment { charges, source: Source::Inferred, diagnostics, reasoning, runner_up, margin })
 }
 
 /// An averaged charge is mentioned from this probability on.
 const PLAUSIBLE_AVERAGE: f64 = 0.05;
+
+/// Structures whose global instability index is above this, in valence units, are hardly what the file says: strained
+/// crystals stay below 0.5 (0.44 in cubic `KTaO3`).
+const DOUBTFUL_INSTABILITY: f64 = 0.6;
+
+/// A warning where the bonds do not fit the charges, naming the site that fits worst.
+fn poor_fit(reasoning: &Reasoning) -> Option<Diagnostic> {
+    let bonds = reasoning.bonds.as_ref().filter(|bonds| bonds.global_instability > DOUBTFUL_INSTABILITY)?;
+    #[expect(clippy::cast_precision_loss, reason = "charges are small")]
+    let off = |orbit: &OrbitValence| (orbit.sum - orbit.charge as f64).abs();
+    let worst = bonds.orbits.iter().max_by(|a, b| off(a).total_cmp(&off(b)))?;
+    let message = format!(
+        "bond-valence sums are far from the charges: global instability index {:.2}, above {DOUBTFUL_INSTABILITY}; \
+         {} has {:+.2} for {:+}",
+        bonds.global_instability, worst.label, worst.sum, worst.charge
+    );
+    Some(Diagnostic::warning(Code::ChargeBonds, message))
+}
 
 /// A warning where ammonium ions lack their hydrogen atoms.
 fn bare_ammonium(orbits: &[Orbit], surroundings: &Surroundings) -> Option<Diagnostic> {

@@ -159,6 +159,7 @@ codes! {
     ChargeHydrogen = "charge-015", "hydrogen atoms are missing, and what they belong to was taken for a whole ion", "add the hydrogen atoms, or give --charges";
     ChargeOpenShell = "charge-016", "cations have open shells, so a band gap depends on how strongly their electrons interact", "make sure that the crystal is an insulator";
     ChargeLikelyMetal = "charge-017", "a state is known mostly from metals", "make sure that the crystal is an insulator; formal polarization is not defined for a metal";
+    ChargeBonds = "charge-019", "bond-valence sums are far from the charges", "check cell and positions, add hydrogen atoms that are missing, or give --charges";
     ChargeSearch = "charge-018", "the search for charges was cut short to bound its time", "give --charges";
     // Polarization.
     PolarizationResidual = "polarization-001", "the sum of charges and positions is not at a value that symmetry permits", "check charges and positions, or lower --symmetry-tolerance";
