@@ -654,6 +654,36 @@ mod tests {
 
     proptest! {
         #![proptest_config(ProptestConfig::with_cases(128))]
+        /// Wherever the atoms are: whole, neutral, equal on orbits, with probabilities that are some; and no panic.
+        #[test]
+        fn positions_never_break_the_promises(
+            atoms in proptest::collection::vec((proptest::sample::select(
+                vec!["O", "S", "Fe", "Cu", "Na", "Ti", "H", "N", "La", "Au", "C", "As"]),
+                [0.0..1.0_f64, 0.0..1.0, 0.0..1.0], 0..4_usize), 1..12),
+            length in 1.0..9.0_f64,
+        ) {
+            let site = |(symbol, position, _): &(&str, [f64; 3], usize)| {
+                Site::new(*symbol, Element::from_symbol(symbol).expect("known"), Vector3::from(*position))
+            };
+            let sites: Vec<Site> = atoms.iter().map(site).collect();
+            let orbits: Vec<usize> =
+                atoms.iter().map(|(symbol, _, orbit)| orbit + 100 * symbol.bytes().map(usize::from).sum::<usize>()).collect();
+            let lattice = Lattice::from_basis(nalgebra::Matrix3::identity() * length).expect("a cell");
+            let found = infer(&sites, &orbits, Some((&lattice, Parameters::standard())), None);
+            if let Ok(found) = found {
+                prop_assert_eq!(found.charges.iter().sum::<i64>(), 0);
+                for (one, other) in (0..sites.len()).tuple_combinations() {
+                    prop_assert!(orbits[one] != orbits[other] || found.charges[one] == found.charges[other]);
+                }
+                let reasoning = found.reasoning.expect("reasons");
+                let sum: f64 = reasoning.candidates.iter().map(|candidate| candidate.probability).sum();
+                prop_assert!((0.0..1.0 + 1e-9).contains(&sum), "{}", sum);
+                prop_assert!(reasoning.candidates.iter().all(|one| one.charges.iter().sum::<i64>() == 0));
+                let index = reasoning.bonds.map_or(0.0, |bonds| bonds.global_instability);
+                prop_assert!(index.is_finite() && index >= 0.0);
+            }
+        }
+
         /// Whatever the cell: whole, equal on orbits, neutral; and the text reads back to the same charges. Nothing
         /// changes when the cell is doubled or its sites are listed in reverse.
         #[test]

@@ -1,6 +1,6 @@
 //! The table of classified materials, short for the terminal and full for CSV.
 
-use super::record::{LevelRecord, MaterialRecord, OffsetComponent};
+use super::record::{ChargesRecord, LevelRecord, MaterialRecord, OffsetComponent};
 use super::table::{Column, Table};
 
 const SHORT: &[Column] = &[
@@ -43,6 +43,9 @@ const FULL: &[Column] = &[
     Column::number("primitive_volume_angstrom3", "volume"),
     Column::text("refusal_code", "refusal"),
     Column::text("refusal_message", "reason"),
+    Column::number("charges_probability", "probability"),
+    Column::number("global_instability_index", "instability"),
+    Column::text("label_is_certain", "certain"),
 ];
 
 /// An empty table of materials, with all columns or with those for the terminal.
@@ -87,6 +90,8 @@ pub fn full_row(record: &MaterialRecord) -> Vec<String> {
     let level = record.strict.as_ref();
     let text = |value: Option<String>| value.unwrap_or_default();
     let of_level = |pick: &dyn Fn(&LevelRecord) -> String| text(level.map(pick));
+    let of_charges =
+        |pick: &dyn Fn(&ChargesRecord) -> Option<String>| text(record.charges.as_ref().and_then(pick));
     let offset = |axis: usize| of_level(&|level| component_text(&level.offset[axis], 6));
     let group = record.space_group.as_ref();
     vec![
@@ -117,6 +122,9 @@ pub fn full_row(record: &MaterialRecord) -> Vec<String> {
         text(record.primitive.as_ref().map(|primitive| format!("{:.4}", primitive.volume))),
         text(record.refusal.as_ref().map(|refusal| refusal.code.to_string())),
         text(record.refusal.as_ref().map(|refusal| refusal.message.clone())),
+        of_charges(&|charges| charges.probability.map(|probability| format!("{probability:.4}"))),
+        of_charges(&|charges| charges.global_instability.map(|index| format!("{index:.4}"))),
+        of_charges(&|charges| charges.label_is_certain.map(|is_certain| is_certain.to_string())),
     ]
 }
 
