@@ -426,12 +426,14 @@ mod tests {
                 -f64::from(digit)
             };
             let pairs = [
-                (best_arrangements(&orbits, &[], |_, _, _| 0.0, 3).0, by_enumeration(&orbits, |_, _| 0.0)),
-                (best_arrangements(&orbits, &[], |index, state, _| evidence(index, state), 3).0, by_enumeration(&orbits, evidence)),
+                (best_arrangements(&orbits, &[], |_, _, _| 0.0, 3), by_enumeration(&orbits, |_, _| 0.0)),
+                (best_arrangements(&orbits, &[], |index, state, _| evidence(index, state), 3), by_enumeration(&orbits, evidence)),
             ];
-            for (found, all) in pairs {
-                prop_assert_eq!(found.len(), all.len().min(3));
-                for (found, expected) in found.iter().zip(&all) {
+            for ((found, bound), all) in pairs {
+                // What scores below the bound may have been left out, but for one arrangement if there is any.
+                let certain = all.iter().take(3).take_while(|one| one.score >= bound).count();
+                prop_assert!(found.len() >= certain && found.is_empty() == all.is_empty());
+                for (found, expected) in found.iter().zip(&all).take(certain) {
                     prop_assert!((found.score - expected.score).abs() < 1e-9);
                     // Ties may come in another order, so look the arrangement up.
                     let same = all.iter().find(|other| other.states == found.states);

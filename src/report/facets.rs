@@ -5,7 +5,7 @@ use super::table::{Column, Table};
 use crate::collection::{Material, Settings};
 use crate::crystal::Element;
 use crate::facet::{Facet, Remedy, RemedyKind, Stacking, Termination};
-use crate::polarization::{C_PER_M2, Component};
+use crate::polarization::C_PER_M2;
 use crate::symmetry::Primitive;
 use schemars::JsonSchema;
 use serde::Serialize;
