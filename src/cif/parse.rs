@@ -12,6 +12,7 @@ use super::findings::Findings;
 use super::lex::{Dialect, Lexer, Token, TokenKind};
 use super::source::{Lines, inspect, narrow};
 use crate::diagnostic::{Code, Diagnostic, Span};
+use itertools::Itertools;
 use repeated::repeated;
 use std::borrow::Cow;
 
@@ -51,6 +52,9 @@ pub fn parse(bytes: &[u8]) -> (Document<'_>, Vec<Diagnostic>) {
     diagnostics.sort_by_key(|found| found.span.map_or(usize::MAX, |span| span.start));
     (parser.document, diagnostics)
 }
+
+/// No more lines of a loop than this are searched for the one that is wrong.
+const MAX_LINES_COMPARED: usize = 100_000;
 
 struct Parser<'s> {
     document: Document<'s>,
@@ -274,19 +278,32 @@ impl<'s> Parser<'s> {
         let mark = shape.first_mark as usize + whole / LoopShape::VALUES_PER_MARK;
         let mut lexer = self.document.lexer_at(self.document.marks[mark] as usize);
         let Some(first) = lexer.nth(whole % LoopShape::VALUES_PER_MARK) else { return };
-        let found = Diagnostic::error(
-            Code::CifLoopRagged,
-            format!(
-                "the loop of {} has {columns} tags but {values} values: the last row, which begins with '{}', lacks {}",
-                shown(&self.name_of(shape.first_entry)),
-                shown(&self.text_of(&first)),
-                columns - values % columns
-            ),
-        )
-        .at(first.span)
-        .hint("put values with blanks in quotes, and ? for a missing value");
+        let mut message = format!(
+            "the loop of {} has {columns} tags but {values} values: the last row, which begins with '{}', lacks {}",
+            shown(&self.name_of(shape.first_entry)),
+            shown(&self.text_of(&first)),
+            columns - values % columns
+        );
+        if let Some((line, count)) = self.odd_line(&shape, values) {
+            message += &format!("; line {line} holds {count}, others {columns}");
+        }
+        let found = Diagnostic::error(Code::CifLoopRagged, message)
+            .at(first.span)
+            .hint("put values with blanks in quotes, and ? for a missing value");
         self.findings.add(Code::CifLoopRagged, || found.clone());
         self.document.faults.push((number, found));
+    }
+
+    /// Of a loop written with one row a line: the first line with another number of values, and that number.
+    fn odd_line(&self, shape: &LoopShape, values: usize) -> Option<(usize, usize)> {
+        let start = *self.document.marks.get(shape.first_mark as usize)?;
+        let lines = self.document.lexer_at(start as usize).take(values).chunk_by(|token| token.span.line);
+        let counts: Vec<(usize, usize)> =
+            lines.into_iter().map(|(line, tokens)| (line, tokens.count())).take(MAX_LINES_COMPARED).collect();
+        let columns = shape.columns as usize;
+        let even = counts.iter().filter(|(_, count)| *count == columns).count();
+        let odd = counts.iter().find(|(_, count)| *count != columns)?;
+        (2 * even >= counts.len()).then_some(*odd)
     }
 
     fn skip_values_of_no_tag(&mut self, token: &Token) {
@@ -453,6 +470,9 @@ mod tests {
     fn whole_rows_of_a_ragged_loop_are_kept() {
         let (document, found) = parse(b"data_a\nloop_ _u _v\n1 2\n3 4\n5");
         assert_eq!(found[0].span.map(|s| (s.line, s.column)), Some((5, 1)));
+        assert!(found[0].message.ends_with("lacks 1; line 5 holds 1, others 2"), "{}", found[0].message);
+        let (_, found) = parse(b"data_a\nloop_ _u _v\n1 2\n3\n4 5\n6 7");
+        assert!(found[0].message.ends_with("line 4 holds 1, others 2"), "{}", found[0].message);
         let table = document.block(0).expect("a block").column(&["_v"]).expect("a loop");
         assert_eq!(table.rows(), 2);
         assert!(table.fault().is_some());

@@ -47,6 +47,8 @@ pub struct PlaneRecord {
     pub polar_stack: bool,
     /// Whether a slab can end alike on both sides.
     pub reversible: bool,
+    /// Whether the layers are those of the parent; else they are divided by gaps between the atoms.
+    pub layers_of_parent: bool,
     /// One entry for each symmetry-distinct termination.
     pub terminations: Vec<TerminationRecord>,
 }
@@ -160,6 +162,7 @@ impl Parts<'_> {
             polar_stack: stacking.kind.number() == 1
                 && !stacking.terminations.iter().any(|termination| termination.is_neutral),
             reversible: stacking.is_reversible,
+            layers_of_parent: stacking.follows_parent,
             terminations: distinct
                 .map(|(_, termination)| self.termination(facet, stacking, termination))
                 .collect(),
@@ -278,9 +281,15 @@ fn write_planes(out: &mut String, record: &FacetsRecord) -> std::fmt::Result {
         let polar = if plane.polar_stack { ", neutral layers that stack to a polar crystal" } else { "" };
         let ends =
             if plane.reversible { "a slab can end alike on both sides" } else { "the two sides differ" };
+        let has_parent = record.material.parent.is_some();
+        let by_gaps = if has_parent && !plane.layers_of_parent {
+            "; layers by gaps, since those of the parent are none here"
+        } else {
+            ""
+        };
         writeln!(
             out,
-            "\n({miller})  d {:.4} Å, A {:.3} Å² ({:.4} × {:.4} Å, {:.2}°), offset {} e/A, {zero}; type {}{polar}; {ends}",
+            "\n({miller})  d {:.4} Å, A {:.3} Å² ({:.4} × {:.4} Å, {:.2}°), offset {} e/A, {zero}; type {}{polar}; {ends}{by_gaps}",
             plane.spacing,
             plane.area,
             plane.surface_lengths[0],
