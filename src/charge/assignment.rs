@@ -262,7 +262,13 @@ pub fn infer(
         _ => found.probability() >= MIN_PROBABILITY,
     };
     if let (Some(runner_up), Some(margin), false) = (&runner_up, margin, is_settled) {
-        return Err(ambiguous(sites, &charges, runner_up, margin, &found));
+        let limit = match surroundings {
+            Some(_) => {
+                format!("and has a probability of {:.2}, below {MIN_PROBABILITY}", found.probability())
+            }
+            None => format!("and the limit is {MIN_LIKELIHOOD_RATIO} times"),
+        };
+        return Err(ambiguous(sites, &charges, runner_up, margin, &found, &limit));
     }
     let mut diagnostics: Vec<Diagnostic> = remark.into_iter().collect();
     diagnostics.extend(inferred::remarks(orbits, found.best(), surroundings.is_some()));
@@ -341,6 +347,7 @@ fn ambiguous(
     runner_up: &[i64],
     margin: f64,
     found: &Inferred,
+    limit: &str,
 ) -> Diagnostic {
     let best = charges_text(sites, charges);
     let second = charges_text(sites, runner_up);
@@ -353,13 +360,8 @@ fn ambiguous(
         second.states.iter().sorted().eq(found.best().states.iter().sorted()) && margin < 1.005
     });
     let reason = if only_swapped { "; nothing tells which site carries which charge" } else { "" };
-    let refusal = Diagnostic::error(
-        Code::ChargeAmbiguous,
-        format!(
-            "{best} is {how} {second} and has a probability of {:.2}, below the limit of {MIN_PROBABILITY}{reason}",
-            found.probability()
-        ),
-    );
+    let refusal =
+        Diagnostic::error(Code::ChargeAmbiguous, format!("{best} is {how} {second} {limit}{reason}"));
     match option_text(sites, charges) {
         Some(option) => refusal.hint(option),
         None => refusal,
@@ -602,7 +604,7 @@ mod tests {
         let refusal = run(&[("Cu1", 1), ("Fe1", 1), ("O1", 2)], None).expect_err("close");
         assert_eq!(refusal.code, Code::ChargeAmbiguous);
         assert!(refusal.message.contains("Cu=1,Fe=3,O=-2 is only 1."), "{}", refusal.message);
-        assert!(refusal.message.contains("Cu=2,Fe=2,O=-2 and has a probability of"), "{}", refusal.message);
+        assert!(refusal.message.contains("Cu=2,Fe=2,O=-2 and the limit is 2 times"), "{}", refusal.message);
         assert_eq!(refusal.hint.as_deref(), Some("--charges 'Cu=1,Fe=3,O=-2'"));
         let refusal = run(&[("Sb1", 4), ("Sb2", 4), ("O1", 16)], None).expect_err("tie");
         assert!(

@@ -285,7 +285,27 @@ fn rescored(
     };
     let best = picks.iter().map(alone).fold(f64::NEG_INFINITY, f64::max);
     let first = picks.first().map_or(0.0, |pick| pick.score);
-    picks.iter().map(move |pick| (best + pick.score - first, states(pick)))
+    // Where both ways of judging agree, as without positions, there is nothing to compare.
+    let is_alike = picks.first().is_none_or(|pick| (alone(pick) - pick.score).abs() < 1e-9);
+    let ordered = picks.first().filter(|_| !is_alike).map_or(first, |pick| {
+        let highs = pick.choices.iter().filter(|&&choice| choice > 0).count();
+        ordered_score(group, (low, high), highs, evidence)
+    });
+    picks.iter().map(move |pick| (best + pick.score - ordered, states(pick)))
+}
+
+/// The score if so many sites could have the high state that fit it best. Neutrality may ask for the opposite order:
+/// +2 on the small tetrahedral site and +3 on the larger octahedral one of magnetite.
+fn ordered_score(
+    group: &[usize],
+    (low, high): (i64, i64),
+    highs: usize,
+    evidence: &impl Fn(usize, i64, Pair) -> f64,
+) -> f64 {
+    let pair = Some((low, high));
+    let lows: f64 = group.iter().map(|&index| evidence(index, low, pair)).sum();
+    let gains = group.iter().map(|&index| evidence(index, high, pair) - evidence(index, low, pair));
+    lows + gains.sorted_by(|a, b| b.total_cmp(a)).take(highs).sum::<f64>()
 }
 
 /// What each state adds to charge and score of each orbit; none if a charge leaves `i64`.
