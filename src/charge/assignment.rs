@@ -251,18 +251,17 @@ pub fn infer(
     if let (Some(_), Some((average, probability))) = (&surroundings, &found.average)
         && *probability > found.probability()
     {
-        let refusal = average.refusal(orbits);
-        return Err(match option_text(sites, &charges) {
-            Some(option) => refusal.hint(option),
-            None => refusal,
-        });
+        return Err(average.refusal(orbits));
+    }
+    if let Some(refusal) = surroundings.as_ref().and_then(|bonds| lone_oxygen(orbits, bonds, &found)) {
+        return Err(refusal);
     }
     let is_settled = match margin {
         Some(margin) if surroundings.is_none() => margin >= MIN_LIKELIHOOD_RATIO,
         _ => found.probability() >= MIN_PROBABILITY,
     };
     if let (Some(runner_up), Some(margin), false) = (&runner_up, margin, is_settled) {
-        let limit = match surroundings {
+        let limit = match &surroundings {
             Some(_) => {
                 format!("and has a probability of {:.2}, below {MIN_PROBABILITY}", found.probability())
             }
@@ -287,7 +286,9 @@ pub fn infer(
     }
     diagnostics.extend(sense::remarks(orbits, &found.best().states));
     let reasoning = Reasoning::new(orbits, &found, surroundings.as_ref());
-    diagnostics.extend(poor_fit(&reasoning));
+    if surroundings.as_ref().is_some_and(|bonds| bonds.is_published(orbits, &found.best().states)) {
+        diagnostics.extend(poor_fit(&reasoning));
+    }
     let reasoning = Some(reasoning);
     Ok(Assignment { charges, source: Source::Inferred, diagnostics, reasoning, runner_up, margin })
 }
@@ -298,6 +299,24 @@ const PLAUSIBLE_AVERAGE: f64 = 0.05;
 /// Structures whose global instability index is above this, in valence units, are hardly what the file says: strained
 /// crystals stay below 0.5 (0.44 in cubic `KTaO3`).
 const DOUBTFUL_INSTABILITY: f64 = 0.6;
+
+/// The refusal where oxygen would be −1 without a bond to another oxygen: atoms are missing, most often hydrogen.
+fn lone_oxygen(orbits: &[Orbit], surroundings: &Surroundings, found: &Inferred) -> Option<Diagnostic> {
+    let rows = orbits.iter().zip(&found.best().states).zip(&surroundings.environments);
+    let lone = rows.filter(|((orbit, state), environment)| {
+        orbit.element == Element::OXYGEN && **state == -1 && environment.homonuclear <= 0.0
+    });
+    let labels: Vec<&str> = lone.map(|((orbit, _), _)| orbit.label.as_str()).collect();
+    if labels.is_empty() {
+        return None;
+    }
+    let message = format!(
+        "a neutral cell needs oxygen of charge -1 where there is no bond to another oxygen: {}; atoms are missing, most \
+         often hydrogen",
+        super::listing(labels)
+    );
+    Some(Diagnostic::error(Code::ChargeHydrogen, message))
+}
 
 /// A warning where the bonds do not fit the charges, naming the site that fits worst.
 fn poor_fit(reasoning: &Reasoning) -> Option<Diagnostic> {

@@ -68,12 +68,13 @@ pub(crate) struct Inferred {
 }
 
 impl Inferred {
-    fn new(arrangements: Vec<Arrangement>, bound: f64, average: Option<Average>) -> Self {
+    fn new(arrangements: Vec<Arrangement>, bound: f64, average: Option<Average>, is_published: bool) -> Self {
         let top = arrangements.first().map_or(0.0, |best| best.score);
         let weights: Vec<f64> = arrangements.iter().map(|one| (one.score - top).exp()).collect();
         let shared = average.as_ref().map_or(0.0, |average| (average.score - top).exp());
         let total: f64 = weights.iter().sum::<f64>() + shared;
-        let best = calibration::calibrated(1.0 / total);
+        let most = if is_published { 1.0 } else { calibration::MOST_UNMEASURED };
+        let best = calibration::calibrated(1.0 / total).min(most);
         // What is not the best's is shared among the others in proportion.
         let rest = |weight: f64| (1.0 - best) * weight / (total - 1.0).max(1e-12);
         let probability = |(rank, &weight): (usize, &f64)| if rank == 0 { best } else { rest(weight) };
@@ -130,7 +131,9 @@ pub(crate) fn infer(orbits: &[Orbit], surroundings: Option<&Surroundings>) -> Re
         return Err(nothing_neutral(orbits, average_of(orbits, &evidence, 0.0)));
     }
     let average = average_of(orbits, &evidence, UNCOMMON_SHARE);
-    Ok(Inferred::new(found, bound, average))
+    let is_published =
+        surroundings.is_none_or(|surroundings| surroundings.is_published(orbits, &found[0].states));
+    Ok(Inferred::new(found, bound, average, is_published))
 }
 
 /// The two states of a group of mixed valence.
