@@ -6,7 +6,7 @@ use super::given::Given;
 use super::inferred::{self, Inferred, MIN_LIKELIHOOD_RATIO, MIN_PROBABILITY};
 use super::orbit::Orbit;
 use super::parameters::Parameters;
-use super::reasoning::Reasoning;
+use super::reasoning::{Reasoning, Refusal};
 use super::sense;
 use super::stated::{self, Stated};
 use super::surroundings::Surroundings;
@@ -97,7 +97,7 @@ pub struct Assignment {
 pub fn assign(sites: &[Site], orbits: &[usize], given: Option<&Given>) -> Result<Assignment, Diagnostic> {
     match known(sites, orbits, given)? {
         Known::Settled(assignment) => Ok(assignment),
-        Known::Open(remark) => infer(sites, orbits, None, remark),
+        Known::Open(remark) => infer(sites, orbits, None, remark).map_err(|refusal| refusal.diagnostic),
     }
 }
 
@@ -230,16 +230,17 @@ fn propose(refusal: Diagnostic, sites: &[Site], orbits: &[Orbit]) -> Diagnostic 
     }
 }
 
-/// Charges from the composition of the orbits. A remark made before is passed on.
+/// Charges from the composition of the orbits and, with positions, from the bonds. A remark made before is passed on.
 ///
 /// # Errors
-/// As [`assign`], for the inference.
+/// As [`assign`], for the inference; with positions also a probability below [`MIN_PROBABILITY`], an averaged charge that
+/// is more likely than whole ones, and oxygen of charge −1 without a bond to another oxygen.
 pub fn infer(
     sites: &[Site],
     orbits: &[usize],
     positions: Option<(&Lattice, &Parameters)>,
     remark: Option<Diagnostic>,
-) -> Result<Assignment, Diagnostic> {
+) -> Result<Assignment, Box<Refusal>> {
     let orbits = &Orbit::collect(sites, orbits)?;
     check_not_metal(sites, orbits).map_err(|refusal| propose(refusal, sites, orbits))?;
     let surroundings = positions
@@ -248,13 +249,17 @@ pub fn infer(
     let charges = per_site(orbits, &found.best().states);
     let runner_up = found.second().map(|second| per_site(orbits, &second.states));
     let margin = found.ratio();
+    let refused = |diagnostic: Diagnostic| {
+        let candidates = Reasoning::new(orbits, &found, surroundings.as_ref()).candidates;
+        Err(Box::new(Refusal { diagnostic, candidates }))
+    };
     if let (Some(_), Some((average, probability))) = (&surroundings, &found.average)
         && *probability > found.probability()
     {
-        return Err(average.refusal(orbits));
+        return refused(average.refusal(orbits));
     }
     if let Some(refusal) = surroundings.as_ref().and_then(|bonds| lone_oxygen(orbits, bonds, &found)) {
-        return Err(refusal);
+        return refused(refusal);
     }
     let is_settled = match margin {
         Some(margin) if surroundings.is_none() => margin >= MIN_LIKELIHOOD_RATIO,
@@ -267,7 +272,7 @@ pub fn infer(
             }
             None => format!("and the limit is {MIN_LIKELIHOOD_RATIO} times"),
         };
-        return Err(ambiguous(sites, &charges, runner_up, margin, &found, &limit));
+        return refused(ambiguous(sites, &charges, runner_up, margin, &found, &limit));
     }
     let mut diagnostics: Vec<Diagnostic> = remark.into_iter().collect();
     diagnostics.extend(inferred::remarks(orbits, found.best(), surroundings.is_some()));
