@@ -54,6 +54,9 @@ pub(crate) struct Arrangement {
 /// How many arrangements are kept. The probability of the others is left out of the sum.
 const KEPT: usize = 12;
 
+/// Arrangements at least this many times as likely as the best tie with it.
+const TIE: f64 = 0.999;
+
 /// What composition and bonds suggest.
 #[derive(Debug, Clone, PartialEq)]
 pub(crate) struct Inferred {
@@ -74,10 +77,14 @@ impl Inferred {
         let shared = average.as_ref().map_or(0.0, |average| (average.score - top).exp());
         let total: f64 = weights.iter().sum::<f64>() + shared;
         let most = if is_published { 1.0 } else { calibration::MOST_UNMEASURED };
-        let best = calibration::calibrated(1.0 / total).min(most);
-        // What is not the best's is shared among the others in proportion.
-        let rest = |weight: f64| (1.0 - best) * weight / (total - 1.0).max(1e-12);
-        let probability = |(rank, &weight): (usize, &f64)| if rank == 0 { best } else { rest(weight) };
+        // Arrangements that tie with the best share its probability.
+        let ties = weights.iter().take_while(|&&weight| weight > TIE).count();
+        let number = f64::from(u32::try_from(ties).unwrap_or(u32::MAX)).max(1.0);
+        let best = calibration::calibrated(number / total).min(most) / number;
+        // What is not theirs is shared among the others in proportion.
+        let others = weights.iter().skip(ties).sum::<f64>() + shared;
+        let rest = |weight: f64| if others > 0.0 { (1.0 - number * best) * weight / others } else { 0.0 };
+        let probability = |(rank, &weight): (usize, &f64)| if rank < ties { best } else { rest(weight) };
         Self {
             arrangements,
             probabilities: weights.iter().enumerate().map(probability).collect(),

@@ -130,7 +130,8 @@ fn write_candidates(out: &mut String, material: &Material) -> std::fmt::Result {
     const SHOWN: usize = 4;
     let work = &material.classification;
     let Some(crystal) = &work.crystal else { return Ok(()) };
-    for (rank, candidate) in work.candidates.iter().take(SHOWN).enumerate() {
+    let likely = work.candidates.iter().filter(|candidate| candidate.probability >= 0.001);
+    for (rank, candidate) in likely.take(SHOWN).enumerate() {
         let title = if rank == 0 { "candidates" } else { "" };
         let text = charges_text(&crystal.sites, &candidate.charges);
         writeln!(out, "  {title:<18} --charges '{text}'   probability {:.3}", candidate.probability)?;
