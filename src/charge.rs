@@ -33,7 +33,7 @@ pub use bond_valence::{BondValences, OrbitValence, bond_valences};
 pub use given::Given;
 pub use inferred::{MIN_LIKELIHOOD_RATIO, MIN_PROBABILITY};
 pub use parameters::{Origin, Pair, Parameters};
-pub use reasoning::{Candidate, Reasoning};
+pub use reasoning::{Candidate, Reasoning, Refusal};
 pub use states::{State, share, states};
 
 /// Larger charges, in units of e, are taken for mistakes: 118 is the charge of the heaviest nucleus.

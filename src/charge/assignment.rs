@@ -6,7 +6,7 @@ use super::given::Given;
 use super::inferred::{self, Inferred, MIN_LIKELIHOOD_RATIO, MIN_PROBABILITY};
 use super::orbit::Orbit;
 use super::parameters::Parameters;
-use super::reasoning::Reasoning;
+use super::reasoning::{Reasoning, Refusal};
 use super::sense;
 use super::stated::{self, Stated};
 use super::surroundings::Surroundings;
@@ -97,7 +97,7 @@ pub struct Assignment {
 pub fn assign(sites: &[Site], orbits: &[usize], given: Option<&Given>) -> Result<Assignment, Diagnostic> {
     match known(sites, orbits, given)? {
         Known::Settled(assignment) => Ok(assignment),
-        Known::Open(remark) => infer(sites, orbits, None, remark),
+        Known::Open(remark) => infer(sites, orbits, None, remark).map_err(|refusal| refusal.diagnostic),
     }
 }
 
@@ -230,16 +230,17 @@ fn propose(refusal: Diagnostic, sites: &[Site], orbits: &[Orbit]) -> Diagnostic 
     }
 }
 
-/// Charges from the composition of the orbits. A remark made before is passed on.
+/// Charges from the composition of the orbits and, with positions, from the bonds. A remark made before is passed on.
 ///
 /// # Errors
-/// As [`assign`], for the inference.
+/// As [`assign`], for the inference; with positions also a probability below [`MIN_PROBABILITY`], an averaged charge that
+/// is more likely than whole ones, and oxygen of charge −1 without a bond to another oxygen.
 pub fn infer(
     sites: &[Site],
     orbits: &[usize],
     positions: Option<(&Lattice, &Parameters)>,
     remark: Option<Diagnostic>,
-) -> Result<Assignment, Diagnostic> {
+) -> Result<Assignment, Box<Refusal>> {
     let orbits = &Orbit::collect(sites, orbits)?;
     check_not_metal(sites, orbits).map_err(|refusal| propose(refusal, sites, orbits))?;
     let surroundings = positions
@@ -248,21 +249,30 @@ pub fn infer(
     let charges = per_site(orbits, &found.best().states);
     let runner_up = found.second().map(|second| per_site(orbits, &second.states));
     let margin = found.ratio();
+    let refused = |diagnostic: Diagnostic| {
+        let candidates = Reasoning::new(orbits, &found, surroundings.as_ref()).candidates;
+        Err(Box::new(Refusal { diagnostic, candidates }))
+    };
     if let (Some(_), Some((average, probability))) = (&surroundings, &found.average)
         && *probability > found.probability()
     {
-        let refusal = average.refusal(orbits);
-        return Err(match option_text(sites, &charges) {
-            Some(option) => refusal.hint(option),
-            None => refusal,
-        });
+        return refused(average.refusal(orbits));
+    }
+    if let Some(refusal) = surroundings.as_ref().and_then(|bonds| lone_oxygen(orbits, bonds, &found)) {
+        return refused(refusal);
     }
     let is_settled = match margin {
         Some(margin) if surroundings.is_none() => margin >= MIN_LIKELIHOOD_RATIO,
         _ => found.probability() >= MIN_PROBABILITY,
     };
     if let (Some(runner_up), Some(margin), false) = (&runner_up, margin, is_settled) {
-        return Err(ambiguous(sites, &charges, runner_up, margin, &found));
+        let limit = match &surroundings {
+            Some(_) => {
+                format!("and has a probability of {:.2}, below {MIN_PROBABILITY}", found.probability())
+            }
+            None => format!("and the limit is {MIN_LIKELIHOOD_RATIO} times"),
+        };
+        return refused(ambiguous(sites, &charges, runner_up, margin, &found, &limit));
     }
     let mut diagnostics: Vec<Diagnostic> = remark.into_iter().collect();
     diagnostics.extend(inferred::remarks(orbits, found.best(), surroundings.is_some()));
@@ -281,7 +291,9 @@ pub fn infer(
     }
     diagnostics.extend(sense::remarks(orbits, &found.best().states));
     let reasoning = Reasoning::new(orbits, &found, surroundings.as_ref());
-    diagnostics.extend(poor_fit(&reasoning));
+    if surroundings.as_ref().is_some_and(|bonds| bonds.is_published(orbits, &found.best().states)) {
+        diagnostics.extend(poor_fit(&reasoning));
+    }
     let reasoning = Some(reasoning);
     Ok(Assignment { charges, source: Source::Inferred, diagnostics, reasoning, runner_up, margin })
 }
@@ -292,6 +304,24 @@ const PLAUSIBLE_AVERAGE: f64 = 0.05;
 /// Structures whose global instability index is above this, in valence units, are hardly what the file says: strained
 /// crystals stay below 0.5 (0.44 in cubic `KTaO3`).
 const DOUBTFUL_INSTABILITY: f64 = 0.6;
+
+/// The refusal where oxygen would be −1 without a bond to another oxygen: atoms are missing, most often hydrogen.
+fn lone_oxygen(orbits: &[Orbit], surroundings: &Surroundings, found: &Inferred) -> Option<Diagnostic> {
+    let rows = orbits.iter().zip(&found.best().states).zip(&surroundings.environments);
+    let lone = rows.filter(|((orbit, state), environment)| {
+        orbit.element == Element::OXYGEN && **state == -1 && environment.homonuclear <= 0.0
+    });
+    let labels: Vec<&str> = lone.map(|((orbit, _), _)| orbit.label.as_str()).collect();
+    if labels.is_empty() {
+        return None;
+    }
+    let message = format!(
+        "a neutral cell needs oxygen of charge -1 where there is no bond to another oxygen: {}; atoms are missing, most \
+         often hydrogen",
+        super::listing(labels)
+    );
+    Some(Diagnostic::error(Code::ChargeHydrogen, message))
+}
 
 /// A warning where the bonds do not fit the charges, naming the site that fits worst.
 fn poor_fit(reasoning: &Reasoning) -> Option<Diagnostic> {
@@ -341,6 +371,7 @@ fn ambiguous(
     runner_up: &[i64],
     margin: f64,
     found: &Inferred,
+    limit: &str,
 ) -> Diagnostic {
     let best = charges_text(sites, charges);
     let second = charges_text(sites, runner_up);
@@ -353,13 +384,8 @@ fn ambiguous(
         second.states.iter().sorted().eq(found.best().states.iter().sorted()) && margin < 1.005
     });
     let reason = if only_swapped { "; nothing tells which site carries which charge" } else { "" };
-    let refusal = Diagnostic::error(
-        Code::ChargeAmbiguous,
-        format!(
-            "{best} is {how} {second} and has a probability of {:.2}, below the limit of {MIN_PROBABILITY}{reason}",
-            found.probability()
-        ),
-    );
+    let refusal =
+        Diagnostic::error(Code::ChargeAmbiguous, format!("{best} is {how} {second} {limit}{reason}"));
     match option_text(sites, charges) {
         Some(option) => refusal.hint(option),
         None => refusal,
@@ -602,7 +628,7 @@ mod tests {
         let refusal = run(&[("Cu1", 1), ("Fe1", 1), ("O1", 2)], None).expect_err("close");
         assert_eq!(refusal.code, Code::ChargeAmbiguous);
         assert!(refusal.message.contains("Cu=1,Fe=3,O=-2 is only 1."), "{}", refusal.message);
-        assert!(refusal.message.contains("Cu=2,Fe=2,O=-2 and has a probability of"), "{}", refusal.message);
+        assert!(refusal.message.contains("Cu=2,Fe=2,O=-2 and the limit is 2 times"), "{}", refusal.message);
         assert_eq!(refusal.hint.as_deref(), Some("--charges 'Cu=1,Fe=3,O=-2'"));
         let refusal = run(&[("Sb1", 4), ("Sb2", 4), ("O1", 16)], None).expect_err("tie");
         assert!(

@@ -13,6 +13,10 @@ const B: f64 = 0.6;
 /// No assignment is given a higher probability.
 const MOST: f64 = 0.999;
 
+/// The same where bond-valence parameters come from a rule, as in most compounds that are neither oxides nor halides:
+/// there the calibration was not measured.
+pub(super) const MOST_UNMEASURED: f64 = 0.95;
+
 /// The probability that goes with a share.
 pub(super) fn calibrated(share: f64) -> f64 {
     let share = share.clamp(1e-12, 1.0 - 1e-12);

@@ -54,6 +54,9 @@ pub(crate) struct Arrangement {
 /// How many arrangements are kept. The probability of the others is left out of the sum.
 const KEPT: usize = 12;
 
+/// Arrangements at least this many times as likely as the best tie with it.
+const TIE: f64 = 0.999;
+
 /// What composition and bonds suggest.
 #[derive(Debug, Clone, PartialEq)]
 pub(crate) struct Inferred {
@@ -68,15 +71,20 @@ pub(crate) struct Inferred {
 }
 
 impl Inferred {
-    fn new(arrangements: Vec<Arrangement>, bound: f64, average: Option<Average>) -> Self {
+    fn new(arrangements: Vec<Arrangement>, bound: f64, average: Option<Average>, is_published: bool) -> Self {
         let top = arrangements.first().map_or(0.0, |best| best.score);
         let weights: Vec<f64> = arrangements.iter().map(|one| (one.score - top).exp()).collect();
         let shared = average.as_ref().map_or(0.0, |average| (average.score - top).exp());
         let total: f64 = weights.iter().sum::<f64>() + shared;
-        let best = calibration::calibrated(1.0 / total);
-        // What is not the best's is shared among the others in proportion.
-        let rest = |weight: f64| (1.0 - best) * weight / (total - 1.0).max(1e-12);
-        let probability = |(rank, &weight): (usize, &f64)| if rank == 0 { best } else { rest(weight) };
+        let most = if is_published { 1.0 } else { calibration::MOST_UNMEASURED };
+        // Arrangements that tie with the best share its probability.
+        let ties = weights.iter().take_while(|&&weight| weight > TIE).count();
+        let number = f64::from(u32::try_from(ties).unwrap_or(u32::MAX)).max(1.0);
+        let best = calibration::calibrated(number / total).min(most) / number;
+        // What is not theirs is shared among the others in proportion.
+        let others = weights.iter().skip(ties).sum::<f64>() + shared;
+        let rest = |weight: f64| if others > 0.0 { (1.0 - number * best) * weight / others } else { 0.0 };
+        let probability = |(rank, &weight): (usize, &f64)| if rank < ties { best } else { rest(weight) };
         Self {
             arrangements,
             probabilities: weights.iter().enumerate().map(probability).collect(),
@@ -130,7 +138,9 @@ pub(crate) fn infer(orbits: &[Orbit], surroundings: Option<&Surroundings>) -> Re
         return Err(nothing_neutral(orbits, average_of(orbits, &evidence, 0.0)));
     }
     let average = average_of(orbits, &evidence, UNCOMMON_SHARE);
-    Ok(Inferred::new(found, bound, average))
+    let is_published =
+        surroundings.is_none_or(|surroundings| surroundings.is_published(orbits, &found[0].states));
+    Ok(Inferred::new(found, bound, average, is_published))
 }
 
 /// The two states of a group of mixed valence.
@@ -285,7 +295,27 @@ fn rescored(
     };
     let best = picks.iter().map(alone).fold(f64::NEG_INFINITY, f64::max);
     let first = picks.first().map_or(0.0, |pick| pick.score);
-    picks.iter().map(move |pick| (best + pick.score - first, states(pick)))
+    // Where both ways of judging agree, as without positions, there is nothing to compare.
+    let is_alike = picks.first().is_none_or(|pick| (alone(pick) - pick.score).abs() < 1e-9);
+    let ordered = picks.first().filter(|_| !is_alike).map_or(first, |pick| {
+        let highs = pick.choices.iter().filter(|&&choice| choice > 0).count();
+        ordered_score(group, (low, high), highs, evidence)
+    });
+    picks.iter().map(move |pick| (best + pick.score - ordered, states(pick)))
+}
+
+/// The score if so many sites could have the high state that fit it best. Neutrality may ask for the opposite order:
+/// +2 on the small tetrahedral site and +3 on the larger octahedral one of magnetite.
+fn ordered_score(
+    group: &[usize],
+    (low, high): (i64, i64),
+    highs: usize,
+    evidence: &impl Fn(usize, i64, Pair) -> f64,
+) -> f64 {
+    let pair = Some((low, high));
+    let lows: f64 = group.iter().map(|&index| evidence(index, low, pair)).sum();
+    let gains = group.iter().map(|&index| evidence(index, high, pair) - evidence(index, low, pair));
+    lows + gains.sorted_by(|a, b| b.total_cmp(a)).take(highs).sum::<f64>()
 }
 
 /// What each state adds to charge and score of each orbit; none if a charge leaves `i64`.

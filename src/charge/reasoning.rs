@@ -5,6 +5,22 @@ use super::bond_valence::{self, BondValences};
 use super::inferred::Inferred;
 use super::orbit::Orbit;
 use super::surroundings::Surroundings;
+use crate::diagnostic::Diagnostic;
+
+/// Why no charges were inferred, and which ones came into question.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Refusal {
+    /// The reason.
+    pub diagnostic: Diagnostic,
+    /// The most likely assignments, best first.
+    pub candidates: Vec<Candidate>,
+}
+
+impl From<Diagnostic> for Box<Refusal> {
+    fn from(diagnostic: Diagnostic) -> Self {
+        Self::new(Refusal { diagnostic, candidates: Vec::new() })
+    }
+}
 
 /// How an inference went.
 #[derive(Debug, Clone, PartialEq)]

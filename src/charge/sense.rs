@@ -57,6 +57,22 @@ fn is_open_shell(element: Element, state: i64) -> bool {
     }
 }
 
+/// Borides, carbides, silicides, germanides and stannides of transition metals and rare earths are mostly metals.
+fn interstitial(ions: &[(Element, i64)]) -> Option<String> {
+    let mut anions = ions.iter().filter(|(_, state)| *state < 0).map(|(element, _)| *element);
+    let is_poor = |element: Element| matches!(element.symbol(), "B" | "C" | "Si" | "Ge" | "Sn" | "Pb");
+    let has_metal = ions.iter().any(|&(element, state)| {
+        state > 0
+            && (d_electrons(element, state).is_some_and(|count| count != 10)
+                || matches!(element.number(), 57..=71))
+    });
+    let first = anions.next()?;
+    let is_likely = has_metal && is_poor(first) && anions.all(is_poor);
+    is_likely.then(|| {
+        format!("this may be a metal: most compounds of transition metals or rare earths with {first} are")
+    })
+}
+
 /// A warning for states known from metals, a note for open shells.
 pub(super) fn remarks(orbits: &[Orbit], states: &[i64]) -> Vec<Diagnostic> {
     let ions: Vec<(Element, i64)> =
@@ -78,6 +94,9 @@ pub(super) fn remarks(orbits: &[Orbit], states: &[i64]) -> Vec<Diagnostic> {
     if !metallic.is_empty() {
         let message =
             format!("this may be a metal: {} is known mostly from metals", super::listing(metallic));
+        found.push(Diagnostic::warning(Code::ChargeLikelyMetal, message));
+    }
+    if let Some(message) = interstitial(&ions) {
         found.push(Diagnostic::warning(Code::ChargeLikelyMetal, message));
     }
     if !open.is_empty() {

@@ -12,7 +12,7 @@
 
 use super::electronegativity::{electronegativity, octet_need};
 use super::orbit::Orbit;
-use super::parameters::{Pair, Parameters, single_bond};
+use super::parameters::{Origin, Pair, Parameters, single_bond};
 use super::states::states;
 use crate::cell::{Lattice, LatticeError, neighbours_of};
 use crate::crystal::{Element, Site};
@@ -116,6 +116,16 @@ impl Surroundings {
             sum += bonds.map(|bond| pair.valence(bond.distance)).sum::<f64>();
         }
         Some(sum)
+    }
+
+    /// Whether the parameters of all bonds are published ones, if of another state.
+    pub(crate) fn is_published(&self, orbits: &[Orbit], charges: &[i64]) -> bool {
+        let rows = orbits.iter().zip(charges).zip(&self.environments);
+        rows.flat_map(|((orbit, &charge), environment)| {
+            let partners = environment.shell.iter().map(|bond| orbits[bond.partner].element).dedup();
+            partners.map(move |partner| self.parameters.pair(orbit.element, charge.abs(), partner))
+        })
+        .all(|pair| pair.is_some_and(|pair| pair.origin != Origin::Rule))
     }
 
     /// Signed bond-valence sums of all orbits in these states: positive for what a site gives, negative for what it

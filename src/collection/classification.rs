@@ -2,7 +2,7 @@
 
 use super::alternatives::{Alternative, alternatives};
 use super::{Contents, Input, Member};
-use crate::charge::{self, Assignment, Given, Known, Parameters};
+use crate::charge::{self, Assignment, Candidate, Given, Known, Parameters};
 use crate::crystal::{AsymmetricUnit, Crystal, ExpandTolerance, Formula};
 use crate::diagnostic::{Code, Diagnostic};
 use crate::polarization::FormalPolarization;
@@ -92,6 +92,8 @@ pub struct Classification {
     pub centres: Option<Centres>,
     /// The charges used.
     pub assignment: Option<Assignment>,
+    /// The charges that came into question, where none could be inferred.
+    pub candidates: Vec<Candidate>,
     /// Other plausible charges, where the charges were inferred, and what they would change.
     pub alternatives: Vec<Alternative>,
     /// The parent cell, where there is one and it was searched for.
@@ -131,6 +133,7 @@ impl Classification {
             primitive: None,
             centres: None,
             assignment: None,
+            candidates: Vec::new(),
             alternatives: Vec::new(),
             parent: None,
             outcome: Err(refusal),
@@ -229,12 +232,13 @@ fn run(
     work.centres = Centres::find(primitive)?;
     let assignment = match known {
         Known::Settled(assignment) => assignment,
-        Known::Open(remark) => charge::infer(
-            &crystal.sites,
-            &symmetry.orbits,
-            Some((&crystal.lattice, settings.parameters())),
-            remark,
-        )?,
+        Known::Open(remark) => {
+            let positions = Some((&crystal.lattice, settings.parameters()));
+            charge::infer(&crystal.sites, &symmetry.orbits, positions, remark).map_err(|refusal| {
+                work.candidates = refusal.candidates;
+                refusal.diagnostic
+            })?
+        }
     };
     let charges: Vec<i64> = primitive.representatives.iter().map(|&site| assignment.charges[site]).collect();
     work.diagnostics.extend(assignment.diagnostics.iter().cloned());

@@ -156,7 +156,7 @@ codes! {
     ChargeMixedValence = "charge-012", "one element carries several charges on inequivalent sites", "give --charges per site label to fix them";
     ChargeSetAside = "charge-013", "the file's oxidation numbers were not used: some are missing, all are zero, or one is beyond any nuclear charge", "complete the numbers in the file, or give --charges";
     BondValenceTable = "charge-014", "a table of bond-valence parameters cannot be read", "give a CIF with a loop of _valence_param_atom_1, _valence_param_atom_2, _valence_param_Ro and _valence_param_B";
-    ChargeHydrogen = "charge-015", "hydrogen atoms are missing, and what they belong to was taken for a whole ion", "add the hydrogen atoms, or give --charges";
+    ChargeHydrogen = "charge-015", "atoms are missing, most often hydrogen", "add the hydrogen atoms, or give --charges";
     ChargeOpenShell = "charge-016", "cations have open shells, so a band gap depends on how strongly their electrons interact", "make sure that the crystal is an insulator";
     ChargeLikelyMetal = "charge-017", "a state is known mostly from metals", "make sure that the crystal is an insulator; formal polarization is not defined for a metal";
     ChargeBonds = "charge-019", "bond-valence sums are far from the charges", "check cell and positions, add hydrogen atoms that are missing, or give --charges";

@@ -2,7 +2,7 @@
 //! `man/classify.schema.json` and only ever added to. A field that does not apply is absent.
 
 use super::reasoning::bonds_of;
-use crate::charge::charges_text;
+use crate::charge::{Candidate, charges_text};
 use crate::collection::{Material, ParentLevel, Settings};
 use crate::crystal::Operation;
 use crate::diagnostic::{Code, Diagnostic};
@@ -72,6 +72,9 @@ pub struct MaterialRecord {
     /// The charges used.
     #[serde(skip_serializing_if = "Option::is_none")]
     pub charges: Option<ChargesRecord>,
+    /// The charges that came into question, where none could be inferred.
+    #[serde(skip_serializing_if = "Vec::is_empty")]
+    pub candidates: Vec<CandidateRecord>,
     /// The coset of the primitive cell as given.
     #[serde(skip_serializing_if = "Option::is_none")]
     pub strict: Option<LevelRecord>,
@@ -151,6 +154,15 @@ pub struct ChargesRecord {
     /// Whether label and offset are the same under all plausible charges.
     #[serde(skip_serializing_if = "Option::is_none")]
     pub label_is_certain: Option<bool>,
+}
+
+/// Charges that came into question.
+#[derive(Debug, Clone, Serialize, JsonSchema)]
+pub struct CandidateRecord {
+    /// In the form of `--charges`.
+    pub text: String,
+    /// Their probability.
+    pub probability: f64,
 }
 
 /// Other plausible charges.
@@ -315,6 +327,7 @@ impl MaterialRecord {
             primitive: work.primitive.as_ref().map(PrimitiveRecord::new),
             inversion_centres: CentreRecord::all(material),
             charges: ChargesRecord::new(material, settings),
+            candidates: CandidateRecord::all(material),
             strict: formal.map(LevelRecord::new),
             parent: work.parent.as_ref().map(ParentRecord::new),
             permitted: formal.map(PermittedRecord::new),
@@ -402,6 +415,18 @@ pub fn centre_position(primitive: &Primitive, position: Vector3<f64>) -> [f64; 3
         rounded - rounded.floor() + 0.0
     });
     shown.into()
+}
+
+impl CandidateRecord {
+    fn all(material: &Material) -> Vec<Self> {
+        let work = &material.classification;
+        let Some(crystal) = &work.crystal else { return Vec::new() };
+        let record = |candidate: &Candidate| Self {
+            text: charges_text(&crystal.sites, &candidate.charges),
+            probability: candidate.probability,
+        };
+        work.candidates.iter().map(record).collect()
+    }
 }
 
 impl ChargesRecord {

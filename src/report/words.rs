@@ -101,6 +101,7 @@ fn write_description(
             if let Some(hint) = &refusal.hint {
                 writeln!(out, "  hint               {hint}")?;
             }
+            write_candidates(out, material)?;
         }
     }
     Ok(())
@@ -120,6 +121,20 @@ fn write_certainty(out: &mut String, material: &Material, settings: &Settings) -
     writeln!(out, "  how sure           probability {:.3}{index}", reasoning.probability)?;
     if work.outcome.is_ok() {
         writeln!(out, "                     {}", reasoning::verdict(&work.alternatives))?;
+    }
+    Ok(())
+}
+
+/// The charges that came into question, ready to be typed.
+fn write_candidates(out: &mut String, material: &Material) -> std::fmt::Result {
+    const SHOWN: usize = 4;
+    let work = &material.classification;
+    let Some(crystal) = &work.crystal else { return Ok(()) };
+    let likely = work.candidates.iter().filter(|candidate| candidate.probability >= 0.001);
+    for (rank, candidate) in likely.take(SHOWN).enumerate() {
+        let title = if rank == 0 { "candidates" } else { "" };
+        let text = charges_text(&crystal.sites, &candidate.charges);
+        writeln!(out, "  {title:<18} --charges '{text}'   probability {:.3}", candidate.probability)?;
     }
     Ok(())
 }
