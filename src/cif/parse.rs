@@ -285,7 +285,7 @@ impl<'s> Parser<'s> {
             columns - values % columns
         );
         if let Some((line, count)) = self.odd_line(&shape, values) {
-            message += &format!("; line {line} holds {count}, others {columns}");
+            message = format!("{message}; line {line} holds {count}, others {columns}");
         }
         let found = Diagnostic::error(Code::CifLoopRagged, message)
             .at(first.span)

@@ -26,6 +26,7 @@ pub struct FacetsRecord {
 
 /// One plane.
 #[derive(Debug, Clone, Serialize, JsonSchema)]
+#[allow(clippy::struct_excessive_bools, reason = "a record of independent answers")]
 pub struct PlaneRecord {
     /// Indices in the axes of the file.
     pub miller: [i64; 3],
