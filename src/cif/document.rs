@@ -139,6 +139,19 @@ impl<'s> Document<'s> {
         self.token_at(start).map(|token| self.value_of(&token))
     }
 
+    /// The bytes of the name of a block; empty where it has none.
+    pub(super) fn block_name(&self, number: u32) -> &'s [u8] {
+        const WORD: usize = "data_".len();
+        let Some(heading) = self.blocks[number as usize].heading else { return &[] };
+        let heading = &self.source[heading as usize..];
+        // The other word that begins a block is global_.
+        if !heading.get(..WORD).is_some_and(|word| word.eq_ignore_ascii_case(b"data_")) {
+            return &[];
+        }
+        let length = heading.iter().position(|&byte| ends_name(byte)).unwrap_or(heading.len());
+        &heading[WORD..length]
+    }
+
     /// The bytes of the tag of an entry.
     pub(super) fn name_of(&self, entry: u32) -> &'s [u8] {
         let rest = &self.source[self.entries[entry as usize].tag as usize..];

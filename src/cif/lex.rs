@@ -271,9 +271,13 @@ impl<'s> Lexer<'s> {
             return self.triple_quoted(quote);
         }
         self.at += 1;
-        let limit = line_end_after(self.bytes, self.at);
-        while let Some(offset) = memchr::memchr(quote, &self.bytes[self.at..limit]) {
-            self.at += offset + 1;
+        // The quote and the line end are looked for together: a line may be as long as the file.
+        while let Some(offset) = memchr::memchr3(quote, b'\n', b'\r', &self.bytes[self.at..]) {
+            self.at += offset;
+            if self.bytes[self.at] != quote {
+                return self.open_quote(place, quote);
+            }
+            self.at += 1;
             if self.dialect == Dialect::Two || self.peek().is_none_or(|byte| is(byte, BLANK | LINE_END)) {
                 let end = self.at - 1;
                 return Token {
@@ -284,7 +288,12 @@ impl<'s> Lexer<'s> {
                 };
             }
         }
-        self.at = limit;
+        self.at = self.bytes.len();
+        self.open_quote(place, quote)
+    }
+
+    /// A quote that is not closed before the current byte, where its line ends.
+    fn open_quote(&mut self, place: Place, quote: u8) -> Token {
         let start = place.start + 1;
         let end = start + self.bytes[start..self.at].trim_ascii_end().len();
         let span = self.span_from(place);

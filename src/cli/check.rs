@@ -4,11 +4,12 @@ use super::common::StructureOptions;
 use super::exit::Exit;
 use super::output::{self, Output};
 use super::render::Drawing;
-use crate::collection::{Member, Settings, classify_bytes, find_inputs};
+use crate::collection::{Contents, Material, Member, Settings, find_inputs};
 use crate::diagnostic::{Code, Diagnostic, Severity};
 use anyhow::Context;
 use clap::{Args, ValueEnum};
 use serde::Serialize;
+use std::collections::HashSet;
 use std::io::IsTerminal;
 use std::path::PathBuf;
 
@@ -136,15 +137,20 @@ fn examine(member: Member, settings: &Settings) -> (Vec<u8>, Vec<Finding>) {
         Err(diagnostic) => return (Vec::new(), vec![Finding { block: String::new(), diagnostic }]),
     };
     let mut findings: Vec<Finding> = Vec::new();
-    for material in classify_bytes(&file, &bytes, settings) {
+    let mut known = HashSet::new();
+    let mut take = |material: Material| {
         let work = material.classification;
         for diagnostic in work.diagnostics.into_iter().chain(work.outcome.err()) {
             // One fault may be met twice: by the parser, and by the reader who needs the value.
-            let is_known = findings.iter().any(|known| known.diagnostic == diagnostic);
-            if diagnostic.span.is_none() || !is_known {
+            let place = diagnostic.span.map(|span| (span.start, diagnostic.message.clone()));
+            if place.is_none_or(|place| known.insert(place)) {
                 findings.push(Finding { block: material.block.clone(), diagnostic });
             }
         }
+    };
+    match Contents::open(&file, &bytes, settings) {
+        Ok(contents) => (0..contents.len()).for_each(|number| take(contents.classify(number, settings))),
+        Err(refused) => take(*refused),
     }
     findings.sort_by_key(|finding| finding.diagnostic.span.map_or(usize::MAX, |span| span.start));
     (bytes, findings)

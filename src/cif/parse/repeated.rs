@@ -37,20 +37,28 @@ pub(super) fn repeated(document: &Document<'_>, findings: &mut Findings) {
 }
 
 fn repeated_blocks(document: &Document<'_>, findings: &mut Findings) {
-    let block = |number: u32| document.block(number as usize);
-    let name = |number: u32| block(number).map_or_else(Vec::new, |block| block.name.as_bytes().to_vec());
-    let hashes: Vec<u32> = document.blocks().map(|block| fold(block.name.as_bytes())).collect();
+    let name = |number: u32| document.block_name(number);
+    let hashes: Vec<u32> = (0..).zip(document.blocks()).map(|(number, _)| fold(name(number))).collect();
     let mut order: Vec<u32> =
         (0..).zip(&hashes).map(|(number, _)| number).filter(|&n| !name(n).is_empty()).collect();
     let mut again = Vec::new();
     find(&mut order, &mut again, |number| hashes[number as usize], name);
     for number in again {
-        let Some(block) = block(number) else { continue };
-        let same = |other: &str| other.eq_ignore_ascii_case(&block.name);
         findings.add(Code::CifBlockRepeated, || {
-            let first = document.blocks().find(|other| same(&other.name)).map_or(0, |first| first.span.line);
-            let message = format!("block name '{}' was used before, at line {first}", shown(&block.name));
-            Diagnostic::warning(Code::CifBlockRepeated, message).at(block.span)
+            let block = document.block(number as usize);
+            let is_same = |&other: &u32| name(other).eq_ignore_ascii_case(name(number));
+            let first = (0..number).find(is_same).and_then(|first| document.block(first as usize));
+            let shown_name = block.as_ref().map_or("", |block| block.name.as_ref());
+            let message = format!(
+                "block name '{}' was used before, at line {}",
+                shown(shown_name),
+                first.map_or(0, |first| first.span.line)
+            );
+            let found = Diagnostic::warning(Code::CifBlockRepeated, message);
+            match &block {
+                Some(block) => found.at(block.span),
+                None => found,
+            }
         });
     }
 }
