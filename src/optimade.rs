@@ -120,6 +120,21 @@ mod tests {
     }
 
     #[test]
+    fn a_formula_that_the_sites_do_not_make_is_told() {
+        let with = |formula: &str| {
+            let formula = format!(r#""attributes": {{"chemical_formula_reduced": "{formula}", "#);
+            let text = entry("a", &[(r#""attributes": {"#, formula.as_str())]);
+            read_bytes(text.as_bytes()).expect("entries")[0]
+                .diagnostics
+                .iter()
+                .map(|d| d.code)
+                .collect::<Vec<_>>()
+        };
+        assert_eq!(with("MgO"), []);
+        assert_eq!(with("MgO2"), [Code::SiteFormula]);
+    }
+
+    #[test]
     fn positions_are_fractions_of_the_cell() {
         let entries = read_bytes(entry("a", &[]).as_bytes()).expect("entries");
         let unit = entries[0].unit.as_ref().expect("a structure");

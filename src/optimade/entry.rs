@@ -34,6 +34,7 @@ struct Attributes<'a> {
     nperiodic_dimensions: Option<u64>,
     #[serde(borrow)]
     cartesian_site_positions: Option<Vec<&'a RawValue>>,
+    chemical_formula_reduced: Option<Value>,
     species_at_sites: Option<Vec<String>>,
     species: Option<Vec<Species>>,
     structure_features: Option<Vec<String>>,
@@ -160,7 +161,34 @@ impl Reader<'_> {
                 }
             }
         }
+        self.check_formula(given, &sites, noticed);
         Ok(AsymmetricUnit { lattice, sites, operations: Vec::new() })
+    }
+
+    /// Compares ordered sites with the reduced formula: elements in alphabetical order, each with its smallest number.
+    fn check_formula(&self, given: &Attributes<'_>, sites: &[Site], noticed: &mut Vec<Diagnostic>) {
+        let Some(stated) = given.chemical_formula_reduced.as_ref().and_then(Value::as_str) else { return };
+        if !sites.iter().all(Site::is_full) {
+            return;
+        }
+        let mut counts: BTreeMap<&str, usize> = BTreeMap::new();
+        for site in sites {
+            *counts.entry(site.element.symbol()).or_default() += 1;
+        }
+        let divisor = counts.values().fold(0, |divisor, &count| num_integer::gcd(divisor, count)).max(1);
+        let made = counts.iter().fold(String::new(), |text, (symbol, count)| match count / divisor {
+            1 => text + symbol,
+            count => text + symbol + &count.to_string(),
+        });
+        if made != stated {
+            let message = format!(
+                "entry {}: the sites make up {made}, but 'chemical_formula_reduced' is {}",
+                self.id,
+                printable(stated)
+            );
+            let place = self.piece.place_of("chemical_formula_reduced", self.lines);
+            noticed.push(Diagnostic::warning(Code::SiteFormula, message).at(place));
+        }
     }
 
     /// A Cartesian position in Å, and where it is.

@@ -192,13 +192,14 @@ fn write_answer(
         let unit = match coset.modulus {
             Modulus::Electron => "one electron at a time".to_owned(),
             Modulus::Pair if coset.value == 1 => "an odd charge: as single electrons".to_owned(),
-            Modulus::Pair => "electrons in pairs, modulo 2 e".to_owned(),
+            Modulus::Pair => "electrons in pairs".to_owned(),
             Modulus::Ion if coset.value == 1 => "whole ions: as single electrons".to_owned(),
-            Modulus::Ion => format!("whole ions, modulo {} e", coset.value),
+            Modulus::Ion => "whole ions".to_owned(),
         };
+        let times = if coset.value == 1 { String::new() } else { format!(" × {} e", coset.value) };
         writeln!(
             out,
-            "    {:<16} {zero}: offset {} ({unit})",
+            "    {:<16} {zero}: offset {}{times} ({unit})",
             coset.modulus.to_string(),
             offset_text(coset)
         )?;
@@ -249,7 +250,11 @@ fn write_units(out: &mut String, formal: &FormalPolarization) -> std::fmt::Resul
         "  {:<18} {:>13} {:>9} {:>9} {:>13} {:>9} {:>9}",
         "polarization", "C/m²", "µC/cm²", "e/nm²", "modulo C/m²", "µC/cm²", "e/nm²"
     )?;
-    let offset = formal.electron().offset.map(Component::value);
+    // Of the values that symmetry leaves free the one nearest to zero is shown.
+    let offset = formal.electron().offset.map(|component| match component {
+        Component::Free(value) => value - value.round(),
+        Component::Exact(_) => component.value(),
+    });
     for (axis, quantum) in formal.quanta().into_iter().enumerate() {
         let units = |value: f64| (value * C_PER_M2, value * C_PER_M2 * 100.0, value * 100.0);
         let (value, value_uc, value_e) = units(quantum * offset[axis]);
