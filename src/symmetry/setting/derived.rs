@@ -79,8 +79,54 @@ pub(super) fn centred_triclinic(key: &str) -> Option<Setting> {
     }
 }
 
+/// Settings of a tetragonal symbol in the cell of twice the volume, such as `C 4 2 21` for `P 4 21 2`: axes a − b, a + b, c, so that the second and third place of the symbol change (International
+/// Tables, volume A, extended symbols of the tetragonal groups).
+pub(super) fn in_double_cell(key: &str, hint: &Hint<'_>) -> Candidates {
+    let Some((letter, rest)) = key.split_at_checked(1) else { return Candidates::default() };
+    let small = match letter {
+        "c" => "P",
+        "f" => "I",
+        _ => return Candidates::default(),
+    };
+    let mut settings = Vec::new();
+    for (axis, second, third) in tetragonal_places(rest) {
+        let symbol = format!("{small} {axis} {third} {second}");
+        let known = from_hm(&symbol, &Hint { lattice: None, ..*hint }).settings;
+        let plain = known.iter().filter(|setting| !setting.hall.contains('('));
+        settings.extend(
+            plain.filter_map(|setting| from_hall(&format!("{} (0.5*x-0.5*y,0.5*x+0.5*y,z)", setting.hall))),
+        );
+    }
+    let fits = hint.lattice.is_none_or(|lattice| settings.iter().any(|s| s.group().fits(lattice)));
+    Candidates { settings, fits }
+}
+
+/// The ways to divide a tetragonal symbol without blanks into its three places.
+fn tetragonal_places(rest: &str) -> Vec<(&str, &str, &str)> {
+    const PLACES: [&str; 9] = ["2", "21", "m", "a", "b", "c", "d", "n", "g"];
+    const AXES: [&str; 7] = ["4", "41", "42", "43", "-4", "4/m", "4/n"];
+    let is_axis = |text: &str| {
+        AXES.contains(&text)
+            || text.split_once('/').is_some_and(|(axis, plane)| {
+                ["4", "41", "42"].contains(&axis) && ["m", "n", "a", "b", "c", "d"].contains(&plane)
+            })
+    };
+    let mut found = Vec::new();
+    for third in PLACES {
+        for second in PLACES {
+            let axis = rest.strip_suffix(third).and_then(|rest| rest.strip_suffix(second));
+            if let Some(axis) = axis.filter(|axis| is_axis(axis)) {
+                let at = axis.len();
+                found.push((axis, &rest[at..at + second.len()], &rest[at + second.len()..]));
+            }
+        }
+    }
+    found
+}
+
 #[cfg(test)]
 mod tests {
+    use super::super::group::Motion;
     use super::super::symbol::compact;
     use super::*;
 
@@ -103,6 +149,37 @@ mod tests {
             assert!(found.settings[0].group().equals(expected.group()), "{symbol}");
         }
         assert!(from_hm("F 41/d d m q", &Hint::default()).settings.is_empty());
+    }
+
+    #[test]
+    fn tetragonal_symbols_of_the_double_cell() {
+        // By hand: the fourfold operation −y+½, x+½, z of P 4 21 2 in the axes a − b, a + b, c.
+        let found = from_hm("C 4 2 21", &Hint::default()).settings;
+        let fourfold = Motion::from_affine(&parse_affine("-y,x+1/2,z").expect("a map")).expect("whole");
+        assert_eq!(found.len(), 1);
+        assert!(found[0].group().contains(&fourfold));
+        assert_eq!((found[0].group().order(), found[0].group().translations()), (16, 2));
+        assert_eq!(from_hm("C -4 2 b", &Hint::default()).settings.len(), 1);
+        // Every symbol with three places and a small cell, against the change of basis.
+        let mut compared = 0;
+        for entry in (75..=142).flat_map(table::by_number) {
+            let Some(listed) = entry.setting() else { continue };
+            let symbol = listed.hm.split(':').next().unwrap_or_default();
+            let words: Vec<&str> = symbol.split_whitespace().collect();
+            let (letter, [axis, second, third]) = match words[..] {
+                ["P", a, b, c] => ("c", [a, b, c]),
+                ["I", a, b, c] => ("f", [a, b, c]),
+                _ => continue,
+            };
+            let found = in_double_cell(&compact(&format!("{letter}{axis}{third}{second}")), &Hint::default());
+            let changed = from_hm(&format!("{symbol} (a-b,a+b,c)"), &Hint::default());
+            assert!(!found.settings.is_empty(), "{symbol}");
+            for setting in &changed.settings {
+                assert!(found.settings.iter().any(|own| own.group().equals(setting.group())), "{symbol}");
+            }
+            compared += 1;
+        }
+        assert!(compared > 40, "{compared}");
     }
 
     #[test]

@@ -1,6 +1,6 @@
 //! Hermann-Mauguin symbols and numbers, in the spellings of files.
 
-use super::derived::{centred_triclinic, in_unusual_cell, with_change};
+use super::derived::{centred_triclinic, in_double_cell, in_unusual_cell, with_change};
 use super::table::{self, Entry};
 use super::{Candidates, Hint, Setting};
 
@@ -8,7 +8,7 @@ use super::{Candidates, Hint, Setting};
 ///
 /// Case, blanks and underscores do not matter; screw axes may be written `21`, `2_1` or `2(1)`, bars as a minus sign or
 /// an overbar. Short and full symbols, symbols from before the glide letter e, cubic symbols without a bar (`F m 3 m`),
-/// and centred triclinic cells (`I -1`) are known. The choice of origin or axes may be stated as `:1`, `:2`, `:H`, `:R`,
+/// centred triclinic cells (`I -1`) and tetragonal symbols of the double cell (`C 4 2 21`) are known. The choice of origin or axes may be stated as `:1`, `:2`, `:H`, `:R`,
 /// `:b1`, as a final `S`, `Z`, `H` or `R`, or in words, `(origin choice 2)`, `(hexagonal axes)`. The lattice letter H
 /// means R in hexagonal axes.
 ///
@@ -43,7 +43,8 @@ pub fn from_hm(symbol: &str, hint: &Hint<'_>) -> Candidates {
     }
     let wider = best_of(&all);
     if wider.settings.is_empty() {
-        return in_unusual_cell(&key, &stated);
+        let unusual = in_unusual_cell(&key, &stated);
+        return if unusual.settings.is_empty() { in_double_cell(&key, &stated) } else { unusual };
     }
     if wider.fits || found.settings.is_empty() { wider } else { found }
 }
