@@ -56,12 +56,17 @@ pub fn parse(bytes: &[u8]) -> (Document<'_>, Vec<Diagnostic>) {
 /// No more lines of a loop than this are searched for the one that is wrong.
 const MAX_LINES_COMPARED: usize = 100_000;
 
+/// No head of a loop has more tags than this.
+const MAX_HEAD: usize = 1000;
+
 struct Parser<'s> {
     document: Document<'s>,
     lexer: Lexer<'s>,
     ahead: Option<Token>,
     /// The heading and the first entry of the save frame that is open.
     frame: Option<(Token, u32)>,
+    /// Tags without a value that were met one after the other.
+    valueless: Vec<Token>,
     findings: Findings,
 }
 
@@ -81,7 +86,14 @@ impl<'s> Parser<'s> {
             surplus: Vec::new(),
             faults: Vec::new(),
         };
-        Self { document, lexer, ahead: None, frame: None, findings: Findings::default() }
+        Self {
+            document,
+            lexer,
+            ahead: None,
+            frame: None,
+            valueless: Vec::new(),
+            findings: Findings::default(),
+        }
     }
 
     fn next(&mut self) -> Option<Token> {
@@ -99,6 +111,9 @@ impl<'s> Parser<'s> {
 
     fn run(&mut self) {
         while let Some(token) = self.next() {
+            if token.kind != TokenKind::Tag {
+                self.report_valueless();
+            }
             match token.kind {
                 TokenKind::Block => self.open_block(&token),
                 TokenKind::Frame => self.open_frame(token),
@@ -117,6 +132,7 @@ impl<'s> Parser<'s> {
                 _ => {}
             }
         }
+        self.report_valueless();
         if let Some((frame, _)) = self.frame {
             let name = self.text_of(&frame);
             self.error(Code::CifFrame, frame.span, || format!("save frame '{}' is not closed", shown(&name)));
@@ -219,14 +235,30 @@ impl<'s> Parser<'s> {
         if let Some(value) = self.next_if(is_value) {
             self.need_block(tag.span);
             self.push_entry(tag, Place::Pair(narrow(value.span.start)));
+            self.report_valueless();
             return;
         }
-        let name = self.text_of(tag);
-        self.findings.add(Code::CifNoValue, || {
-            Diagnostic::error(Code::CifNoValue, format!("tag {} has no value", shown(&name)))
-                .at(tag.span)
-                .hint(format!("{} ?", shown(&name)))
-        });
+        self.valueless.push(*tag);
+        if self.valueless.len() == MAX_HEAD {
+            self.report_valueless();
+        }
+    }
+
+    /// Reports tags without a value that follow each other. Several of them are most often the head of a loop.
+    fn report_valueless(&mut self) {
+        let tags = std::mem::take(&mut self.valueless);
+        for (number, tag) in tags.iter().enumerate() {
+            let name = self.text_of(tag);
+            self.findings.add(Code::CifNoValue, || {
+                let found = Diagnostic::error(Code::CifNoValue, format!("tag {} has no value", shown(&name)))
+                    .at(tag.span);
+                match (number, tags.len()) {
+                    (_, 1) => found.hint(format!("{} ?", shown(&name))),
+                    (0, _) => found.hint(format!("loop_ before {}, if rows of values follow", shown(&name))),
+                    _ => found,
+                }
+            });
+        }
     }
 
     fn read_loop(&mut self, token: &Token) {
@@ -464,6 +496,14 @@ mod tests {
             assert_eq!(last.value("_w").map(|v| v.text), Some("7".into()), "{text}");
         }
         assert_eq!(codes("data_a _u\n;x\ndata_last _w 7"), [Code::CifTextOpen]);
+    }
+
+    #[test]
+    fn a_loop_without_its_word_is_told_once() {
+        let (_, found) = parse(b"data_a\n_u\n_v\n_w\n1 2 3\n4 5 6\n");
+        let hints: Vec<_> = found.iter().map(|d| (d.code, d.hint.clone().unwrap_or_default())).collect();
+        assert_eq!(hints[0], (Code::CifNoValue, "loop_ before _u, if rows of values follow".into()));
+        assert_eq!(hints[1], (Code::CifNoValue, String::new()));
     }
 
     #[test]
