@@ -105,7 +105,16 @@ fn setting(arguments: SettingArguments) -> anyhow::Result<Exit> {
         written: 0,
     };
     let mut exit = Exit::Done;
-    for source in sources(&name, &bytes, &settings) {
+    let found = match sources(&name, &bytes, &settings) {
+        Ok(found) => found,
+        Err(refused) => {
+            if let Err(refusal) = &refused.classification.outcome {
+                output::talk(&format!("{name}: {refusal}"));
+            }
+            return Ok(Exit::Refused);
+        }
+    };
+    for source in found {
         let (noticed, outcome) = job.add(&source);
         let shown = noticed.iter().filter(|found| {
             let least = if arguments.output.quiet { Severity::Error } else { Severity::Note };
@@ -132,29 +141,20 @@ fn setting(arguments: SettingArguments) -> anyhow::Result<Exit> {
 /// A structure of the file, with all that is known of it.
 struct Source {
     material: Material,
-    reading: Option<BlockReading>,
+    reading: BlockReading,
     provenance: Provenance,
 }
 
-/// The structures of a file, in its order.
-fn sources(name: &str, bytes: &[u8], settings: &Settings) -> Vec<Source> {
-    let contents = match Contents::open(name, bytes, settings) {
-        Ok(contents) => contents,
-        Err(refused) => {
-            return vec![Source { material: *refused, reading: None, provenance: Provenance::default() }];
-        }
-    };
+/// The structures of a file, in its order; or the one refusal of a file without any.
+fn sources(name: &str, bytes: &[u8], settings: &Settings) -> Result<Vec<Source>, Box<Material>> {
+    let contents = Contents::open(name, bytes, settings)?;
     let mut provenance = if contents.is_cif() { provenance(bytes) } else { Vec::new() };
-    (0..contents.len())
-        .map(|number| {
-            let own = provenance.get_mut(contents.part(number)).map(std::mem::take);
-            Source {
-                material: contents.classify(number, settings),
-                reading: Some(contents.reading(number)),
-                provenance: own.unwrap_or_default(),
-            }
-        })
-        .collect()
+    let mut source = |number| Source {
+        material: contents.classify(number, settings),
+        reading: contents.reading(number),
+        provenance: provenance.get_mut(contents.part(number)).map(std::mem::take).unwrap_or_default(),
+    };
+    Ok((0..contents.len()).map(&mut source).collect())
 }
 
 /// What is being written.
@@ -171,13 +171,7 @@ impl Job<'_> {
     /// Writes one structure. Returns what was noticed, and why nothing was written if so.
     fn add(&mut self, source: &Source) -> (Vec<Diagnostic>, Result<(), Diagnostic>) {
         let work = &source.material.classification;
-        let refused = || {
-            work.outcome.as_ref().err().cloned().unwrap_or_else(|| {
-                let message = "the structure lists atoms twice, which is mended for CIF files only";
-                Diagnostic::error(Code::SiteListedTwice, message)
-            })
-        };
-        let Some(reading) = &source.reading else { return (Vec::new(), Err(refused())) };
+        let reading = &source.reading;
         let made = match recast(reading, work, self.settings, self.axes, self.is_expanded) {
             Ok(made) => made,
             Err(refusal) => return (Vec::new(), Err(reading.locate(refusal))),

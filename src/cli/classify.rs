@@ -131,7 +131,9 @@ impl Run<'_> {
     fn take(&mut self, member: Member) -> anyhow::Result<()> {
         if member.length() >= LARGE {
             self.flush()?;
-            return self.take_large(member);
+            self.take_large(member)?;
+            self.progress.inc(1);
+            return Ok(());
         }
         self.held += member.held();
         self.chunk.push(member);
@@ -176,7 +178,6 @@ impl Run<'_> {
             };
             results.into_iter().try_for_each(|material| self.tell(material))?;
         }
-        self.progress.inc(1);
         Ok(())
     }
 

@@ -9,7 +9,7 @@ use cosetta::crystal::{Crystal, Element, Operation};
 use cosetta::symmetry::setting::standard;
 use std::collections::BTreeMap;
 use std::fs;
-use std::path::{Path, PathBuf};
+use std::path::Path;
 
 /// What has to stay the same in any setting.
 #[derive(Debug, Clone)]
@@ -296,17 +296,7 @@ fn crystals_without_centre_keep_their_origin() {
 #[test]
 #[ignore = "needs the data sets in COSETTA_DATA"]
 fn files_of_the_data_sets_stay_the_same_crystals() {
-    let data = PathBuf::from(
-        std::env::var_os("COSETTA_DATA").expect("COSETTA_DATA names the folder of the data sets"),
-    );
-    let folders = [
-        "cif-public-domain",
-        "cif-all-space-groups",
-        "cif-oxidation-loops",
-        "cif-edge-cases",
-        "cif-mixed-exports",
-    ];
-    let inputs = find_inputs(&folders.map(|folder| data.join(folder)));
+    let inputs = find_inputs(&crate::wide::cif_folders());
     let mut counts: BTreeMap<String, usize> = BTreeMap::new();
     let mut faults = Vec::new();
     for axes in ["file", "standard", "primitive", "expanded"] {

@@ -234,17 +234,7 @@ fn engines_agree_on_the_demo_structures() {
 #[test]
 #[ignore = "needs the data sets in COSETTA_DATA"]
 fn engines_agree_on_the_cif_folders() {
-    let root = std::path::PathBuf::from(std::env::var_os("COSETTA_DATA").expect("a folder of data sets"));
-    let folders: Vec<_> = [
-        "cif-public-domain",
-        "cif-all-space-groups",
-        "cif-oxidation-loops",
-        "cif-edge-cases",
-        "cif-mixed-exports",
-    ]
-    .iter()
-    .map(|folder| root.join(folder))
-    .collect();
+    let folders = crate::wide::cif_folders();
     let crystals = read_crystals(&folders);
     for tolerance in [0.01, 0.001] {
         let lines = compare(crystals.iter().map(|(name, crystal)| (name.as_str(), crystal)), tolerance);

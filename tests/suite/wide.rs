@@ -18,6 +18,19 @@ fn data() -> PathBuf {
     PathBuf::from(std::env::var_os("COSETTA_DATA").expect("COSETTA_DATA names the folder of the data sets"))
 }
 
+/// The five folders of CIFs.
+pub(crate) fn cif_folders() -> Vec<PathBuf> {
+    [
+        "cif-public-domain",
+        "cif-all-space-groups",
+        "cif-oxidation-loops",
+        "cif-edge-cases",
+        "cif-mixed-exports",
+    ]
+    .map(|folder| data().join(folder))
+    .to_vec()
+}
+
 /// One structure of the labelled oxides (J. George et al., "The Limited Predictive Power of the Pauling Rules",
 /// CC BY 4.0).
 #[derive(serde::Deserialize)]
@@ -112,15 +125,7 @@ fn labelled_oxides_agree_with_the_slow_routine() {
 #[test]
 #[ignore = "needs the data sets in COSETTA_DATA"]
 fn every_block_of_the_cif_folders_is_a_row_or_a_coded_refusal() {
-    let folders = [
-        "cif-public-domain",
-        "cif-all-space-groups",
-        "cif-oxidation-loops",
-        "cif-edge-cases",
-        "cif-mixed-exports",
-    ];
-    let paths: Vec<PathBuf> = folders.iter().map(|folder| data().join(folder)).collect();
-    let inputs = find_inputs(&paths);
+    let inputs = find_inputs(&cif_folders());
     let mut codes: BTreeMap<String, usize> = BTreeMap::new();
     let mut blocks = 0;
     let mut compared = 0;
